@@ -1,9 +1,9 @@
-"""Units at the border: everything inside the package is in Hartree atomic units.
+"""Units at the border: inside the package hbar = 1 and only the mass is ever converted.
 
-With hbar = m_e = e = 4 pi epsilon_0 = 1 a length is in bohr, an energy in hartree and a mass in
-electron masses. Numbers are converted once on the way in and once on the way out, with the factors
-of this module and no others. They are ratios of CODATA constants as scipy.constants gives them;
-none is typed here.
+Lengths and energies stay in the user's units, so no position and no energy is rounded on the way
+in or out. An electron mass is then `Units.electron_mass` in units of hbar^2 / (energy length^2): the
+one factor that solvers need; with Units("bohr", "hartree") it is 1. The factors are ratios of CODATA
+constants as scipy.constants gives them; none is typed here.
 """
 
 from dataclasses import dataclass
@@ -98,10 +98,20 @@ class Units:
 
     @cached_property
     def bohr(self):
-        """One unit of length, in bohr."""
+        """float: one unit of length, in bohr."""
         return length_in_bohr(self.length)
 
     @cached_property
     def hartree(self):
-        """One unit of energy, in hartree."""
+        """float: one unit of energy, in hartree."""
         return energy_in_hartree(self.energy)
+
+    @cached_property
+    def electron_mass(self):
+        """float: the electron mass in units of hbar^2 / (energy unit * length unit^2).
+
+        With masses multiplied by this factor, and lengths and energies left in the user's units,
+        the equation has hbar = 1: nothing but the mass is ever converted, and no energy or
+        position is rounded on the way in or out.
+        """
+        return self.hartree * self.bohr**2

@@ -1,0 +1,271 @@
+"""Arithmetic of piecewise polynomials: plain arrays in, plain arrays out.
+
+A cell polynomial is a row of power coefficients c[0], c[1], ... in t, where t runs from 0 at the
+cell's left end to 1 at its right end. All functions work on many cells at once.
+"""
+
+import numpy as np
+from numpy.polynomial import chebyshev, polynomial
+
+EPS = np.finfo(float).eps
+
+# A function is cut into cells on which a polynomial of this degree meets the tolerance. 12 is where
+# a cell's smallest interpolation error is still rounding, yet its power coefficients on [0, 1]
+# (which grow as (6/rho)**j for a Bernstein ellipse rho) lose no digits: with rho > 15 or so, which
+# 1e-13 at degree 12 requires, they decay.
+DEGREE = 12
+_SPLITS = 60  # halvings of the span before a function is called too rough
+
+
+def evaluated(coefficients, t):
+    """Return the value of each cell polynomial, shape (cells, degree + 1), at t, shape (cells,)."""
+    value = coefficients[:, -1].copy()
+    for j in range(coefficients.shape[1] - 2, -1, -1):
+        value = value * t + coefficients[:, j]
+    return value
+
+
+def reexpanded(coefficients, offset, ratio):
+    """Return the coefficients of p(offset + ratio t): the same polynomial seen from another cell.
+
+    Shapes: coefficients (cells, degree + 1); offset and ratio (cells,) or scalars.
+    Repeated synthetic division (Horner's scheme for a Taylor shift).
+    """
+    c = np.array(coefficients, dtype=float)
+    degree = c.shape[1] - 1
+    for k in range(degree):
+        for j in range(degree - 1, k - 1, -1):
+            c[:, j] += offset * c[:, j + 1]
+    power = np.ones_like(c[:, 0])
+    for k in range(1, degree + 1):
+        power = power * ratio
+        c[:, k] *= power
+    return c
+
+
+def mirrored(coefficients):
+    """Return the cells of the mirror image: reversed order, each with t replaced by 1 - t."""
+    return reexpanded(coefficients[::-1], 1.0, -1.0)
+
+
+def minimum(coefficients):
+    """Return the least value that any of the cell polynomials takes on its cell.
+
+    Ends and zeros of the derivative; the zeros are sought only in cells whose lower bound
+    c[0] - sum |c[j]| leaves room for a value below the least sample.
+    """
+    ends = np.minimum(coefficients[:, 0], coefficients.sum(axis=1))
+    least = ends.min()
+    if coefficients.shape[1] <= 2:
+        return float(least)
+    bound = coefficients[:, 0] - np.abs(coefficients[:, 1:]).sum(axis=1)
+    for row in np.flatnonzero(bound < least):
+        if bound[row] < least:
+            for root in polynomial.polyroots(polynomial.polyder(_trimmed(coefficients[row]))):
+                # A double zero of the derivative may come out as a complex pair: its real part is
+                # as good a sample as any.
+                t = min(max(root.real, 0.0), 1.0)
+                least = min(least, polynomial.polyval(t, coefficients[row]))
+    return float(least)
+
+
+def _trimmed(c):
+    nonzero = np.flatnonzero(c)
+    return c[: nonzero[-1] + 1] if nonzero.size else c[:1]
+
+
+def merged(x, fields):
+    """Join neighbouring cells that carry the same polynomials.
+
+    Parameters
+    ----------
+    x : ndarray, shape (cells + 1,)
+        Breakpoints, ascending.
+    fields : list of ndarray, shape (cells, degree + 1)
+        V, mass, ...: cells join only where all of them agree to rounding.
+
+    Returns
+    -------
+    x, fields
+        The same function on as few cells.
+
+    Notes
+    -----
+    A run of cells is joined only if the polynomial through points spread over the whole run (for
+    straight lines: the chord) passes within rounding of every cell in it. Comparing neighbours
+    alone would let many small bends add up: a finely sampled parabola looks straight from one row
+    to the next. A run that fails is left as it was, which is always right.
+    """
+    same = np.ones(x.size - 2, dtype=bool)
+    for field in fields:
+        same &= _neighbours_agree(x, field, same)
+    if not same.any():
+        return x, fields
+    run = np.concatenate([[0], np.cumsum(~same)])  # number of the run that each cell belongs to
+    first = np.searchsorted(run, np.arange(run[-1] + 1))
+    ends = np.append(x[first], x[-1])
+    good = np.ones(first.size, dtype=bool)
+    joined = []
+    for field in fields:
+        candidate = _through_run(x, field, ends)
+        offset = (x[:-1] - ends[run]) / (ends[run + 1] - ends[run])
+        ratio = np.diff(x) / (ends[run + 1] - ends[run])
+        miss = np.abs(reexpanded(candidate[run], offset, ratio) - field).max(axis=1)
+        good[run[miss > 8 * EPS * _size(ends, candidate)[run]]] = False
+        joined.append(candidate)
+    # Cells that stay: the first of every good run (with the joined polynomial), all of a bad one.
+    is_first = np.zeros(run.size, dtype=bool)
+    is_first[first] = True
+    keep = is_first | ~good[run]
+    single = np.bincount(run)[run] == 1  # alone in its run: keep its own digits
+    use_joined = (good[run] & ~single)[keep]
+    out = [
+        np.where(use_joined[:, None], candidate[run[keep]], field[keep])
+        for candidate, field in zip(joined, fields, strict=True)
+    ]
+    return np.append(x[:-1][keep], x[-1]), out
+
+
+def _neighbours_agree(x, field, candidates):
+    """Whether cell i + 1 continues the polynomial of cell i, for the candidate pairs."""
+    agree = np.zeros(x.size - 2, dtype=bool)
+    # A jump, or a different end value, decides most pairs at the cost of one comparison.
+    scale = _size(x, field)
+    close = np.abs(field.sum(axis=1)[:-1] - field[1:, 0]) <= 8 * EPS * np.maximum(
+        scale[:-1], scale[1:]
+    )
+    i = np.flatnonzero(candidates & close)
+    if i.size == 0:
+        return agree
+    if field.shape[1] == 1:
+        agree[i] = True
+        return agree
+    left, right = x[i + 1] - x[i], x[i + 2] - x[i + 1]
+    # The longer cell is carried on to the shorter one; the other way round would magnify rounding.
+    forward = left >= right
+    base = np.where(forward[:, None], field[i], field[i + 1])
+    offset = np.where(forward, 1.0, -left / right)
+    ratio = np.where(forward, right / left, left / right)
+    target = np.where(forward[:, None], field[i + 1], field[i])
+    miss = np.abs(reexpanded(base, offset, ratio) - target).max(axis=1)
+    agree[i] = miss <= 16 * EPS * np.maximum(scale[i], scale[i + 1])
+    return agree
+
+
+def _size(x, field):
+    """What rounding is relative to: the values of each cell, and those of its slope times x."""
+    size = np.abs(field).sum(axis=1)
+    if field.shape[1] > 1:
+        size += np.abs(field[:, 1]) * np.maximum(np.abs(x[:-1]), np.abs(x[1:])) / np.diff(x)
+    return size
+
+
+def _through_run(x, field, ends):
+    """The polynomial through degree + 1 equally spaced points of each run between `ends`."""
+    degree = field.shape[1] - 1
+    if degree == 0:
+        return field[np.searchsorted(x, ends[:-1])]
+    t = np.linspace(0.0, 1.0, degree + 1)
+    at = ends[:-1, None] + t * np.diff(ends)[:, None]
+    cell = np.clip(np.searchsorted(x, at, side="right") - 1, 0, x.size - 2)
+    # The end of a run is the right end of its last cell, not the left end of the next.
+    cell[:, -1] = np.searchsorted(x, ends[1:]) - 1
+    local = (at - x[cell]) / (x[cell + 1] - x[cell])
+    local[:, -1] = 1.0
+    values = evaluated(field[cell.ravel()], local.ravel()).reshape(cell.shape)
+    if degree == 1:
+        return np.column_stack([values[:, 0], values[:, 1] - values[:, 0]])
+    return np.linalg.solve(np.vander(t, increasing=True), values.T).T
+
+
+def padded(fields):
+    """Return the arrays with zero columns added, so that all have the highest degree."""
+    width = max(f.shape[1] for f in fields)
+    return [np.pad(f, ((0, 0), (0, width - f.shape[1]))) for f in fields]
+
+
+def from_callable(functions, breaks, tolerance):
+    """Cut functions into common polynomial cells, by Chebyshev interpolation and halving.
+
+    Parameters
+    ----------
+    functions : list of callable
+        Each maps an array to an array of the same shape. The first is V: its tolerance is relative
+        to the cell's own height above the least V sampled. The others are masses: relative to size.
+    breaks : ndarray
+        Ends of the span and points where a function is not smooth, ascending.
+    tolerance : float
+        Accepted interpolation error. Rounding of the functions themselves is allowed on top.
+
+    Returns
+    -------
+    x, fields
+        Breakpoints and, per function, coefficients of shape (cells, DEGREE + 1).
+
+    Raises
+    ------
+    ValueError
+        A function that no cell down to 2**-60 of the span can follow; carries the place.
+
+    References
+    ----------
+    .. [1] L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM (2013), ch. 3, 8.
+    """
+    # Chebyshev points of degree 2 * DEGREE: every second one interpolates, the others judge.
+    points = 0.5 * (1.0 - np.cos(np.pi * np.arange(2 * DEGREE + 1) / (2 * DEGREE)))
+    to_chebyshev = np.linalg.inv(chebyshev.chebvander(2 * points[::2] - 1, DEGREE))
+    judge = chebyshev.chebvander(2 * points[1::2] - 1, DEGREE)
+    left, right = np.array(breaks[:-1], dtype=float), np.array(breaks[1:], dtype=float)
+    least = np.inf
+    done = []
+    for _ in range(_SPLITS):
+        at = left[:, None] + points * (right - left)[:, None]
+        at[:, -1] = right
+        samples = [_sampled(f, at) for f in functions]
+        least = min(least, samples[0].min())
+        good = np.ones(left.size, dtype=bool)
+        spectra = []
+        for index, values in enumerate(samples):
+            spectrum = values[:, ::2] @ to_chebyshev.T
+            size = np.abs(values).max(axis=1)
+            height = values.max(axis=1) - least if index == 0 else size
+            miss = np.abs(spectrum @ judge.T - values[:, 1::2]).max(axis=1)
+            good &= miss <= 0.25 * tolerance * height + 4 * EPS * size
+            # Trailing coefficients below rounding are noise; dropping them lowers the degree.
+            tail = np.maximum.accumulate(np.abs(spectrum[:, ::-1]), axis=1)[:, ::-1]
+            spectrum[tail <= 0.25 * EPS * size[:, None]] = 0.0
+            spectra.append(spectrum)
+        done.append((left[good], [s[good] for s in spectra]))
+        left, right = left[~good], right[~good]
+        if left.size == 0:
+            break
+        middle = 0.5 * (left + right)
+        if (middle <= left).any() or (middle >= right).any():
+            break
+        left, right = np.concatenate([left, middle]), np.concatenate([middle, right])
+    if left.size:
+        span = breaks[-1] - breaks[0]
+        raise ValueError(f"{breaks[0] + span * round((left[0] - breaks[0]) / span, 12):.12g}")
+    start = np.concatenate([d[0] for d in done])
+    order = np.argsort(start)
+    x = np.append(start[order], breaks[-1])
+    fields = [np.concatenate([d[1][k] for d in done])[order] for k in range(len(functions))]
+    return x, [_power(spectrum) for spectrum in fields]
+
+
+def _sampled(f, at):
+    values = np.asarray(f(at), dtype=float)
+    return np.broadcast_to(values, at.shape) if values.shape != at.shape else values
+
+
+def _power(spectrum):
+    """Power coefficients in t of Chebyshev series in 2 t - 1."""
+    degree = spectrum.shape[1] - 1
+    to_power = np.zeros((degree + 1, degree + 1))
+    for j in range(degree + 1):
+        c = chebyshev.cheb2poly(np.eye(degree + 1)[j])
+        to_power[j, : c.size] = c
+    in_s = spectrum @ to_power
+    out = reexpanded(in_s, -1.0, 2.0)
+    used = np.flatnonzero(np.any(out != 0.0, axis=0))
+    return out[:, : used[-1] + 1] if used.size else out[:, :1]
