@@ -445,6 +445,13 @@ class Profile:
         """Mass at x, in electron masses; beyond a wall not a number."""
         return self._value(x, self.mass_cells, self.left.mass, self.right.mass, np.nan)
 
+    def alpha(self, x):
+        """Nonparabolicity at x, in 1 / `units.energy`."""
+        x = np.asarray(x, dtype=float)
+        if self.alpha_cells is None:
+            return np.zeros_like(x) if x.ndim else 0.0
+        return self._value(x, self.alpha_cells, self.left.alpha, self.right.alpha, np.nan)
+
     def cell_of(self, x):
         """Return the cell of each x, and its t, 0 to 1 across it; x is clipped to the cells."""
         x = np.asarray(x, dtype=float)
