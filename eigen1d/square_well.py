@@ -29,9 +29,8 @@ import numpy as np
 
 from eigen1d.errors import InputError
 
-# floor(pi 2^252). A double strength below 1e8 can come within 1e-16 of a multiple of pi/2; 156
-# bits of pi/2 leave that distance with its full relative precision, which decides the count and
-# the binding of the last level (test_count_is_exact_beside_every_threshold).
+# floor(pi 2^252). A double strength can come within 1e-16 of a multiple of pi/2; 156 bits of pi/2
+# keep that distance, hence count and last binding (test_count_is_exact_beside_every_threshold).
 _PI_BITS = 0x3243F6A8885A308D313198A2E03707344A4093822299F31D0082EFA98EC4E6C8
 # Pieces of 26 bits, so that n times a piece is exact for n below 2^27.
 _HALF_PI = [
@@ -117,13 +116,14 @@ def roots(z0, n=None):
 
     above = _above_threshold(z0, n)
     phi = _solve_increasing(phase, above, _quadratic_guess(1.0, z0, above))
+    # eta = phi + n pi/2, by the same exact multiples of pi/2.
     return -_above_threshold(-phi, n), z0 * np.sin(phi)
 
 
 def binding_fraction(z0, n=None):
     """How far each level lies below the rim, over the depth: (xi/z0)^2 = 1 - (eta/z0)^2.
 
-    Parameters, errors and precision as in `roots`, relative to the binding itself.
+    Parameters, errors, precision as in `roots`.
 
     Examples
     --------
@@ -163,7 +163,7 @@ def infinite_well_energies(width, count, mass=1.0):
     Raises
     ------
     InputError
-        A `width` or `mass` that is not positive, or a `count` that is not a whole number >= 0.
+        A `width` or `mass` not positive, or a `count` that is not a whole number >= 0.
 
     Examples
     --------
@@ -171,36 +171,9 @@ def infinite_well_energies(width, count, mass=1.0):
     array([0.5, 2. , 4.5])
     """
     width, mass = _positive("width", width), _positive("mass", mass)
-    if count != int(count) or count < 0:
+    if not isinstance(count, (int, np.integer)) or count < 0:
         raise InputError(f"count must be a whole number of levels, 0 or more; found {count!r}")
-    return (np.arange(1, int(count) + 1) * np.pi / width) ** 2 / (2 * mass)
-
-
-def infinite_well_psi(width, n, x):
-    """Normalised state n between walls at -width/2 and width/2; zero outside.
-
-    Parameters
-    ----------
-    width : float
-        Positive.
-    n : int
-        Number of nodes.
-    x : array of float
-
-    Returns
-    -------
-    array of float, shape of `x`
-        Positive in the leftmost lobe.
-
-    Examples
-    --------
-    >>> infinite_well_psi(2.0, 0, [-1.0, 0.0, 3.0]).round(12)
-    array([0., 1., 0.])
-    """
-    width = _positive("width", width)
-    distance = np.asarray(x, float) + width / 2
-    inside = (distance > 0) & (distance < width)
-    return np.where(inside, math.sqrt(2 / width) * np.sin((n + 1) * np.pi * distance / width), 0.0)
+    return (np.arange(1, count + 1) * np.pi / width) ** 2 / (2 * mass)
 
 
 @dataclass(frozen=True)
@@ -235,7 +208,7 @@ class SquareWell:
 
     Examples
     --------
-    Rims 3 and 10 high, then a barrier as heavy as 1.5 times the well:
+    Rims 3 and 10 high, then equal barriers of a heavier mass:
 
     >>> SquareWell(2.0, 3.0, 10.0).energies.round(6)
     array([0.701434, 2.593521])
@@ -255,15 +228,14 @@ class SquareWell:
         defaults = {"right": "left", "mass_left": "mass", "mass_right": "mass_left"}
         for name in ("width", "left", "right", "mass", "mass_left", "mass_right"):
             value = getattr(self, name)
-            if value is None:
-                value = getattr(self, defaults[name])
-            value = _positive(name, value, infinite=name in ("left", "right"))
-            object.__setattr__(self, name, value)
+            value = getattr(self, defaults[name]) if value is None and name in defaults else value
+            number = _positive(name, value, infinite=name in ("left", "right"))
+            object.__setattr__(self, name, number)
         if math.isinf(self.rim):
             raise InputError(
                 "left and right are both inf; write infinite_well_energies(width, count, mass)"
             )
-        self._strength  # noqa: B018  an overlarge well is refused here, not at first use
+        self._strength  # noqa: B018  refuses an overlarge well here, not at first use
 
     @property
     def rim(self):
@@ -293,12 +265,9 @@ class SquareWell:
     @cached_property
     def kappa(self):
         """Decay constants to the left and to the right; shape (2, count). Inf behind a wall."""
-        return np.array(
-            [
-                math.sqrt(2 * side.mass * side.height) * side.decay(np.sin(self._phi))
-                for side in self._sides
-            ]
-        )
+        s = np.sin(self._phi)
+        full = [math.sqrt(2 * side.mass * side.height) for side in self._sides]
+        return np.array([top * side.decay(s) for top, side in zip(full, self._sides, strict=True)])
 
     def probability_inside(self, n):
         """Probability to be found between the walls, for level `n` (int or array of int)."""
@@ -360,9 +329,8 @@ class SquareWell:
             for height, mass in ((self.left, self.mass_left), (self.right, self.mass_right))
         )
 
-    @cached_property
-    def _rim_phase(self):
-        """What the higher side takes from the phase at the lower rim, 0 for equal rims."""
+    @property
+    def _rim_phase(self):  # what the higher side takes from the phase at the lower rim
         return sum(side.rim_phase for side in self._sides)
 
     @cached_property
@@ -451,13 +419,9 @@ class _Side:
 
     def slope(self, s, c):
         """Derivative of `below_rim` by phi, which is also that of `wall_phase` by pi/2 - phi."""
-        here = self.ratio * self.decay(s)
-        weighted = self.share * c**2
-        return (
-            (math.sqrt(self.share) * s / here)
-            * (self.ratio**2 * weighted + here**2)
-            / (weighted + here**2)
-        )
+        here, weighted = self.ratio * self.decay(s), self.share * c**2
+        turn = (self.ratio**2 * weighted + here**2) / (weighted + here**2)
+        return math.sqrt(self.share) * s / here * turn
 
 
 def _above_threshold(z, n, leftover=0.0):
@@ -506,24 +470,30 @@ def _solve_increasing(phase, target, angle):
 
 
 def _checked_strength(z0):
-    if not 0 <= z0 <= _LARGEST_STRENGTH:
-        raise InputError(f"z0 must be a strength between 0 and 1e8; found {z0!r}")
-    return float(z0)
+    number = _number(z0)
+    if 0 <= number <= _LARGEST_STRENGTH:
+        return number
+    raise InputError(f"z0 must be a strength between 0 and 1e8; found {z0!r}")
 
 
 def _checked_levels(n, count):
     """`n` as an array of int, every one a bound level."""
     n = np.arange(count) if n is None else np.asarray(n)
     if n.size and (n.dtype.kind not in "iu" or n.min() < 0 or n.max() >= count):
-        raise InputError(f"n must be whole numbers from 0 to {count - 1}, the levels; found {n}")
-    return n
+        allowed = f"be whole numbers from 0 to {count - 1}" if count else "be left out: none bound"
+        raise InputError(f"n must {allowed}; found {n}")
+    return n.astype(int)
 
 
 def _positive(name, value, infinite=False):
-    try:
-        number = float(value)
-    except (TypeError, ValueError):
-        number = math.nan
+    number = _number(value)
     if number > 0 and (infinite or number < math.inf):
         return number
     raise InputError(f"{name} must be a positive number; found {value!r}")
+
+
+def _number(value):
+    try:
+        return float(value)
+    except (TypeError, ValueError):
+        return math.nan  # refused by every range check
