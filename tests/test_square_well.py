@@ -242,6 +242,7 @@ def random_wells(count=25):
 EXTREME = [
     SquareWell(1.0, 1e8, mass_left=1e6),  # deep, barriers far too heavy to be material
     SquareWell(1.0, 50.0, 50.0 * (1 + 1e-9), mass_left=0.1),  # almost equal rims
+    SquareWell((np.pi + 1.1e-4) / 2, 2.0, 2.0 * (1 + 1e-8)),  # and the last level at the rim
     SquareWell(1e-3, 1.0, mass_right=5.0),  # shallow
     SquareWell(2.0, 3.0, 1e12),  # almost a wall
 ]
