@@ -1,0 +1,429 @@
+"""The head of a table: settings, columns with their units, and the delimiter.
+
+Names and units are never guessed: another spelling is answered with the right one.
+"""
+
+import re
+from dataclasses import dataclass
+from difflib import get_close_matches
+
+from ._table_faults import NUMBER, Source, nearest, quoted
+from .errors import InputError
+from .units import ENERGY_UNITS, LENGTH_UNITS, Units
+
+KINDS = {  # column: what it holds
+    "x": "length",
+    "thickness": "length",
+    "V": "energy",
+    "V_end": "energy",
+    "m": "mass",
+    "m_end": "mass",
+    "sigma_V": "energy",
+    "alpha": "inverse energy",
+    "layer": "text",
+}
+UNITS = {  # what a column holds: units it can be given in
+    "length": LENGTH_UNITS,
+    "energy": ENERGY_UNITS,
+    "mass": ("m_e",),
+    "inverse energy": tuple(f"1/{unit}" for unit in ENERGY_UNITS),
+    "text": (),
+}
+ROW_COLUMNS = ("x", "V", "m", "sigma_V", "alpha")
+LAYER_COLUMNS = ("thickness", "V", "m", "V_end", "m_end", "alpha", "layer")
+
+# Other spellings, in lower case. They are never accepted, only answered with the right one.
+_OTHER_NAMES = {
+    **dict.fromkeys(("z", "position", "depth", "distance"), "x"),
+    **dict.fromkeys(("potential", "energy", "ec", "e_c", "u"), "V"),
+    **dict.fromkeys(("mass", "m*", "m_eff", "meff"), "m"),
+    **dict.fromkeys(("width", "d", "l"), "thickness"),
+    **dict.fromkeys(("sigma", "dv", "error"), "sigma_V"),
+    "name": "layer",
+}
+_OTHER_UNITS = {
+    **dict.fromkeys(("å", "\N{ANGSTROM SIGN}", "a", "ang"), "angstrom"),
+    **dict.fromkeys(("\N{MICRO SIGN}m", "\N{GREEK SMALL LETTER MU}m", "micron"), "um"),
+    **dict.fromkeys(("a0", "a_0"), "bohr"),
+    **dict.fromkeys(("ha", "eh", "e_h"), "hartree"),
+    **dict.fromkeys(("cm-1", "1/cm"), "cm^-1"),
+    **dict.fromkeys(("m0", "m_0", "me"), "m_e"),
+    **dict.fromkeys(("ev^-1", "ev-1", "/ev"), "1/eV"),
+}
+_EXAMPLE = "x [nm], V [eV], m [m_e]"
+DELIMITERS = {",": "commas", ";": "semicolons", "\t": "tabs", None: "blanks"}
+_SETTING = re.compile(r"\s*#+\s*([^:=]*?)\s*([:=])\s*(.*?)\s*")
+
+
+@dataclass(frozen=True)
+class Column:
+    """A column: its name and its unit, "" for text."""
+
+    name: str
+    unit: str
+
+    def __str__(self):
+        return f"{self.name} [{self.unit}]" if self.unit else self.name
+
+
+@dataclass(frozen=True)
+class Table:
+    """A file cut into its parts; `body` holds the lines below the head, from `first_line` on."""
+
+    source: Source
+    settings: dict
+    columns: tuple
+    delimiter: str | None
+    body: list
+    first_line: int
+
+
+# Lines and cells ----------------------------------------------------------------------------------
+
+
+def without_comment(line):
+    """Return the line up to its comment."""
+    return line.split("#", 1)[0]
+
+
+def cells_of(line, delimiter):
+    """Return the cells of a line without comment, stripped of blanks."""
+    if delimiter is None:
+        return line.split()
+    return [cell.strip() for cell in line.split(delimiter)]
+
+
+def spans_of(line, delimiter):
+    """Return where each of the cells begins and ends in the line."""
+    if delimiter is None:
+        return [m.span() for m in re.finditer(r"\S+", line)]
+    spans, start = [], 0
+    for cell in line.split(delimiter):
+        begin = start + len(cell) - len(cell.lstrip())
+        spans.append((begin, max(begin, start + len(cell.rstrip()))))
+        start += len(cell) + 1
+    return spans
+
+
+# Head -------------------------------------------------------------------------------------------
+
+
+def split(source, named, vocabulary):
+    """Cut a file into its parts.
+
+    Parameters
+    ----------
+    source : Source
+    named : tuple of Column or None
+        Columns of a file without a header.
+    vocabulary : dict
+        Settings that a comment line may make: key to allowed words, or to None for any text.
+
+    Returns
+    -------
+    Table
+
+    Raises
+    ------
+    TableError
+    """
+    settings, comments, top = _settings(source, vocabulary)
+    if top is None:
+        what = "the file has comments but no rows" if comments else "the file is empty"
+        remedy = f"Write a header and rows, such as\n  {_EXAMPLE}\n  0.0, 0.280, 0.092"
+        raise source.fault(what, remedy)
+    line = without_comment(source.lines[top - 1])
+    is_header = _is_header(line)
+    if named is None and not is_header:
+        raise _no_header(source, top, comments)
+    if named is not None and is_header:
+        raise source.fault(
+            f"expected a row of numbers, found a header {quoted(line.strip())}",
+            "Leave out columns and units, or put # before the header to have them used instead.",
+            line=top,
+            found=line.strip(),
+        )
+    if is_header:
+        delimiter = next((d for d in (";", ",", "\t") if d in line), None)
+        columns = _header_columns(source, top, line, delimiter)
+        table = Table(source, settings, columns, delimiter, source.lines[top:], top + 1)
+    else:
+        delimiter = _delimiter_of_row(line, len(named))
+        table = Table(source, settings, named, delimiter, source.lines[top - 1 :], top)
+    _check_late_settings(table, vocabulary)
+    return table
+
+
+def _settings(source, vocabulary):
+    """Return the settings, the comment lines by number, and the number of the first other line."""
+    settings, comments = {}, {}
+    for number, line in enumerate(source.lines, 1):
+        bare = line.strip()
+        if bare.startswith("#"):
+            comments[number] = bare
+            match = _SETTING.fullmatch(line)
+            if match and match[1].lower() in vocabulary:
+                _read_setting(source, number, match, vocabulary, settings)
+            elif match:
+                _check_no_setting(source, number, match, vocabulary)
+        elif bare:
+            return {key: value for key, (value, _) in settings.items()}, comments, number
+    return {}, comments, None
+
+
+def _read_setting(source, number, match, vocabulary, settings):
+    """Read a comment line `# key: value` with a known key."""
+    key, value = match[1].lower(), match[3]
+    allowed = vocabulary[key]
+    if match[2] == "=":
+        raise _setting_fault(source, number, match, 2, "expected a colon, found '='", key)
+    if allowed:
+        value = _word(value)
+        if value not in allowed:
+            meant = nearest(value, allowed) or allowed[0]
+            what = f"unknown {key} {quoted(match[3])}"
+            remedy = f"Write # {key}: {meant}   (one of: {', '.join(allowed)})"
+            raise _setting_fault(source, number, match, 3, what, key, remedy)
+    if key in settings:
+        first = settings[key][1]
+        raise source.fault(
+            f"{key} is set twice",
+            f"Keep one of lines {first} and {number}.",
+            line=number,
+            name=key,
+            found=match[3],
+            before=first,
+        )
+    settings[key] = (value, number)
+
+
+def _check_no_setting(source, number, match, vocabulary):
+    """Check that a comment with a colon in it was not meant to set something.
+
+    One whose key nearly is a setting, or whose value is a word that only settings have, was meant
+    for us; to ignore it would be to solve another problem.
+    """
+    close = get_close_matches(match[1].lower(), vocabulary, 1, 0.78)
+    of_value = [key for key, allowed in vocabulary.items() if _word(match[3]) in (allowed or ())]
+    if not close and not of_value:
+        return
+    known = close[0] if close else " or ".join(of_value)
+    remedy = (
+        f"Write # {known}: {match[3]}"
+        "\nIf it is a comment only, write it without the colon or the equals sign."
+    )
+    what = f"unknown setting {quoted(match[1])}"
+    raise _setting_fault(source, number, match, 1, what, match[1], remedy)
+
+
+def _setting_fault(source, number, match, group, what, name, remedy=None):
+    return source.fault(
+        what,
+        remedy or f"Write # {name}: {match[3]}",
+        line=number,
+        name=name,
+        found=match[group],
+        span=match.span(group),
+    )
+
+
+def _word(value):
+    return value.split("#")[0].strip().lower()
+
+
+def _check_late_settings(table, vocabulary):
+    late = re.compile(rf"\s*#+\s*({'|'.join(vocabulary)})\s*[:=]", re.IGNORECASE)
+    for number, line in enumerate(table.body, table.first_line):
+        if "#" in line and (match := late.match(line)):
+            raise table.source.fault(
+                f"{match[1]} is set below the head of the table",
+                "Move the line to the top of the file.",
+                line=number,
+                name=match[1],
+                found=line.strip(),
+            )
+
+
+def _is_header(line):
+    if "[" in line:
+        return True
+    return not any(NUMBER.fullmatch(c) for c in re.split(r"[\s;,]+", line) if c)
+
+
+def _no_header(source, top, commented):
+    last = commented.get(top - 1, "")
+    if "[" in last and "]" in last:
+        remedy = f"Remove the # from line {top - 1} if that is the header."
+    else:
+        remedy = (
+            f'Write a header above it, such as "{_EXAMPLE}",\n'
+            'or say what it would: columns="x,V,m" and units="nm,eV"\n'
+            "(on the command line: --columns x,V,m --units nm,eV)."
+        )
+    found = without_comment(source.lines[top - 1]).strip()
+    return source.fault(f"expected a header, found {quoted(found)}", remedy, line=top, found=found)
+
+
+def _delimiter_of_row(line, count):
+    """Delimiter of a file without header: the first that gives `count` cells without blanks."""
+    there = [d for d in (";", "\t", ",") if d in line] + [None]
+    for delimiter in there:
+        cells = cells_of(line, delimiter)
+        # "1,5 2,5" is two cells; cut at commas it gives "5 2".
+        if len(cells) == count and not any(re.search(r"\s", cell) for cell in cells):
+            return delimiter
+    return there[0]
+
+
+def _header_columns(source, number, line, delimiter):
+    if delimiter is None:
+        spans = [m.span() for m in re.finditer(r"[^\s\[]+(?:\s*\[[^\]]*\]?)?|\[[^\]]*\]?", line)]
+    else:
+        spans = spans_of(line, delimiter)
+
+    def fault(index, what, remedy):
+        if index is None:
+            return source.fault(what, remedy, line=number, found=line.strip())
+        text = line[slice(*spans[index])]
+        return source.fault(
+            what,
+            remedy,
+            line=number,
+            column=index + 1,
+            name=text,
+            found=text,
+            span=spans[index],
+        )
+
+    return _columns([line[slice(*span)] for span in spans], fault)
+
+
+def named_columns(columns, units):
+    """Return the columns that a caller names instead of a header, or None.
+
+    Parameters are those of `read_profile`; raises InputError.
+    """
+    if columns is None and units is None:
+        return None
+    remedy = 'Write for example columns="x,V,m" and units="nm,eV".'
+    if columns is None:
+        raise InputError(f"units={units!r} without columns\n  {remedy}")
+    names = columns.split(",") if isinstance(columns, str) else list(columns)
+    names = [str(name).strip() for name in names]
+    if units is None and not all("[" in name or name == "layer" for name in names):
+        raise InputError(f"columns={columns!r} without units\n  {remedy}")
+    if isinstance(units, Units):
+        units = (units.length, units.energy)
+    elif isinstance(units, str):
+        units = tuple(unit.strip() for unit in units.split(","))
+    if units is not None:
+        if len(units) != 2:
+            raise InputError(
+                f"units={','.join(units)!r}: expected a length and an energy, found "
+                f"{len(units)} of them\n  {remedy}"
+            )
+        Units(*units)
+        length, energy = units
+        of = {"length": length, "energy": energy, "mass": "m_e", "inverse energy": f"1/{energy}"}
+        names = [
+            f"{name} [{of[KINDS[name]]}]" if KINDS.get(name, "text") != "text" else name
+            for name in names
+        ]
+
+    def fault(index, what, remedy):
+        place = "" if index is None else f", column {index + 1}"
+        return InputError(f"columns={columns!r}{place}: {what}\n  {remedy}")
+
+    return _columns(names, fault)
+
+
+def _columns(cells, fault):
+    """Read the cells of a header.
+
+    `fault(index, what, remedy)` makes the error for one of them, or for all with index None.
+    """
+    columns = []
+    for index, cell in enumerate(cells):
+        column = _column(cell, lambda what, remedy, index=index: fault(index, what, remedy))
+        names = [c.name for c in columns]
+        if column.name in names:
+            first = names.index(column.name) + 1
+            raise fault(
+                index,
+                f"the column {column.name} is there twice",
+                f"Remove or rename column {first} or column {index + 1}.",
+            )
+        columns.append(column)
+    _check_set(columns, fault)
+    return tuple(columns)
+
+
+def _column(cell, fault):
+    match = re.fullmatch(r"([^\[\]]*?)\s*(?:\[\s*([^\[\]]*?)\s*\])?", cell)
+    name, unit = match.groups() if match else (cell.split("[")[0].strip(), None)
+    if name not in KINDS:
+        # "V (eV)" and "V / eV" begin with the right word.
+        first = re.match(r"\w*", name)[0]
+        meant = first if first in KINDS else nearest(name, KINDS, _OTHER_NAMES)
+        known = f"columns are {', '.join(ROW_COLUMNS)}; for layers {', '.join(LAYER_COLUMNS)}"
+        example = meant and (f"{meant} [{UNITS[KINDS[meant]][0]}]" if meant != "layer" else meant)
+        raise fault(
+            f"unknown column {quoted(name)}" if name else "a column without a name",
+            f"Write {example}; {known}." if meant else f"{known[0].upper()}{known[1:]}.",
+        )
+    kind = KINDS[name]
+    allowed = UNITS[kind]
+    if kind == "text":
+        if not match or unit is not None:
+            raise fault(f"the column {name} holds text and has no unit", f"Write {name} alone.")
+        return Column(name, "")
+    if not unit or not match:
+        raise fault(
+            f"expected a unit in brackets, found {quoted(cell)}",
+            f"Write {name} [{allowed[0]}]{_others(kind, allowed[0])}.",
+        )
+    if unit not in allowed:
+        other = next((k for k, units in UNITS.items() if unit in units), None)
+        meant = allowed[0] if other else nearest(unit, allowed, _OTHER_UNITS) or allowed[0]
+        found = f"the unit of {other} {quoted(unit)}" if other else quoted(unit)
+        raise fault(
+            f"expected a unit of {kind}, found {found}",
+            f"Write {name} [{meant}]{_others(kind, meant)}.",
+        )
+    return Column(name, unit)
+
+
+def _others(kind, named):
+    rest = [unit for unit in UNITS[kind] if unit != named]
+    return f", or another unit of {kind}: {', '.join(rest)}" if rest else ""
+
+
+def _check_set(columns, fault):
+    """Check that the columns together make a table of rows or of layers."""
+    names = [c.name for c in columns]
+    layers = is_layers(columns)
+    allowed = LAYER_COLUMNS if layers else ROW_COLUMNS
+    for index, name in enumerate(names):
+        if name not in allowed and (layers or "x" in names):
+            table = "layers" if layers else "rows"
+            raise fault(
+                index,
+                f"the column {name} does not belong in a table of {table}",
+                f"Remove it; columns of {table} are {', '.join(allowed)}.",
+            )
+    if not layers and "x" not in names:
+        remedy = "Add a column x [nm], the position of each row, or thickness [nm], of each layer."
+        raise fault(None, "there is no column x or thickness", remedy)
+    if "V" not in names:
+        raise fault(None, "there is no column V", "Add a column V [eV], the potential energy.")
+    if "m_end" in names and "m" not in names:
+        raise fault(
+            names.index("m_end"),
+            "m_end without a column m",
+            "Add a column m [m_e], the mass at the left side of each layer.",
+        )
+
+
+def is_layers(columns):
+    """Return whether the columns make a table of layers, not of rows."""
+    return any(c.name == "thickness" for c in columns)
