@@ -1,5 +1,6 @@
 """Writing a file whole or not at all."""
 
+import errno
 import os
 import secrets
 import stat
@@ -29,10 +30,10 @@ def write_whole(path, content, inputs=()):
 
     Examples
     --------
-    >>> import tempfile
+    >>> import pathlib, tempfile
     >>> with tempfile.TemporaryDirectory() as folder:
     ...     write_whole(f"{folder}/levels.csv", "n,energy\\n")
-    ...     print(open(f"{folder}/levels.csv").read(), end="")
+    ...     print(pathlib.Path(folder, "levels.csv").read_text(), end="")
     n,energy
     """
     path = os.fspath(path)
@@ -61,6 +62,8 @@ def _check(path, target, inputs):
             f"{path}: is a folder, a file was expected\n"
             f"  Add a file name, such as {os.path.join(path, 'levels.json')}."
         )
+    if os.path.islink(target):  # a circle: os.replace would put a file in its place
+        raise OSError(errno.ELOOP, os.strerror(errno.ELOOP))
     for other in inputs:
         if _same(path, target, other):
             raise InputError(

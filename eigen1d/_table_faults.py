@@ -18,7 +18,7 @@ from functools import cached_property
 from .errors import TableError
 
 _LISTED = 5  # lines named one by one; the others are counted
-_WIDTH = 96  # characters of a source line that are shown: a line of the screen
+_WIDTH = 80  # characters of a source line that are shown: a line of the screen
 
 # What the C parser of numpy reads, so that both ways through a file accept the same text. float()
 # would not do: it takes 1_000 and digits of other scripts.
@@ -51,6 +51,7 @@ class Source:
         span=None,
         before=None,
         same=(),
+        other=(),
     ):
         """Return the TableError that describes one fault.
 
@@ -66,6 +67,8 @@ class Source:
             The other line worth seeing; default: the one above.
         same : sequence of int, optional
             Further lines with the same fault.
+        other : sequence of int, optional
+            Lines with faults of another kind.
         """
         place = f"{_printable(self.path)}"
         if line is not None:
@@ -76,8 +79,12 @@ class Source:
         if line is not None:
             text += self._excerpt(line, line - 1 if before is None else before, span)
         text += [f"  {sentence}" for sentence in remedy.split("\n")]
-        if same:
-            text.append(f"  The same fault is on {_listed(same)}. Nothing was computed.")
+        further = [f"The same fault is on {_listed(same)}."] if same else []
+        if other:
+            verb = "Another fault is" if len(other) == 1 else "Other faults are"
+            further.append(f"{verb} on {_listed(other)}.")
+        if further:
+            text.append(f"  {' '.join(further)} Nothing was computed.")
         return TableError("\n".join(text), self.path, line, column, name, found)
 
     def _excerpt(self, line, before, span):
@@ -127,7 +134,7 @@ def number_remedy(found):
     plain = "Write a plain decimal number, such as 0.280 or 2.8e-1"
     if not found:
         return "Write the missing number; an empty place is not taken as 0."
-    for pattern, replacement, sentence in _MISTAKES:
+    for pattern, replacement, sentence in _MISTAKES if len(found) < 40 else ():
         fixed = re.sub(pattern, replacement, found)
         if fixed != found and NUMBER.fullmatch(fixed):
             letter = re.search(pattern, found)
@@ -157,7 +164,7 @@ _MISTAKES = (
         "",
         "Write {fixed}, with nothing between the thousands.",
     ),
-    (r"(?<=[\d.])\s*[^\W\d][^\d]*$", "", "Write {fixed}; the unit belongs in the header."),
+    (r"(?<=[\d.])\s*[^\W\d][^\d]*$", "", "Write {fixed} alone; a unit belongs in the header."),
 )
 
 
@@ -171,7 +178,7 @@ def _listed(lines):
     return f"lines {', '.join(head[:-1])} and {head[-1]}"
 
 
-def _cut(text, width=60):
+def _cut(text, width=36):
     return _printable(text if len(text) <= width else text[: width - 3] + "...")
 
 

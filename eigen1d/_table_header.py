@@ -181,9 +181,9 @@ def _read_setting(source, number, match, vocabulary, settings):
         value = _word(value)
         if value not in allowed:
             meant = nearest(value, allowed) or allowed[0]
-            what = f"unknown {key} {quoted(match[3])}"
-            remedy = f"Write # {key}: {meant}   (one of: {', '.join(allowed)})"
-            raise _setting_fault(source, number, match, 3, what, key, remedy)
+            words = f"{', '.join(allowed[:-1])} or {allowed[-1]}"
+            what = f"expected {words} for {key}, found {quoted(match[3])}"
+            raise _setting_fault(source, number, match, 3, what, key, f"Write # {key}: {meant}")
     if key in settings:
         first = settings[key][1]
         raise source.fault(
@@ -332,6 +332,7 @@ def named_columns(columns, units):
 
     def fault(index, what, remedy):
         place = "" if index is None else f", column {index + 1}"
+        remedy = remedy.replace("\n", "\n  ")
         return InputError(f"columns={columns!r}{place}: {what}\n  {remedy}")
 
     return _columns(names, fault)
@@ -365,12 +366,13 @@ def _column(cell, fault):
         # "V (eV)" and "V / eV" begin with the right word.
         first = re.match(r"\w*", name)[0]
         meant = first if first in KINDS else nearest(name, KINDS, _OTHER_NAMES)
-        known = f"columns are {', '.join(ROW_COLUMNS)}; for layers {', '.join(LAYER_COLUMNS)}"
-        example = meant and (f"{meant} [{UNITS[KINDS[meant]][0]}]" if meant != "layer" else meant)
-        raise fault(
-            f"unknown column {quoted(name)}" if name else "a column without a name",
-            f"Write {example}; {known}." if meant else f"{known[0].upper()}{known[1:]}.",
-        )
+        known = f"Columns are {', '.join(ROW_COLUMNS)}; for layers {', '.join(LAYER_COLUMNS)}."
+        if meant:
+            units = UNITS[KINDS[meant]]
+            known = (
+                f"Write {Column(meant, unit if unit in units else ''.join(units[:1]))}.\n{known}"
+            )
+        raise fault(f"unknown column {quoted(name)}" if name else "a column without a name", known)
     kind = KINDS[name]
     allowed = UNITS[kind]
     if kind == "text":

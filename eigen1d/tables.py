@@ -171,9 +171,13 @@ def _numbers_by_line(table):
                 values[row, k] = float(cell)
     if faults:
         kind, number, column = faults[0]
-        same = sorted({n for k, n, _ in faults[1:] if k == kind} - {number})
+        same = {n for k, n, _ in faults if k == kind} - {number}
+        further = {
+            "same": sorted(same),
+            "other": sorted({n for _, n, _ in faults} - same - {number}),
+        }
         describe = _wrong_length if kind == "row" else _not_a_number
-        raise describe(table, number, column, same, commas)
+        raise describe(table, number, column, commas, further)
     return values
 
 
@@ -181,7 +185,7 @@ _PART = re.compile(r"[+-]?\d+|\d+e[+-]?\d+", re.IGNORECASE)  # of a number cut a
 _ALIKE = "Separate all lines alike: the first has {first}, this one has {this}."
 
 
-def _wrong_length(table, number, column, same, _):
+def _wrong_length(table, number, column, _, further):
     count = len(table.columns)
     bare = without_comment(table.source.lines[number - 1]).rstrip()
     spans = spans_of(bare, table.delimiter)
@@ -194,7 +198,7 @@ def _wrong_length(table, number, column, same, _):
         name=None if extra else str(table.columns[column - 1]),
         found=bare.strip(),
         span=(spans[count][0], spans[-1][1]) if extra else (len(bare), len(bare) + 1),
-        same=same,
+        **further,
     )
 
 
@@ -217,7 +221,7 @@ def _length_remedy(table, number, bare):
     return f"Write one value for each column: {', '.join(str(c) for c in table.columns)}."
 
 
-def _not_a_number(table, number, column, same, commas):
+def _not_a_number(table, number, column, commas, further):
     bare = without_comment(table.source.lines[number - 1])
     found = cells_of(bare, table.delimiter)[column - 1]
     decimal = re.fullmatch(r"[+-]?\d*,\d*(?:e[+-]?\d+)?", found, re.IGNORECASE)
@@ -244,7 +248,7 @@ def _not_a_number(table, number, column, same, commas):
         name=str(table.columns[column - 1]),
         found=found,
         span=spans_of(bare, table.delimiter)[column - 1],
-        same=same,
+        **further,
     )
 
 

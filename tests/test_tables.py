@@ -1,0 +1,442 @@
+"""Reading tables: what works, what every fault says, and that both ways through a file agree."""
+
+import hashlib
+import re
+import subprocess
+import sys
+
+import numpy as np
+import pytest
+from faults_of_heads import GOOD, HEAD_FAULTS, LAYERS, ROWS
+from faults_of_rows import ROW_FAULTS
+
+from eigen1d import tables
+from eigen1d.errors import InputError, TableError
+from eigen1d.tables import read_profile
+from eigen1d.units import Units
+
+FAULTS = HEAD_FAULTS + ROW_FAULTS
+
+
+@pytest.fixture
+def write(tmp_path, monkeypatch):
+    """Write well.csv in the working folder, so that messages hold no path."""
+    monkeypatch.chdir(tmp_path)
+
+    def write(content, name="well.csv"):
+        data = content if isinstance(content, bytes) else content.encode()
+        (tmp_path / name).write_bytes(data)
+        return name
+
+    return write
+
+
+# Faults -----------------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize("fault", FAULTS, ids=lambda fault: fault.id)
+def test_fault_is_explained_in_full(fault, write):
+    """The text is all a user has to go by, and the attributes all a program has."""
+    with pytest.raises(TableError) as caught:
+        read_profile(write(fault.content), **fault.arguments)
+    assert str(caught.value) == fault.text
+    error = caught.value
+    assert error.path == "well.csv"
+    assert (error.line, error.column, error.name, error.found) == fault.place
+
+
+def test_fault_table_is_sound():
+    """Two cases under one name, or a text that is not about its place, would hide a fault."""
+    assert len({fault.id for fault in FAULTS}) == len(FAULTS)
+    for fault in FAULTS:
+        first = fault.text.split("\n")[0]
+        line, column, name, _ = fault.place
+        assert first.startswith("well.csv")
+        assert (f", line {line}" in first) == (line is not None)
+        assert (f", column {column}" in first) == (column is not None)
+        assert column is None or not name or f"({name})" in first
+
+
+@pytest.mark.parametrize("fault", FAULTS, ids=lambda fault: fault.id)
+def test_marks_stand_below_what_was_found(fault):
+    """A mark below something else sends the user to the wrong place."""
+    lines = fault.text.split("\n")
+    marks = [k for k, line in enumerate(lines) if "^" in line and not line.strip(" |^")]
+    assert len(marks) == (fault.place[0] is not None)
+    for k in marks:
+        first, last = lines[k].index("^"), lines[k].rindex("^")
+        above = lines[k - 1][first : last + 1]
+        if "values, found" in lines[0]:  # the mark is on what is too much, or where it is missing
+            before = lines[k - 1][:first]
+            assert (
+                fault.place[3].endswith(above) if above.strip() else before.endswith(fault.place[3])
+            )
+        elif quote := re.search("found.* '([^']{1,32})'$", lines[0]):
+            assert above in (quote[1], str(fault.place[2]))
+
+
+@pytest.mark.parametrize(
+    ("path", "text"),
+    [
+        ("wel.csv", "wel.csv: there is no such file\n  Did you mean well.csv?"),
+        ("q", "q: there is no such file\n  Check the name and the folder."),
+        ("no/q", "no/q: there is no such file\n  Check the name and the folder."),
+        (".", ".: is a folder, a file was expected\n  Name a file in it, such as ./well.csv."),
+        (
+            "well.csv/q",
+            "well.csv/q: cannot be read: Not a directory\n"
+            "  Name a file that exists and that you may read.",
+        ),
+        (
+            "a\0b",
+            "a\N{REPLACEMENT CHARACTER}b: cannot be read: embedded null byte\n"
+            "  Name a file that exists and that you may read.",
+        ),
+    ],
+)
+def test_path_that_is_no_file_is_explained(path, text, write):
+    """The commonest fault of all is the name of the file."""
+    write(ROWS + GOOD)
+    with pytest.raises(TableError) as caught:
+        read_profile(path)
+    assert str(caught.value) == text
+    assert caught.value.path == path
+
+
+@pytest.mark.parametrize(
+    ("arguments", "text"),
+    [
+        ({"left": "opne"}, "unknown left 'opne'; write one of: open, wall"),
+        (
+            {"interpolation": "cubic"},
+            "unknown interpolation 'cubic'; write one of: linear, step, smooth, monotone",
+        ),
+        (
+            {"units": "nm,eV"},
+            "units='nm,eV' without columns\n"
+            '  Write for example columns="x,V,m" and units="nm,eV".',
+        ),
+        (
+            {"columns": "x,V,m"},
+            "columns='x,V,m' without units\n"
+            '  Write for example columns="x,V,m" and units="nm,eV".',
+        ),
+        (
+            {"columns": "x,V,m", "units": "nm"},
+            "units='nm': expected a length and an energy, found 1 of them\n"
+            '  Write for example columns="x,V,m" and units="nm,eV".',
+        ),
+        (
+            {"columns": "x,V,m", "units": "nm,ev"},
+            "unknown unit of energy 'ev'; write one of: eV, meV, J, hartree, cm^-1, K",
+        ),
+        (
+            {"columns": "x,U,m", "units": "nm,eV"},
+            "columns='x,U,m', column 2: unknown column 'U'\n"
+            "  Write V [eV].\n"
+            "  Columns are x, V, m, sigma_V, alpha; "
+            "for layers thickness, V, m, V_end, m_end, alpha, layer.",
+        ),
+        (
+            {"columns": "x,m", "units": "nm,eV"},
+            "columns='x,m': there is no column V\n  Add a column V [eV], the potential energy.",
+        ),
+    ],
+)
+def test_argument_that_cannot_be_used_is_explained(arguments, text, write):
+    """A fault of the call is not blamed on the file."""
+    path = write(GOOD)
+    with pytest.raises(InputError) as caught:
+        read_profile(path, **arguments)
+    assert str(caught.value) == text
+    assert not isinstance(caught.value, TableError)
+
+
+def test_fault_of_the_profile_names_the_file(write, monkeypatch):
+    """What the reader does not foresee still comes with the name of the file."""
+
+    def from_rows(**_):
+        raise InputError("V is too steep")
+
+    monkeypatch.setattr(tables.Profile, "from_rows", from_rows)
+    with pytest.raises(TableError, match="^well.csv: V is too steep\n"):
+        read_profile(write(ROWS + GOOD))
+
+
+# What works -------------------------------------------------------------------------------------
+
+# The same two rows: every variant must give x = 0, 5; V = 0.28, 0; m = 0.092, 0.067.
+SAME = {
+    "commas": ROWS + GOOD,
+    "commas without blanks": (ROWS + GOOD).replace(", ", ","),
+    "semicolons": (ROWS + GOOD).replace(",", ";"),
+    "tabs": (ROWS + GOOD).replace(", ", "\t"),
+    "blanks": (ROWS + GOOD).replace(",", "  "),
+    "blanks before the rows": (ROWS + GOOD).replace(",", "").replace("\n", "\n  "),
+    "decimal commas, semicolons": (ROWS.replace(",", ";") + "0,0;0,280;0,092\n5,0;0;,067\n"),
+    "decimal commas, tabs": ROWS.replace(", ", "\t") + "0,0\t0,280\t0,092\n5\t0,000\t0,067\n",
+    "decimal commas, blanks": ROWS.replace(",", "") + "0,0 0,280 0,092\n5,0 0,000 0,067\n",
+    "decimal commas, commented": (
+        ROWS.replace(",", ";") + "# 1.5 nm, roughly\n0;0,280;0,092 # 0.28, in fact\n5;0,0;0,067"
+    ),
+    "byte order mark": b"\xef\xbb\xbf" + (ROWS + GOOD).encode(),
+    "CRLF": (ROWS + GOOD).replace("\n", "\r\n"),
+    "CR": (ROWS + GOOD).replace("\n", "\r"),
+    "byte order mark and CRLF": b"\xef\xbb\xbf" + (ROWS + GOOD).replace("\n", "\r\n").encode(),
+    "no newline at the end": (ROWS + GOOD).rstrip("\n"),
+    "comments everywhere": (
+        "# a, b; c\n\n#\n" + ROWS[:-1] + " # [in brackets]\n"
+        "  # indented, 1, 2\n0.0, 0.280, 0.092 # first, 1\n\n \t\n#\n5.0, 0, 0.067 #\n# end\n"
+    ),
+    "other column order": "m [m_e], x [nm], V [eV]\n0.092, 0, 0.28\n0.067, 5, 0\n",
+    "exponents": ROWS + "0e0, 2.8E-1, +92e-3\n.5e1, -0, 0.67e-1\n",
+    "unit without blank": "x[nm], V[ eV ], m [m_e]\n" + GOOD,
+    "blanks in a header of blanks": "x [nm]  V[eV] m  [m_e]\n0 0.28 0.092\n5 0 0.067\n",
+    "comments that set nothing": (
+        "# measured: 3 March\n# height: 0.28\n# T = 300 K\n#:\n# http://example.org\n"
+        + ROWS + "# note: none\n" + GOOD
+    ),
+}  # fmt: skip
+
+
+@pytest.mark.parametrize("variant", SAME)
+def test_same_table_in_any_dress(variant, write):
+    """Spreadsheets of every country and scripts of every age write the same numbers differently."""
+    profile = read_profile(write(SAME[variant]))
+    assert profile.rows.x.tolist() == [0.0, 5.0]
+    assert profile.rows.V.tolist() == [0.28, 0.0]
+    assert [profile.left.mass, profile.right.mass] == [0.092, 0.067]
+    assert profile.units == Units("nm", "eV")
+    assert (profile.left.kind, profile.right.kind, profile.title) == ("open", "open", "")
+
+
+@pytest.mark.parametrize(
+    ("content", "columns"),
+    [
+        (GOOD, "x,V,m"),
+        (GOOD.replace(",", ""), "x, V, m"),
+        (GOOD.replace(",", ";").replace(".", ","), "x,V,m"),
+        ("0,0 0,280 0,092\n5,0 0,000 0,067\n", "x,V,m"),
+        ("# x, V, m\n" + GOOD, ["x", "V", "m"]),
+        (GOOD, "x [nm], V [eV], m [m_e]"),
+    ],
+)
+@pytest.mark.parametrize("units", ["nm,eV", "nm, eV", ("nm", "eV"), Units("nm", "eV")])
+def test_file_without_header_is_read_as_the_caller_says(content, columns, units, write):
+    """Simulators write bare numbers; the caller then says what they are."""
+    profile = read_profile(write(content), columns=columns, units=units)
+    assert profile.rows.x.tolist() == [0.0, 5.0]
+    assert profile.rows.V.tolist() == [0.28, 0.0]
+    assert [profile.left.mass, profile.right.mass] == [0.092, 0.067]
+
+
+def test_columns_with_their_own_units_need_no_others(write):
+    """A pair of units is enough for most, not for V in eV with its deviation in meV."""
+    path = write("0 0.28 2.5\n5 0 1.5\n")
+    profile = read_profile(path, columns="x [um], V [eV], sigma_V [meV]")
+    assert profile.units == Units("um", "eV")
+    assert np.allclose(profile.rows.sigma_V, [0.0025, 0.0015], rtol=1e-15)
+
+
+def test_two_numbers_with_decimal_commas_are_not_three(write):
+    """Cut at its commas, "1,5 2,5" is three cells; the named columns say it is two."""
+    profile = read_profile(write("1,5 2,5\n2,5 0,5\n"), columns="x,V", units="nm,eV")
+    assert profile.rows.x.tolist() == [1.5, 2.5]
+    assert profile.rows.V.tolist() == [2.5, 0.5]
+
+
+def test_settings_are_read_and_arguments_come_first(write):
+    """A file says how it is meant; the caller may want to know otherwise."""
+    head = "# Title: well #3: graded\n# LEFT: Wall # hard\n#right:wall\n  # interpolation: step\n"
+    path = write(head + ROWS + GOOD)
+    profile = read_profile(path)
+    assert profile.title == "well #3: graded"
+    assert (profile.left.kind, profile.right.kind) == ("wall", "wall")
+    assert profile.rows.interpolation == "step"
+    other = read_profile(path, title="mine", left="open", right="open", interpolation="linear")
+    assert other.title == "mine"
+    assert (other.left.kind, other.right.kind) == ("open", "open")
+    assert other.rows.interpolation == "linear"
+
+
+def test_interpolation_given_for_layers_is_refused(write):
+    """A setting that does nothing would let the caller think that it did."""
+    with pytest.raises(TableError, match="^well.csv: interpolation has no meaning for a table of"):
+        read_profile(write(LAYERS + "5, 0, 0.067\n"), interpolation="step")
+
+
+def test_every_column_of_rows_reaches_the_profile(write):
+    """Units may differ between columns; the profile's are those of x and V."""
+    path = write(
+        "sigma_V [meV], alpha [1/eV], x [angstrom], V [meV], m [m_e]\n"
+        "2.5, 0.6, 0, 280, 0.092\n1.5, 0.5, 50, 0, 0.067\n"
+    )
+    profile = read_profile(path)
+    assert profile.units == Units("angstrom", "meV")
+    assert profile.rows.sigma_V.tolist() == [2.5, 1.5]
+    # 1/eV is 1e-3/meV, by the meaning of the prefix.
+    ends = [profile.left.alpha, profile.right.alpha]
+    assert np.allclose(ends, [0.6e-3, 0.5e-3], rtol=1e-15, atol=0)
+
+
+def test_every_column_of_layers_reaches_the_profile(write):
+    """Layers carry names with blanks and points, which are for people."""
+    path = write(
+        "layer; thickness [nm]; V [eV]; V_end [meV]; m [m_e]; m_end [m_e]; alpha [1/eV]\n"
+        "Al0.3Ga0.7As spacer, upper; 2,5; 0,28; 140; 0,092; 0,08; 0,6\n"
+        "; 5; 0; 0; 0,067; 0,067; 0,5\n"
+    )
+    profile = read_profile(path, left="wall")
+    assert profile.kind == "layers"
+    assert profile.units == Units("nm", "eV")
+    assert profile.x.tolist() == [0.0, 2.5, 7.5]
+    V = profile.V([0.0, 2.5 - 1e-12, 2.5])
+    assert np.allclose(V, [0.28, 0.14, 0.0], rtol=0, atol=1e-12)
+    assert np.allclose(profile.m([0.0, 1.25, 5.0]), [0.092, 0.086, 0.067], rtol=1e-14)
+    assert (profile.left.kind, profile.right.kind) == ("wall", "open")
+    assert (profile.left.alpha, profile.right.alpha) == (0.6, 0.5)
+
+
+def test_mass_is_one_without_its_column(write):
+    """Dimensionless problems have no mass to write."""
+    profile = read_profile(write("x [bohr], V [hartree]\n0, 1\n1, 0\n"))
+    assert profile.m(0.5) == 1.0
+
+
+def test_jumps_at_both_ends_are_rows_like_others(write):
+    """Two rows at the first x set the potential beyond the open edge."""
+    profile = read_profile(write(ROWS + "0, 0.3, 1\n0, 0, 1\n5, 0, 1\n5, 0.2, 1\n"))
+    assert (profile.left.V, profile.right.V) == (0.3, 0.2)
+    assert profile.V(2.5) == 0.0
+
+
+def test_source_and_digest_are_those_of_the_file(write, tmp_path):
+    """A result must be traceable to the bytes it came from, line ends and mark included."""
+    content = b"\xef\xbb\xbf" + (ROWS + GOOD).replace("\n", "\r\n").encode()
+    write(content)
+    profile = read_profile(tmp_path / "well.csv")
+    assert profile.source == str(tmp_path / "well.csv")
+    assert profile.sha256 == hashlib.sha256(content).hexdigest()
+
+
+# Both ways through a file -----------------------------------------------------------------------
+
+
+def by_both_ways(path, named=None):
+    source = tables.decoded(path, tables.read_bytes(path))
+    table = tables.split(source, named, tables.SETTINGS)
+    return tables._numbers_at_once(table), tables._numbers_by_line(table)
+
+
+@pytest.mark.parametrize("variant", SAME)
+def test_clean_file_is_read_alike_by_both_ways(variant, write):
+    """A fault must not change the numbers around it."""
+    at_once, by_line = by_both_ways(write(SAME[variant]))
+    if at_once is None:  # blank lines of blanks are read by line alone
+        assert variant == "comments everywhere"
+    else:
+        assert np.array_equal(at_once, by_line)
+    assert by_line.shape == (2, 3)
+
+
+@pytest.mark.parametrize("seed", range(4))
+@pytest.mark.parametrize(
+    ("delimiter", "decimal"), [*zip(",;\t ", "....", strict=True), *zip(";\t ", ",,,", strict=True)]
+)
+def test_random_numbers_are_read_alike_by_both_ways(seed, delimiter, decimal, write):
+    """Every float that is written comes back to the last bit, whichever way."""
+    rng = np.random.default_rng(seed)
+    values = rng.standard_normal((50, 3)) * 10.0 ** rng.integers(-300, 300, (50, 3))
+    rows = [delimiter.join(repr(float(v)) for v in row).replace(".", decimal) for row in values]
+    header = ROWS.strip().replace(", ", delimiter)
+    at_once, by_line = by_both_ways(write("\n".join([header, *rows])))
+    assert np.array_equal(at_once, values)
+    assert np.array_equal(by_line, values)
+
+
+NUMBERS = "1 +1 -1 1. .5 -.5e-3 1e5 1E+05 00012 1e-400 1e400 nan -NaN inf +Infinity".split()
+NO_NUMBERS = (
+    "1_000 0x10 1e 1e+ e5 . + - -- +-1 1.2.3 1d5 1f 1j True None 1/2 1..2 1e5.0 infinit nan(1) "
+    "1'000 \N{VULGAR FRACTION ONE HALF} \N{ARABIC-INDIC DIGIT ONE} \N{MINUS SIGN}1"
+).split()
+
+
+@pytest.mark.parametrize("token", NUMBERS + NO_NUMBERS)
+def test_both_ways_agree_on_what_a_number_is(token, write):
+    """If one way took text that the other refuses, a fault elsewhere would change the verdict."""
+    path = write(f"x [nm], V [eV]\n0, 1\n1, {token}\n")
+    source = tables.decoded(path, tables.read_bytes(path))
+    table = tables.split(source, None, tables.SETTINGS)
+    at_once = tables._numbers_at_once(table)
+    if token in NUMBERS:
+        assert np.array_equal(at_once, tables._numbers_by_line(table), equal_nan=True)
+    else:
+        assert at_once is None
+        with pytest.raises(TableError, match="expected a number"):
+            tables._numbers_by_line(table)
+
+
+def test_faulty_files_are_not_read_at_once(write):
+    """The fast way must refuse all that the careful way would explain."""
+    refused = 0
+    for fault in ROW_FAULTS:
+        if "expected a number" in fault.text or "values, found" in fault.text:
+            path = write(fault.content)
+            named = tables.named_columns(
+                fault.arguments.get("columns"), fault.arguments.get("units")
+            )
+            source = tables.decoded(path, tables.read_bytes(path))
+            table = tables.split(source, named, tables.SETTINGS)
+            assert tables._numbers_at_once(table) is None, fault.id
+            refused += 1
+    assert refused > 20
+
+
+@pytest.mark.parametrize("seed", range(4))
+def test_damaged_file_is_read_alike_or_refused(seed, write):
+    """Whatever bytes arrive: a profile or a TableError, and never two answers."""
+    rng = np.random.default_rng(seed)
+    whole = [c if isinstance(c, bytes) else c.encode() for c in SAME.values()]
+    scraps = [bytes([b]) for b in b'\n\r\t ,;.#[]:=01-+eE"\x00\xc3\xa0\x0c'] + [
+        b"",
+        b"nan",
+        b"1e999",
+    ]
+    outcomes = {"read": 0, "refused": 0}
+    for _ in range(150):
+        data = bytearray(whole[rng.integers(len(whole))])
+        for _ in range(rng.integers(1, 4)):
+            at = rng.integers(len(data) + 1)
+            data[at : at + rng.integers(3)] = scraps[rng.integers(len(scraps))]
+        path = write(bytes(data))
+        try:
+            read_profile(path)
+            at_once, by_line = by_both_ways(path)
+            assert at_once is None or np.array_equal(at_once, by_line)
+            outcomes["read"] += 1
+        except TableError as error:
+            assert str(error).startswith("well.csv")
+            outcomes["refused"] += 1
+    assert min(outcomes.values()) > 20, outcomes
+
+
+def test_clean_file_is_never_read_by_line(write, monkeypatch):
+    """Line by line a million rows take 5 s, at once 0.6 s: a clean file must take the fast way."""
+    monkeypatch.setattr(tables, "_numbers_by_line", None)
+    for variant in set(SAME) - {"comments everywhere"}:
+        read_profile(write(SAME[variant]))
+
+
+def test_many_faults_are_listed_in_bounded_space(write):
+    """A column of a hundred thousand faults is one message, not a flood."""
+    with pytest.raises(TableError) as caught:
+        read_profile(write(ROWS + "".join(f"{x}, ?, 1\n" for x in range(100_000))))
+    assert "lines 3, 4, 5, 6, 7 and 99994 more lines" in str(caught.value)
+    assert len(str(caught.value)) < 500
+
+
+def test_reading_imports_neither_numba_nor_matplotlib():
+    """A table that is wrong should be refused before anything slow is loaded."""
+    code = "import sys, eigen1d.tables; print({'numba', 'matplotlib', 'scipy'} & set(sys.modules))"
+    run = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
+    assert run.stdout.strip() == "set()"
