@@ -405,19 +405,20 @@ def test_damaged_file_is_read_alike_or_refused(seed, write):
     outcomes = {"read": 0, "refused": 0}
     for _ in range(150):
         data = bytearray(whole[rng.integers(len(whole))])
-        for _ in range(rng.integers(1, 4)):
+        for _ in range(rng.integers(1, 3)):
             at = rng.integers(len(data) + 1)
             data[at : at + rng.integers(3)] = scraps[rng.integers(len(scraps))]
         path = write(bytes(data))
         try:
             read_profile(path)
-            at_once, by_line = by_both_ways(path)
-            assert at_once is None or np.array_equal(at_once, by_line)
-            outcomes["read"] += 1
         except TableError as error:
             assert str(error).startswith("well.csv")
             outcomes["refused"] += 1
-    assert min(outcomes.values()) > 20, outcomes
+        else:
+            at_once, by_line = by_both_ways(path)
+            assert at_once is None or np.array_equal(at_once, by_line)
+            outcomes["read"] += 1
+    assert min(outcomes.values()) >= 10, outcomes  # else the damage tests one outcome alone
 
 
 def test_clean_file_is_never_read_by_line(write, monkeypatch):
