@@ -1,0 +1,680 @@
+"""Compiled kernels of the shooting solver. They know arrays only, in units with hbar = 1.
+
+On a cell of width h, with t in [0, 1]:  psi' = m phi,  phi' = 2 (V - E) psi.  phi = psi'/m is what
+stays continuous where the mass jumps. V and m are polynomials in t, the mass also linear in E:
+m = mass + E * mass_per_energy. A cell is crossed in one of two ways:
+
+series    Power series of the solution by a two-term recurrence. Cells are cut so that
+          2 m |V - E| h^2 <= LARGEST, where some 20 terms reach rounding and psi has at most one zero.
+constant  cos/sin or tanh, for cells of constant V and m of any width, which no table of layers
+          should pay for by subdivision.
+
+The chain over cells is serial, so trial energies run side by side as lanes of the inner loops.
+Sweeping to the left is sweeping to the right through the mirror image, where phi changes sign.
+"""
+
+import numba
+import numpy as np
+
+LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
+LARGEST = 2.25  # of 2 m |V - E| h^2 in a series step; < pi^2, so that psi has at most one zero in it
+_TERMS = 96  # most terms of a series; a cell that asks for more is cut further
+_DEGREE = 32  # most coefficients of a polynomial
+_EPS = np.finfo(np.float64).eps
+_BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
+_LOG_BIG = 300 * np.log(2.0)
+_AGE = 16  # steps between two looks at amplitudes: far from enough to leave the range of doubles
+_MOST_PARTS = 1 << 20  # of a cell
+
+
+def kernel(function):
+    """Compile: cached, division by zero as IEEE says, and no fast-math, which the compensated sums
+    in `_add` would not survive.
+    """
+    return numba.njit(cache=True, error_model="numpy", nogil=True)(function)
+
+
+@kernel
+def _polynomial(coefficients, cell, backward, start, ratio, out):
+    """Write the coefficients of p(start + ratio t) into `out` and return how many there are.
+
+    With `backward` t counts from the cell's right end to its left. Horner's scheme, shifted.
+    """
+    size = coefficients.shape[1]
+    while size > 1 and coefficients[cell, size - 1] == 0.0:
+        size -= 1
+    for j in range(size):
+        out[j] = coefficients[cell, j]
+    if size == 1:
+        return size
+    offset, scale = (1.0 - start, -ratio) if backward else (start, ratio)
+    if offset != 0.0:
+        for k in range(size - 1):
+            for j in range(size - 2, k - 1, -1):
+                out[j] += offset * out[j + 1]
+    power = 1.0
+    for j in range(1, size):
+        power *= scale
+        out[j] *= power
+    return size
+
+
+@kernel
+def _sum_abs(c, first, size):
+    total = 0.0
+    for j in range(first, size):
+        total += abs(c[j])
+    return total
+
+
+@kernel
+def _terms(w, mass, zeta, w_size, m_size, majorant):
+    """How many terms of the series are needed, from a majorant of its coefficients.
+
+    `w` and `mass` hold absolute values, already multiplied by h. The state starts as (1, eta) with
+    eta such that both equations have the same rate zeta = sqrt(2 m |V - E|) h. Terms are dropped
+    when they are below rounding relative to the first one, so that what is lost in a million small
+    cells stays below rounding too. Returns _TERMS if that many do not suffice.
+    """
+    m_total, w_total = _sum_abs(mass, 0, m_size), _sum_abs(w, 0, w_size)
+    eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
+    majorant[0, 0] = 1.0
+    majorant[1, 0] = eta
+    target = 0.03 * _EPS * zeta
+    quiet = 0
+    for k in range(_TERMS - 1):
+        psi = 0.0
+        for j in range(min(k + 1, m_size)):
+            psi += mass[j] * majorant[1, k - j]
+        phi = 0.0
+        for j in range(min(k + 1, w_size)):
+            phi += w[j] * majorant[0, k - j]
+        majorant[0, k + 1] = psi / (k + 1)
+        majorant[1, k + 1] = phi / (k + 1)
+        small = majorant[0, k + 1] <= target and majorant[1, k + 1] <= target * eta
+        quiet = quiet + 1 if small else 0
+        if quiet > max(m_size, w_size):
+            return max(k + 1 - quiet + 1, 1)
+    return _TERMS
+
+
+@kernel
+def _add(value, carry, lane, increment):
+    """Compensated sum (two-sum of D. E. Knuth, TAOCP 2, sec. 4.2.2): value + carry gain increment.
+
+    A cell of a fine table changes psi by little; adding that plainly would cost half an ulp of psi
+    a cell, which a table of 10^7 rows turns into 1e-13 of the energy or worse.
+    """
+    before = value[lane]
+    increment += carry[lane]
+    after = before + increment
+    part = after - before
+    carry[lane] = (before - (after - part)) + (increment - part)
+    value[lane] = after
+
+
+@kernel
+def _series(a, b, w, mass, lanes, terms, w_size, m_size):
+    """Fill the power series psi = sum a_k t^k, phi = sum b_k t^k for all lanes.
+
+    Shapes: a, b (terms + 1, LANES) with row 0 given; w, mass (size, LANES), multiplied by h.
+    """
+    for k in range(terms):
+        inverse = 1.0 / (k + 1)
+        for lane in range(lanes):
+            a[k + 1, lane] = mass[0, lane] * b[k, lane]
+            b[k + 1, lane] = w[0, lane] * a[k, lane]
+        for j in range(1, min(k + 1, m_size)):
+            for lane in range(lanes):
+                a[k + 1, lane] += mass[j, lane] * b[k - j, lane]
+        for j in range(1, min(k + 1, w_size)):
+            for lane in range(lanes):
+                b[k + 1, lane] += w[j, lane] * a[k - j, lane]
+        for lane in range(lanes):
+            a[k + 1, lane] *= inverse
+            b[k + 1, lane] *= inverse
+
+
+@kernel
+def _is_positive(psi, phi):
+    """Sign of psi just beyond the point: at a zero, that of its slope."""
+    return psi > 0.0 or (psi == 0.0 and phi > 0.0)
+
+
+@kernel
+def _constant(v, mass, h, psi, phi):
+    """Cross a cell of constant V - E = v and mass.
+
+    Returns
+    -------
+    psi, phi : float
+        At the far end, divided by exp(log) where the solution grows.
+    zeros : int
+        Of psi in the cell, its far end included.
+    log : float
+    """
+    z = 2.0 * mass * v * h * h
+    if z < 0.0:
+        k = np.sqrt(-z)
+        c, s = np.cos(k), np.sin(k) / k
+        out_psi = c * psi + s * mass * h * phi
+        out_phi = c * phi + s * 2.0 * v * h * psi
+        # Pruefer angle from the first to the last point, in half turns. Its parity is taken from
+        # the signs at both ends, which the caller and the next cell see too: a zero that rounding
+        # puts on either side of the joint is then counted once, not twice or never.
+        angle = np.arctan2(psi, phi * mass * h / k) / np.pi
+        angle -= np.floor(angle)
+        turns = angle + k / np.pi
+        odd = 1 if _is_positive(psi, phi) != _is_positive(out_psi, out_phi) else 0
+        zeros = odd + 2 * int(np.round(0.5 * (turns - 0.5 - odd)))
+        return out_psi, out_phi, max(zeros, odd), 0.0
+    if z == 0.0:
+        out_psi, out_phi, log = psi + mass * h * phi, phi + 2.0 * v * h * psi, 0.0
+    else:
+        k = np.sqrt(z)
+        th = np.tanh(k) / k
+        out_psi = psi + th * mass * h * phi
+        out_phi = phi + th * 2.0 * v * h * psi
+        log = k + np.log1p(np.exp(-2.0 * k)) - np.log(2.0)
+    zeros = 1 if _is_positive(psi, phi) != _is_positive(out_psi, out_phi) else 0
+    return out_psi, out_phi, zeros, log
+
+
+@kernel
+def _start(edge, energy):
+    """psi and phi at an edge, for the solution that is right there, growing inwards.
+
+    `edge` is (is open, V, mass, mass_per_energy). Open: phi/psi = kappa/m. Wall: psi = 0.
+    """
+    if edge[0] == 0.0:
+        return 0.0, 1.0
+    mass = edge[2] + energy * edge[3]
+    return 1.0, np.sqrt(2.0 * max(edge[1] - energy, 0.0) / mass)
+
+
+@kernel
+def _cross(
+    V, mass, per_energy, cell, h, backward, fraction, energies, low, high,
+    p, f, p_carry, f_carry, log, count, scratch,
+):  # fmt: skip
+    """Carry the state of all lanes across the first `fraction` of a cell of width h.
+
+    Shapes: p, f (psi and phi), p_carry, f_carry, log, count and energies (lanes,); low and high are
+    the ends of the energies. Returns about how many powers of 10 amplitudes may have grown by.
+    """
+    a, b, w, m, w_cell, m_cell, q_cell, majorant = scratch
+    lanes = energies.size
+    w_size = _polynomial(V, cell, backward, 0.0, fraction, w_cell)
+    m_size = _polynomial(mass, cell, backward, 0.0, fraction, m_cell)
+    q_size = 0
+    if per_energy.shape[1] > 0:
+        q_size = _polynomial(per_energy, cell, backward, 0.0, fraction, q_cell)
+    h *= fraction
+    reach = max(abs(w_cell[0] - low), abs(w_cell[0] - high)) + _sum_abs(w_cell, 1, w_size)
+    weight = _sum_abs(m_cell, 0, m_size)
+    if q_size > 0:
+        weight += max(abs(low), abs(high)) * _sum_abs(q_cell, 0, q_size)
+    size = 2.0 * weight * reach * h * h
+    if size > LARGEST and w_size == 1 and m_size == 1 and q_size <= 1:
+        for lane in range(lanes):
+            m_lane = m_cell[0] + (energies[lane] * q_cell[0] if q_size else 0.0)
+            p[lane], f[lane], crossed, grown = _constant(
+                w_cell[0] - energies[lane], m_lane, h, p[lane], f[lane]
+            )
+            p_carry[lane], f_carry[lane] = 0.0, 0.0
+            count[lane] += crossed
+            log[lane] += grown
+        return 8
+    parts = max(int(np.ceil(np.sqrt(size / LARGEST))), 1)
+    part, age = 0, 0
+    while part < parts:
+        if parts > 1:
+            start, ratio = fraction * part / parts, fraction / parts
+            w_size = _polynomial(V, cell, backward, start, ratio, w_cell)
+            m_size = _polynomial(mass, cell, backward, start, ratio, m_cell)
+            if q_size > 0:
+                q_size = _polynomial(per_energy, cell, backward, start, ratio, q_cell)
+        terms = _load(
+            w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h / parts,
+            w, m, majorant,
+        )  # fmt: skip
+        if terms >= _TERMS and parts < _MOST_PARTS:
+            parts, part = 2 * parts, 2 * part  # a wilder polynomial than `size` could tell
+            continue
+        for lane in range(lanes):
+            a[0, lane], b[0, lane] = p[lane], f[lane]
+        _series(a, b, w, m, lanes, terms, w_size, max(m_size, q_size))
+        for lane in range(lanes):
+            before = _is_positive(p[lane], f[lane])
+            gain_p, gain_f = a[terms, lane], b[terms, lane]
+            for k in range(terms - 1, 0, -1):
+                gain_p += a[k, lane]
+                gain_f += b[k, lane]
+            _add(p, p_carry, lane, gain_p)
+            _add(f, f_carry, lane, gain_f)
+            if _is_positive(p[lane], f[lane]) != before:
+                count[lane] += 1
+        part += 1
+        age += 1
+        if age >= _AGE:
+            _rescale(p, f, p_carry, f_carry, log, lanes)
+            age = 0
+    return age
+
+
+@kernel
+def _scratch():
+    return (
+        np.empty((_TERMS + 1, LANES)),
+        np.empty((_TERMS + 1, LANES)),
+        np.empty((_DEGREE, LANES)),
+        np.empty((_DEGREE, LANES)),
+        np.empty(_DEGREE),
+        np.empty(_DEGREE),
+        np.empty(_DEGREE),
+        np.empty((2, _TERMS + 1)),
+    )
+
+
+@kernel
+def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
+    """Shoot from one edge to the nodes `stop`, for up to LANES energies at once.
+
+    Parameters
+    ----------
+    cells : (width, V, mass, mass_per_energy)
+        Shapes (cells,) and (cells, degree + 1).
+    edge : ndarray, shape (4,)
+        Where the sweep starts, see `_start`.
+    backward : bool
+        From the right edge to the left; phi then has the mirror image's sign.
+    energies : ndarray, shape (lanes,)
+    stop : ndarray of int64, shape (lanes,)
+        Node (0 to cells) at which each lane's result is taken.
+    psi, phi : ndarray, shape (lanes,)
+        Result: the solution at `stop`, to a positive factor.
+    zeros : ndarray of int64, shape (lanes,)
+        Result: zeros of psi between the edge and `stop`, that node included.
+    trail : ndarray, shape (samples, 3, lanes)
+        Result: psi, phi and the logarithm of their common factor at the nodes 0, stride, 2 stride,
+        ... that the sweep reaches; no samples, no record.
+    """
+    width, V, mass, per_energy = cells
+    lanes = energies.size
+    p, f = np.empty(lanes), np.empty(lanes)
+    p_carry, f_carry, log = np.zeros(lanes), np.zeros(lanes), np.zeros(lanes)
+    count = np.zeros(lanes, np.int64)
+    scratch = _scratch()
+    low, high = energies.min(), energies.max()
+    for lane in range(lanes):
+        p[lane], f[lane] = _start(edge, energies[lane])
+    node = width.size if backward else 0
+    last = stop.min() if backward else stop.max()
+    age = 0  # steps since amplitudes were last brought into range
+    while True:
+        if trail.shape[0] > 0 and node % stride == 0:
+            for lane in range(lanes):
+                trail[node // stride, 0, lane] = p[lane]
+                trail[node // stride, 1, lane] = f[lane]
+                trail[node // stride, 2, lane] = log[lane]
+        for lane in range(lanes):
+            if stop[lane] == node:
+                psi[lane], phi[lane], zeros[lane] = p[lane], f[lane], count[lane]
+        if node == last:
+            return
+        cell = node - 1 if backward else node
+        age += _cross(
+            V, mass, per_energy, cell, width[cell], backward, 1.0, energies, low, high,
+            p, f, p_carry, f_carry, log, count, scratch,
+        )  # fmt: skip
+        if age >= _AGE:
+            _rescale(p, f, p_carry, f_carry, log, lanes)
+            age = 0
+        node += -1 if backward else 1
+
+
+@kernel
+def angles(cells, left, right, energies, stop, sigma, turn, angle):
+    """Shoot from both edges and compare the two solutions where they meet.
+
+    With psi_L = A sin(theta) / sigma, phi_L = A cos(theta), and the same for the mirror image of
+    the right solution, the sum of both Pruefer angles D grows steadily with E and is (n + 1) pi at
+    the level with n nodes.
+
+    Parameters
+    ----------
+    energies : ndarray, shape (k,), any number
+    stop : ndarray of int64, shape (k,)
+        Node where they meet.
+    sigma : ndarray, shape (k,)
+        Scale of phi / psi; any positive number is right, one near sqrt(2 |E - V| / m) is smooth.
+    turn : ndarray of int64, shape (k,)
+        Result.
+    angle : ndarray, shape (k,)
+        Result: D = turn pi + angle, with angle in (-pi/2, pi/2], precise near zero.
+
+    References
+    ----------
+    .. [1] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
+    """
+    trail = np.empty((0, 3, 0))
+    psi, phi, psi_r, phi_r = np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
+    zeros, zeros_r = np.empty(LANES, np.int64), np.empty(LANES, np.int64)
+    for low in range(0, energies.size, LANES):
+        high = min(low + LANES, energies.size)
+        lanes = high - low
+        sweep(
+            cells, left, False, energies[low:high], stop[low:high],
+            psi[:lanes], phi[:lanes], zeros[:lanes], trail, 1,
+        )  # fmt: skip
+        sweep(
+            cells, right, True, energies[low:high], stop[low:high],
+            psi_r[:lanes], phi_r[:lanes], zeros_r[:lanes], trail, 1,
+        )  # fmt: skip
+        for lane in range(lanes):
+            turn[low + lane], angle[low + lane] = _joined(
+                psi[lane], phi[lane], psi_r[lane], phi_r[lane],
+                zeros[lane] + zeros_r[lane], sigma[low + lane],
+            )  # fmt: skip
+
+
+@kernel
+def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
+    """turn and angle of `angles` from the two solutions and the zeros that both have passed."""
+    sine = sigma * (psi * phi_r + phi * psi_r)
+    cosine = phi * phi_r - sigma * psi * (sigma * psi_r)
+    if _is_positive(psi, phi) != _is_positive(psi_r, phi_r):
+        sine, cosine = -sine, -cosine
+    # Both angles lie in [0, pi), their sum in [0, 2 pi): sine < 0 is its upper half.
+    if cosine <= 0.0:
+        return zeros + 1, np.arctan2(-sine, -cosine) if sine != 0.0 else 0.0
+    return zeros + (2 if sine < 0.0 else 0), np.arctan(sine / cosine)
+
+
+@kernel
+def isolate(cells, left, right, stop, sigma, resolution, first, last, start, bracket, count):
+    """Cut an energy interval until each wanted level is alone in its piece, by counting.
+
+    Parameters
+    ----------
+    stop, sigma
+        One node and one scale for all energies, see `angles`.
+    resolution : (relative, floor)
+        A piece narrower than relative * |E - floor| + spacing of doubles at E is not cut further.
+    first, last : int
+        Levels wanted: first <= n < last.
+    start : (low, high, count_low, count_high)
+        The interval and the number of levels below each end.
+    bracket, count : ndarray, shape (last - first, 2), of float64 and int64
+        Result: the piece that holds each level and the numbers of levels below its ends.
+    """
+    size = last - first
+    ends, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
+    ends[0, 0], ends[0, 1], counts[0, 0], counts[0, 1] = start
+    pieces = 1
+    while pieces > 0:
+        each = max(LANES // pieces, 1)
+        points = np.empty(pieces * LANES)
+        owner = np.empty(pieces * LANES, np.int64)
+        used = 0
+        for i in range(pieces):
+            inside = max(each, min(counts[i, 1] - counts[i, 0], LANES - 1))
+            for k in range(inside):
+                points[used] = ends[i, 0] + (ends[i, 1] - ends[i, 0]) * ((k + 1.0) / (inside + 1.0))
+                owner[used] = i
+                used += 1
+        turn, angle = np.empty(used, np.int64), np.empty(used)
+        angles(
+            cells, left, right, points[:used], np.full(used, stop), np.full(used, sigma), turn, angle
+        )
+        new_ends, new_counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
+        kept, k = 0, 0
+        for i in range(pieces):
+            low, n_low = ends[i, 0], counts[i, 0]
+            while n_low < counts[i, 1]:
+                if k < used and owner[k] == i:
+                    high, n_high = points[k], turn[k] - (1 if angle[k] < 0.0 else 0)
+                    n_high = min(max(n_high, n_low), counts[i, 1])
+                    k += 1
+                else:
+                    high, n_high = ends[i, 1], counts[i, 1]
+                if n_high > first and n_low < last and n_high > n_low:
+                    floor = resolution[1]
+                    size_high = max(abs(low), abs(high))
+                    fine = resolution[0] * (high - floor) + 2.0 * _EPS * size_high
+                    if n_high == n_low + 1 or high - low <= fine:
+                        for n in range(max(n_low, first), min(n_high, last)):
+                            bracket[n - first, 0], bracket[n - first, 1] = low, high
+                            count[n - first, 0], count[n - first, 1] = n_low, n_high
+                    else:
+                        new_ends[kept, 0], new_ends[kept, 1] = low, high
+                        new_counts[kept, 0], new_counts[kept, 1] = n_low, n_high
+                        kept += 1
+                low, n_low = high, n_high
+            while k < used and owner[k] == i:
+                k += 1
+        ends, counts, pieces = new_ends, new_counts, kept
+
+
+@kernel
+def refine(cells, left, right, edge, stop, sigma, resolution, n, bracket, energy, rounds):
+    """Close the brackets of isolated levels by root finding on the angle of `angles`.
+
+    Inverse quadratic interpolation kept inside the bracket, with bisection where that is unsafe
+    (T. R. Chandrupatla, Adv. Eng. Softw. 28 (1997) 145), in the variable u = -sqrt(edge - E), in
+    which the angle is smooth up to the continuum; u = E between two walls (edge infinite).
+
+    Parameters
+    ----------
+    stop, sigma : ndarray, shape (k,)
+    resolution : (relative, floor)
+        As for `isolate`; the error aimed at.
+    n : ndarray of int64, shape (k,)
+    bracket : ndarray, shape (k, 2)
+        Holds just level n; overwritten by a smaller one.
+    energy : ndarray, shape (k,)
+        Result: the best energy.
+    rounds : int
+        Most evaluations a level.
+
+    Returns
+    -------
+    ndarray of bool, shape (k,)
+        Which levels have converged.
+    """
+    size = n.size
+    # x1 is the newest end of the bracket, x2 the other one, x3 the point dropped last.
+    x, f = np.empty((3, size)), np.empty((3, size))
+    turn, angle = np.empty(size, np.int64), np.empty(size)
+    for end in range(2):
+        angles(cells, left, right, bracket[:, end].copy(), stop, sigma, turn, angle)
+        for i in range(size):
+            x[end, i], x[2, i] = bracket[i, end], bracket[i, end]
+            f[end, i] = (turn[i] - n[i] - 1) * np.pi + angle[i]
+            f[2, i] = f[end, i]
+    share = np.full(size, 0.5)
+    done = np.zeros(size, np.bool_)
+    for i in range(size):
+        if f[0, i] >= 0.0 or f[1, i] < 0.0:
+            # The count that made this bracket and the angle at its end differ by rounding: the
+            # level is that end.
+            energy[i] = x[0, i] if f[0, i] >= 0.0 else x[1, i]
+            done[i] = True
+    points = np.empty(size)
+    active = np.empty(size, np.int64)
+    for _ in range(rounds):
+        used = 0
+        for i in range(size):
+            if not done[i]:
+                points[used] = _between(x[0, i], x[1, i], share[i], edge)
+                active[used] = i
+                used += 1
+        if used == 0:
+            break
+        chosen = active[:used]
+        angles(
+            cells, left, right, points[:used], stop[chosen], sigma[chosen], turn[:used], angle[:used]
+        )
+        for k in range(used):
+            i = active[k]
+            value = (turn[k] - n[i] - 1) * np.pi + angle[k]
+            done[i] = _narrow(x, f, share, i, points[k], value, edge, resolution)
+    for i in range(size):
+        if f[0, i] < 0.0 or f[1, i] < 0.0:
+            best = 0 if abs(f[0, i]) < abs(f[1, i]) else 1
+            energy[i] = x[best, i]
+        bracket[i, 0], bracket[i, 1] = min(x[0, i], x[1, i]), max(x[0, i], x[1, i])
+    return done
+
+
+@kernel
+def _between(one, other, share, edge):
+    """The energy at `share` of the way from one to other, measured in u."""
+    if edge == np.inf:
+        return one + share * (other - one)
+    u_one, u_other = -np.sqrt(max(edge - one, 0.0)), -np.sqrt(max(edge - other, 0.0))
+    both = u_one + u_other
+    step = share * (one - other) / both if both != 0.0 else 0.0
+    # E is moved, not recomputed from u: edge - u^2 would round to the depth of the edge.
+    return one - step * (2.0 * u_one + step)
+
+
+@kernel
+def _ratio(a, b, c, edge):
+    """(u_a - u_b) / (u_c - u_b), without cancellation."""
+    if edge == np.inf:
+        return (a - b) / (c - b)
+    u = -np.sqrt(max(edge - b, 0.0))
+    u_a, u_c = -np.sqrt(max(edge - a, 0.0)), -np.sqrt(max(edge - c, 0.0))
+    return (a - b) / (c - b) * ((u_c + u) / (u_a + u))
+
+
+@kernel
+def _narrow(x, f, share, i, point, value, edge, resolution):
+    """One step of Chandrupatla's method for level i; True when its bracket is closed."""
+    if (value < 0.0) == (f[0, i] < 0.0):
+        x[2, i], f[2, i] = x[0, i], f[0, i]
+    else:
+        x[2, i], f[2, i] = x[1, i], f[1, i]
+        x[1, i], f[1, i] = x[0, i], f[0, i]
+    x[0, i], f[0, i] = point, value
+    x1, x2, x3 = x[0, i], x[1, i], x[2, i]
+    f1, f2, f3 = f[0, i], f[1, i], f[2, i]
+    height = max(point - resolution[1], 0.0)
+    if edge < np.inf:
+        # Near the continuum the state lies mostly in the tails, which round nothing.
+        height = min(height, np.sqrt(height * max(edge - point, 0.0)))
+    fine = 0.25 * resolution[0] * height + _EPS * abs(point)
+    width = abs(x2 - x1)
+    if value == 0.0 or width <= fine:
+        return True
+    least = fine / width
+    share[i] = 0.5
+    if f3 != f1 and f3 != f2:
+        xi = _ratio(x1, x2, x3, edge)
+        ph = (f1 - f2) / (f3 - f2)
+        if ph * ph < xi and (1.0 - ph) ** 2 < 1.0 - xi:
+            share[i] = f1 / (f2 - f1) * f3 / (f2 - f3) + _ratio(x3, x1, x2, edge) * f1 / (
+                f3 - f1
+            ) * f2 / (f3 - f2)
+    if least >= 0.5:
+        share[i] = 0.5
+    else:
+        share[i] = min(max(share[i], least), 1.0 - least)
+    return False
+
+
+@kernel
+def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, phi):
+    """Evaluate wave functions inside cells, from the node on the side where they grow inwards.
+
+    Parameters
+    ----------
+    energies : ndarray, shape (levels,)
+    start_psi, start_phi : ndarray, shape (levels, cells + 1)
+        At the nodes.
+    cell : ndarray of int64, shape (points,)
+    fraction : ndarray, shape (points,)
+        0 to 1 across the cell.
+    backward : ndarray of int64, shape (levels,)
+        From this cell on, a level is evaluated from the right.
+    psi, phi : ndarray, shape (levels, points)
+        Result.
+    """
+    width, V, mass, per_energy = cells
+    scratch = _scratch()
+    zero = np.zeros(LANES)
+    lane_energy, lane_level = np.empty(LANES), np.empty(LANES, np.int64)
+    p, f, p_carry, f_carry, log = (
+        np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
+    )  # fmt: skip
+    count = np.zeros(LANES, np.int64)
+    for point in range(cell.size):
+        c = cell[point]
+        for side in range(2):
+            part = fraction[point] if side == 0 else 1.0 - fraction[point]
+            sign = 1.0 if side == 0 else -1.0
+            level = 0
+            while level < energies.size:
+                lanes = 0
+                while level < energies.size and lanes < LANES:
+                    if (c >= backward[level]) == (side == 1):
+                        lane_energy[lanes], lane_level[lanes] = energies[level], level
+                        p[lanes] = start_psi[level, c + side]
+                        f[lanes] = sign * start_phi[level, c + side]
+                        lanes += 1
+                    level += 1
+                if lanes == 0:
+                    continue
+                p_carry[:], f_carry[:], log[:] = zero, zero, zero
+                if part > 0.0:
+                    _cross(
+                        V, mass, per_energy, c, width[c], side == 1, part,
+                        lane_energy[:lanes], lane_energy[:lanes].min(), lane_energy[:lanes].max(),
+                        p[:lanes], f[:lanes], p_carry[:lanes], f_carry[:lanes], log[:lanes],
+                        count[:lanes], scratch,
+                    )  # fmt: skip
+                for lane in range(lanes):
+                    psi[lane_level[lane], point] = p[lane] * np.exp(log[lane])
+                    phi[lane_level[lane], point] = sign * f[lane] * np.exp(log[lane])
+
+
+@kernel
+def _load(w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h, w, m, majorant):
+    """Spread a cell's polynomials over the lanes, multiplied by h; return the terms needed."""
+    lanes = energies.size
+    sizes = max(m_size, q_size)
+    for j in range(sizes):
+        shared = m_cell[j] * h if j < m_size else 0.0
+        own = q_cell[j] * h if j < q_size else 0.0
+        for lane in range(lanes):
+            m[j, lane] = shared + own * energies[lane]
+        m_cell[j] = abs(shared) + abs(own) * max(abs(low), abs(high))
+    for lane in range(lanes):
+        w[0, lane] = 2.0 * h * (w_cell[0] - energies[lane])
+    w_cell[0] = 2.0 * h * max(abs(w_cell[0] - low), abs(w_cell[0] - high))
+    for j in range(1, w_size):
+        shared = 2.0 * h * w_cell[j]
+        for lane in range(lanes):
+            w[j, lane] = shared
+        w_cell[j] = abs(shared)
+    zeta = np.sqrt(_sum_abs(m_cell, 0, sizes) * _sum_abs(w_cell, 0, w_size))
+    return _terms(w_cell, m_cell, zeta, w_size, sizes, majorant)
+
+
+@kernel
+def _rescale(p, f, p_carry, f_carry, log, lanes):
+    for lane in range(lanes):
+        size = abs(p[lane]) + abs(f[lane])
+        factor = 1.0
+        if size > _BIG:
+            factor = _SMALL
+            log[lane] += _LOG_BIG
+        elif size < _SMALL:
+            factor = _BIG
+            log[lane] -= _LOG_BIG
+        if factor != 1.0:
+            p[lane] *= factor
+            f[lane] *= factor
+            p_carry[lane] *= factor
+            f_carry[lane] *= factor

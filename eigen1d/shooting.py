@@ -1,0 +1,363 @@
+"""Shooting on the cells themselves: every level by counting nodes, to rounding, with no grid.
+
+1. count   Levels below an energy = zeros of the solution from the left up to a meeting node, plus
+           those of the solution from the right, plus one if their slopes there have crossed (Sturm
+           oscillation; valid for any positive m and any jumps).
+2. isolate Cut the energy axis by counts until each wanted level is alone.
+3. refine  Root of the angle between the two solutions, kept inside the bracket. The nodes where
+           they meet are chosen where the state lives: the product |psi_L psi_R| is the Green
+           function on the diagonal, which near a level follows its psi^2. Sweeps then always run
+           in the direction in which the solution grows.
+4. verify  Count again a few rounding errors below and above each energy; that is the bracket.
+
+References
+----------
+.. [1] E. A. Coddington, N. Levinson, Theory of Ordinary Differential Equations (1955), ch. 8.
+.. [2] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
+"""
+
+from dataclasses import dataclass
+from functools import cached_property
+
+import numpy as np
+
+from . import _cells, _kernels
+from .errors import InputError
+from .levels import Budget, Levels
+
+EPS = np.finfo(float).eps
+# Half width of a bracket relative to the level's height above the least V. Each cell's entries are
+# rounded by an eps or so relative to the change that the cell makes in psi and phi (sums are
+# compensated); first-order perturbation theory turns that into eps * (kinetic + |potential - E|)
+# expectation values, together at most 3 heights. 16 leaves room for a handful of operations a cell;
+# the worst error seen against the reference levels is quoted in tests/test_shooting.py.
+ROUNDING = 16 * EPS
+_SAMPLES = 4096  # nodes at which the place of a state is looked for
+_FIRST_ROUNDS, _MORE_ROUNDS = 8, 12  # evaluations before the meeting node is chosen anew
+
+
+def find(profile, request):
+    """Find levels of a profile by shooting.
+
+    Parameters
+    ----------
+    profile : Profile
+    request : Request
+
+    Returns
+    -------
+    Levels
+
+    Raises
+    ------
+    InputError
+        A nonparabolicity so large that the mass is not positive at energies where levels may lie.
+    """
+    search = Search(profile)
+    first, last, notes = search.range(request)
+    energy, bracket = search.levels(first, last)
+    complete = bool(np.isfinite(energy).all())
+    half_width = np.maximum(bracket[:, 1] - energy, energy - bracket[:, 0])
+    return Levels(
+        profile=profile,
+        n=np.arange(first, last),
+        energy=energy,
+        bracket=bracket,
+        complete=complete,
+        method="shooting",
+        states=States(search, energy),
+        budget=Budget(numeric=half_width),
+        notes=notes,
+    )
+
+
+class Search:
+    """One profile made ready for the kernels, with the questions that a search asks it."""
+
+    def __init__(self, profile):
+        self.profile = profile
+        natural = profile.natural()
+        self.floor = profile.V_min
+        self.edge = profile.open_edge
+        _check_alpha(profile)
+        self.x, fields = _split(profile.x, natural, self.floor, self.edge)
+        self.cells = (np.diff(self.x), *fields)
+        self.left, self.right = _edge(natural.left), _edge(natural.right)
+        # The deepest cell: where all levels of a single well live.
+        self.home = int(np.argmin(fields[0][:, 0] + fields[0].sum(axis=1)))
+        self.home_mass = float(fields[1][self.home, 0])
+        self.resolution = (ROUNDING + profile.tolerance, self.floor)
+
+    # Counting -----------------------------------------------------------------------------------
+
+    def count(self, energies):
+        """Number of levels below each energy; energies at or above the open edge are cut to it."""
+        energies = np.minimum(np.atleast_1d(np.asarray(energies, dtype=float)), self.edge)
+        stop = np.full(energies.size, self.home)
+        turn, angle = self._angles(energies, stop, self._sigma(energies))
+        count = turn - (angle < 0)
+        at_edge = energies == self.edge
+        if at_edge.any():
+            count[at_edge] = self.threshold[0]
+        count[energies <= self.floor] = 0
+        return count
+
+    def _angles(self, energies, stop, sigma):
+        turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
+        _kernels.angles(self.cells, self.left, self.right, energies, stop, sigma, turn, angle)
+        return turn, angle
+
+    def _sigma(self, energies):
+        """A scale of phi / psi for the angles at each energy."""
+        height = np.maximum(energies - self.floor, np.finfo(float).tiny)
+        return np.sqrt(2 * height / self.home_mass)
+
+    @cached_property
+    def threshold(self):
+        """(count, doubtful): levels below the open edge, and whether one more may just be bound.
+
+        At the edge itself kappa = 0, and a further level is bound if the solution there has already
+        turned down. How far it has turned is compared with what rounding (and the tolerance of a
+        profile made from a function) can do; within that it is not counted: a state bound by less
+        would reach some 10^13 times further than the well.
+        """
+        energy = np.array([self.edge])
+        stop, sigma = np.array([self.home]), self._sigma(energy)
+        turn, angle = self._angles(energy, stop, sigma)
+        below = int(turn[0] - (angle[0] < 0))
+        states = States(self, energy, stop)
+        psi, phi = states.psi[0], states.phi[0]
+        meet = sigma[0] * psi[self.home] ** 2 + phi[self.home] ** 2 / sigma[0]
+        middle_psi = np.maximum(np.abs(psi[1:]), np.abs(psi[:-1]))
+        middle_phi = np.maximum(np.abs(phi[1:]), np.abs(phi[:-1]))
+        turned = np.abs(np.diff(phi)) * middle_psi + np.abs(np.diff(psi)) * middle_phi
+        noise = self.resolution[0] * turned.sum() / meet
+        # A zero angle means a level exactly at the edge, which is not bound.
+        if abs(angle[0]) <= noise:
+            return int(turn[0]) - 1, True
+        return below, False
+
+    def range(self, request):
+        """Return (first, last, notes): the request in level numbers, first <= n < last."""
+        notes = []
+        if request.window is not None:
+            low, high = request.window
+            first = int(self.count(low)[0]) if low > self.floor else 0
+            last = int(self.count(high)[0]) if high > self.floor else 0
+            return first, max(first, last), tuple(notes)
+        if np.isinf(self.edge):
+            return 0, request.count, tuple(notes)
+        bound = 0
+        if self.edge > self.floor:
+            bound, doubtful = self.threshold
+            if doubtful:
+                notes.append(
+                    "a further level may lie at the continuum's edge, bound by less than rounding "
+                    "can tell; it is not counted"
+                )
+        return 0, bound if request.count is None else min(bound, request.count), tuple(notes)
+
+    # Finding ------------------------------------------------------------------------------------
+
+    def levels(self, first, last):
+        """Return energies, shape (count,), and brackets, shape (count, 2), of first <= n < last."""
+        size = last - first
+        if size == 0:
+            return np.empty(0), np.empty((0, 2))
+        bracket, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
+        low, high, below = self._interval(last)
+        sigma = float(self._sigma(np.array([high]))[0])
+        _kernels.isolate(
+            self.cells, self.left, self.right, self.home, sigma, self.resolution,
+            first, last, (low, high, 0, below), bracket, counts,
+        )  # fmt: skip
+        energy = bracket.mean(axis=1)
+        alone = counts[:, 1] == counts[:, 0] + 1
+        self._refine(np.arange(first, last), energy, bracket, np.flatnonzero(alone))
+        return energy, self._verified(np.arange(first, last), energy, bracket, alone)
+
+    def _interval(self, last):
+        """An energy interval (low, high) with no level below it, and the count `below` high."""
+        if self.edge < np.inf:
+            return self.floor, self.edge, self.threshold[0]
+        span = self.x[-1] - self.x[0]
+        step = (np.pi * (last + 1) / span) ** 2 / (2 * self.home_mass)
+        while True:
+            below = int(self.count(self.floor + step)[0])
+            if below >= last:
+                return self.floor, self.floor + step, below
+            step *= 2
+
+    def _refine(self, n, energy, bracket, todo):
+        """Close the brackets of the levels `todo`, choosing meeting nodes anew where that stalls."""
+        stop = np.full(todo.size, self.home)
+        rounds = _FIRST_ROUNDS
+        while todo.size:
+            part = bracket[todo]
+            best = np.empty(todo.size)
+            sigma = self._sigma(part[:, 1])
+            done = _kernels.refine(
+                self.cells, self.left, self.right, self.edge, stop, sigma, self.resolution,
+                n[todo], part, best, rounds,
+            )  # fmt: skip
+            energy[todo], bracket[todo] = best, part
+            todo = todo[~done]
+            rounds = _MORE_ROUNDS
+            if todo.size:
+                stop = self._homes(bracket[todo].mean(axis=1))
+
+    def _homes(self, energies):
+        """The node where the state nearest to each energy is largest."""
+        nodes = self.x.size
+        stride = max(1, -(-nodes // _SAMPLES))
+        out = np.empty(energies.size, np.int64)
+        for low in range(0, energies.size, _kernels.LANES):
+            part = energies[low : low + _kernels.LANES]
+            size = sum(self._size(part, backward, stride) for backward in (False, True))
+            out[low : low + part.size] = stride * np.argmax(size, axis=0)
+        return out
+
+    def _size(self, energies, backward, stride):
+        """Logarithm of the amplitude of one solution at every `stride`-th node: (samples, lanes)."""
+        trail = self.trail(energies, backward, stride)
+        sigma = self._sigma(energies)
+        return np.log(np.hypot(sigma * trail[:, 0], trail[:, 1])) + trail[:, 2]
+
+    def trail(self, energies, backward, stride=1):
+        """psi, phi and the log of their factor at every `stride`-th node: (samples, 3, lanes)."""
+        lanes, cells = energies.size, self.x.size - 1
+        trail = np.empty((cells // stride + 1, 3, lanes))
+        stop = np.full(lanes, 0 if backward else cells)
+        psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
+        edge = self.right if backward else self.left
+        _kernels.sweep(
+            self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride
+        )
+        return trail
+
+    def _verified(self, n, energy, bracket, alone):
+        """Brackets a few rounding errors wide, counted again at both ends; wider where that fails.
+
+        Levels that counting could not part keep the interval that holds all of them.
+        """
+        height = np.maximum(energy - self.floor, 0.0)
+        half = self.resolution[0] * height + 2 * np.spacing(np.abs(energy))
+        half = np.where(alone, half, half + 0.5 * (bracket[:, 1] - bracket[:, 0]))
+        out = np.empty((energy.size, 2))
+        todo = np.arange(energy.size)
+        while todo.size:
+            low = np.maximum(energy[todo] - half[todo], self.floor)
+            high = np.minimum(energy[todo] + half[todo], self.edge)
+            out[todo] = np.column_stack([low, high])
+            good = (self.count(low) <= n[todo]) & (self.count(high) > n[todo])
+            todo = todo[~good]
+            half[todo] *= 4
+        return out
+
+
+@dataclass(eq=False)
+class States:
+    """Wave functions of the levels of a search, kept at the nodes and continued between them."""
+
+    search: Search
+    energy: np.ndarray
+    stop: np.ndarray | None = None
+
+    @cached_property
+    def _nodes(self):
+        """psi and phi at all nodes, (count, nodes) each, and the node where both sides were joined."""
+        search, count = self.search, self.energy.size
+        nodes = search.x.size
+        psi, phi = np.empty((count, nodes)), np.empty((count, nodes))
+        stop = self.stop if self.stop is not None else search._homes(self.energy)
+        lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
+        for low in range(0, count, lanes):
+            part = slice(low, min(low + lanes, count))
+            left = search.trail(self.energy[part], False)
+            right = search.trail(self.energy[part], True)
+            for i, level in enumerate(range(part.start, part.stop)):
+                psi[level], phi[level] = _glued(left[:, :, i], right[:, :, i], stop[level])
+        return psi, phi, stop
+
+    @property
+    def psi(self):
+        """psi at the nodes, shape (count, nodes)."""
+        return self._nodes[0]
+
+    @property
+    def phi(self):
+        """phi = psi'/m at the nodes, shape (count, nodes)."""
+        return self._nodes[1]
+
+    def sample(self, x):
+        """psi and phi at x inside the cells, each of shape (count, points); not normalised."""
+        mesh = self.search.x
+        cell = np.clip(np.searchsorted(mesh, x, side="right") - 1, 0, mesh.size - 2)
+        fraction = np.clip((x - mesh[cell]) / (mesh[cell + 1] - mesh[cell]), 0.0, 1.0)
+        psi, phi = np.empty((self.energy.size, x.size)), np.empty((self.energy.size, x.size))
+        start_psi, start_phi, stop = self._nodes
+        _kernels.along(
+            self.search.cells, self.energy, start_psi, start_phi, cell, fraction, stop, psi, phi
+        )
+        return psi, phi
+
+
+def _glued(left, right, stop):
+    """One wave function from its two halves, shape (nodes, 3) each, largest about 1 at `stop`."""
+    right[:, 1] *= -1  # the mirror image's phi
+    scale = np.hypot(*_balanced(left[stop], right[stop]))
+    a, b = _balanced(left[stop], left[stop]), _balanced(right[stop], left[stop])
+    factor = (a[0] * b[0] + a[1] * b[1]) / (b[0] ** 2 + b[1] ** 2)
+    psi, phi = np.empty(left.shape[0]), np.empty(left.shape[0])
+    for part, half, size in ((slice(0, stop + 1), left, 1.0), (slice(stop + 1, None), right, factor)):
+        grown = np.exp(np.minimum(half[part, 2] - half[stop, 2], 700.0)) * size
+        psi[part], phi[part] = half[part, 0] * grown, half[part, 1] * grown
+    norm = scale if scale > 0 else 1.0
+    return psi / norm, phi / norm
+
+
+def _balanced(state, like):
+    """(psi, phi) with phi scaled so that both count alike in the joint."""
+    size = abs(like[0]) + abs(like[1])
+    return state[0] / size, state[1] / size
+
+
+def _edge(edge):
+    """An Edge as the kernels read it: is open, V, and the mass as mass + E * mass_per_energy."""
+    per_energy = edge.mass * edge.alpha
+    return np.array([edge.kind == "open", edge.V, edge.mass - per_energy * edge.V, per_energy])
+
+
+def _check_alpha(profile):
+    """Refuse an alpha that would turn the mass negative at some energy above the least V."""
+    if profile.alpha_cells is None:
+        return
+    x = np.concatenate([profile.x[:-1], 0.5 * (profile.x[:-1] + profile.x[1:]), profile.x[-1:]])
+    worst = np.argmin(1 + profile.alpha(x) * (profile.V_min - profile.V(x)))
+    drop = profile.alpha(x)[worst] * (profile.V(x)[worst] - profile.V_min)
+    if drop >= 1:
+        unit = profile.units.energy
+        raise InputError(
+            f"alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at "
+            f"x = {x[worst]:g} {profile.units.length} for E near the least V; V rises "
+            f"{profile.V(x)[worst] - profile.V_min:g} {unit} there and alpha must stay below "
+            f"{1 / (profile.V(x)[worst] - profile.V_min):g} 1/{unit}"
+        )
+
+
+def _split(x, natural, floor, edge):
+    """Cut long cells with curved solutions, so that there are nodes where states can be joined."""
+    fields = [natural.V, natural.mass, natural.mass_per_energy]
+    flat = (natural.V.shape[1] == 1) | (natural.V[:, 1:] == 0).all(axis=1)
+    reach = np.abs(natural.V - np.eye(1, natural.V.shape[1]) * floor).sum(axis=1)
+    phase = np.sqrt(2 * np.abs(natural.mass).sum(axis=1) * reach) * natural.width
+    parts = np.where(flat, 1, np.clip(np.ceil(phase / 3), 1, 4096)).astype(int)
+    if (parts == 1).all():
+        return x, fields
+    owner = np.repeat(np.arange(parts.size), parts)
+    index = np.arange(owner.size) - np.repeat(np.cumsum(parts) - parts, parts)
+    offset, ratio = index / parts[owner], 1 / parts[owner]
+    new_x = np.append(x[owner] + offset * natural.width[owner], x[-1])
+    return new_x, [
+        _cells.reexpanded(f[owner], offset, ratio) if f.shape[1] else f[owner] for f in fields
+    ]
