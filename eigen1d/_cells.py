@@ -14,6 +14,7 @@ EPS = np.finfo(float).eps
 # (which grow as (6/rho)**j for a Bernstein ellipse rho) lose no digits: with rho > 15 or so, which
 # 1e-13 at degree 12 requires, they decay.
 DEGREE = 12
+_PHASE, _SLOPE = 4.0, 16.0  # a cell longer than this, with a top this much above its bottom, is cut
 _SPLITS = 60  # halvings of the span before a function is called too rough
 
 
@@ -184,14 +185,15 @@ def padded(fields):
     return [np.pad(f, ((0, 0), (0, width - f.shape[1]))) for f in fields]
 
 
-def from_callable(functions, breaks, tolerance):
+def from_callable(V, mass, breaks, tolerance):
     """Cut functions into common polynomial cells, by Chebyshev interpolation and halving.
 
     Parameters
     ----------
-    functions : list of callable
-        Each maps an array to an array of the same shape. The first is V: its tolerance is relative
-        to the cell's own height above the least V sampled. The others are masses: relative to size.
+    V, mass : callable
+        Each maps an array to an array of the same shape; mass in units with hbar = 1. The tolerance
+        of V is relative to the cell's own height above the least V sampled, that of the mass to
+        its size.
     breaks : ndarray
         Ends of the span and points where a function is not smooth, ascending.
     tolerance : float
@@ -200,12 +202,18 @@ def from_callable(functions, breaks, tolerance):
     Returns
     -------
     x, fields
-        Breakpoints and, per function, coefficients of shape (cells, DEGREE + 1).
+        Breakpoints and, for V and mass, coefficients of shape (cells, degree + 1).
 
     Raises
     ------
     ValueError
         A function that no cell down to 2**-60 of the span can follow; carries the place.
+
+    Notes
+    -----
+    A cell that holds the bottom of a well and a high wall rounds by the height of the wall where
+    the lowest states live. Cells that are long against the wavelength at their own top, and whose
+    own bottom is low against it, are therefore halved even where one polynomial would do.
 
     References
     ----------
@@ -221,14 +229,16 @@ def from_callable(functions, breaks, tolerance):
     for _ in range(_SPLITS):
         at = left[:, None] + points * (right - left)[:, None]
         at[:, -1] = right
-        samples = [_sampled(f, at) for f in functions]
+        samples = [_sampled(f, at) for f in (V, mass)]
         least = min(least, samples[0].min())
-        good = np.ones(left.size, dtype=bool)
+        top, bottom = samples[0].max(axis=1) - least, samples[0].min(axis=1) - least
+        phase = np.sqrt(2 * samples[1].max(axis=1) * top) * (right - left)
+        good = (phase <= _PHASE) | (bottom * _SLOPE >= top)
         spectra = []
         for index, values in enumerate(samples):
             spectrum = values[:, ::2] @ to_chebyshev.T
             size = np.abs(values).max(axis=1)
-            height = values.max(axis=1) - least if index == 0 else size
+            height = top if index == 0 else size
             miss = np.abs(spectrum @ judge.T - values[:, 1::2]).max(axis=1)
             good &= miss <= 0.25 * tolerance * height + 4 * EPS * size
             # Trailing coefficients below rounding are noise; dropping them lowers the degree.
@@ -249,7 +259,7 @@ def from_callable(functions, breaks, tolerance):
     start = np.concatenate([d[0] for d in done])
     order = np.argsort(start)
     x = np.append(start[order], breaks[-1])
-    fields = [np.concatenate([d[1][k] for d in done])[order] for k in range(len(functions))]
+    fields = [np.concatenate([d[1][k] for d in done])[order] for k in (0, 1)]
     return x, [_power(spectrum) for spectrum in fields]
 
 

@@ -15,23 +15,43 @@ Sweeping to the left is sweeping to the right through the mirror image, where ph
 
 import numba
 import numpy as np
+from numba import types
 
 LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
-LARGEST = 2.25  # of 2 m |V - E| h^2 in a series step; < pi^2, so that psi has at most one zero in it
+LARGEST = (
+    2.25  # of 2 m |V - E| h^2 in a series step; < pi^2, so that psi has at most one zero in it
+)
 _TERMS = 96  # most terms of a series; a cell that asks for more is cut further
 _DEGREE = 32  # most coefficients of a polynomial
-_EPS = np.finfo(np.float64).eps
+EPS = np.finfo(np.float64).eps
 _BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
 _LOG_BIG = 300 * np.log(2.0)
 _AGE = 16  # steps between two looks at amplitudes: far from enough to leave the range of doubles
 _MOST_PARTS = 1 << 20  # of a cell
 
 
-def kernel(function):
+def kernel(function=None, signature=None):
     """Compile: cached, division by zero as IEEE says, and no fast-math, which the compensated sums
-    in `_add` would not survive.
+    in `_add` would not survive. Kernels that Python calls have a signature, so that there is one
+    version of each, whether arrays are read-only, strided or neither.
     """
-    return numba.njit(cache=True, error_model="numpy", nogil=True)(function)
+    if function is None:
+        return lambda function: kernel(function, signature)
+    options = {"cache": True, "error_model": "numpy", "nogil": True}
+    return (
+        numba.njit(signature, **options)(function) if signature else numba.njit(**options)(function)
+    )
+
+
+def _given(dimensions, contiguous=False):
+    """Type of an array that a kernel only reads."""
+    layout = "C" if contiguous else "A"
+    return types.Array(types.float64, dimensions, layout, readonly=True)
+
+
+CELLS = types.Tuple((_given(1), _given(2), _given(2), _given(2)))
+EDGE = _given(1)
+FLOATS, INTEGERS = types.float64[::1], types.int64[::1]
 
 
 @kernel
@@ -80,7 +100,7 @@ def _terms(w, mass, zeta, w_size, m_size, majorant):
     eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
     majorant[0, 0] = 1.0
     majorant[1, 0] = eta
-    target = 0.03 * _EPS * zeta
+    target = 0.03 * EPS * zeta
     quiet = 0
     for k in range(_TERMS - 1):
         psi = 0.0
@@ -136,7 +156,7 @@ def _series(a, b, w, mass, lanes, terms, w_size, m_size):
 
 
 @kernel
-def _is_positive(psi, phi):
+def is_positive(psi, phi):
     """Sign of psi just beyond the point: at a zero, that of its slope."""
     return psi > 0.0 or (psi == 0.0 and phi > 0.0)
 
@@ -165,18 +185,20 @@ def _constant(v, mass, h, psi, phi):
         angle = np.arctan2(psi, phi * mass * h / k) / np.pi
         angle -= np.floor(angle)
         turns = angle + k / np.pi
-        odd = 1 if _is_positive(psi, phi) != _is_positive(out_psi, out_phi) else 0
+        odd = 1 if is_positive(psi, phi) != is_positive(out_psi, out_phi) else 0
         zeros = odd + 2 * int(np.round(0.5 * (turns - 0.5 - odd)))
         return out_psi, out_phi, max(zeros, odd), 0.0
     if z == 0.0:
-        out_psi, out_phi, log = psi + mass * h * phi, phi + 2.0 * v * h * psi, 0.0
+        out_psi, out_phi, log = psi + mass * h * phi, phi, 0.0
     else:
+        # In the growing and the decaying solution, not by cosh and sinh: where a state decays into
+        # a barrier and grows out of it again, those round psi and phi apart by eps * exp(2 k).
         k = np.sqrt(z)
-        th = np.tanh(k) / k
-        out_psi = psi + th * mass * h * phi
-        out_phi = phi + th * 2.0 * v * h * psi
-        log = k + np.log1p(np.exp(-2.0 * k)) - np.log(2.0)
-    zeros = 1 if _is_positive(psi, phi) != _is_positive(out_psi, out_phi) else 0
+        slope = k / (mass * h)
+        grows, decays = 0.5 * (psi + phi / slope), 0.5 * (psi - phi / slope)
+        decays *= np.exp(-2.0 * k)
+        out_psi, out_phi, log = grows + decays, slope * (grows - decays), k
+    zeros = 1 if is_positive(psi, phi) != is_positive(out_psi, out_phi) else 0
     return out_psi, out_phi, zeros, log
 
 
@@ -190,6 +212,61 @@ def _start(edge, energy):
         return 0.0, 1.0
     mass = edge[2] + energy * edge[3]
     return 1.0, np.sqrt(2.0 * max(edge[1] - energy, 0.0) / mass)
+
+
+@kernel
+def _rescale(p, f, p_carry, f_carry, log, lanes):
+    for lane in range(lanes):
+        size = abs(p[lane]) + abs(f[lane])
+        factor = 1.0
+        if size > _BIG:
+            factor = _SMALL
+            log[lane] += _LOG_BIG
+        elif size < _SMALL:
+            factor = _BIG
+            log[lane] -= _LOG_BIG
+        if factor != 1.0:
+            p[lane] *= factor
+            f[lane] *= factor
+            p_carry[lane] *= factor
+            f_carry[lane] *= factor
+
+
+@kernel
+def _load(w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h, w, m, majorant):
+    """Spread a cell's polynomials over the lanes, multiplied by h; return the terms needed."""
+    lanes = energies.size
+    sizes = max(m_size, q_size)
+    for j in range(sizes):
+        shared = m_cell[j] * h if j < m_size else 0.0
+        own = q_cell[j] * h if j < q_size else 0.0
+        for lane in range(lanes):
+            m[j, lane] = shared + own * energies[lane]
+        m_cell[j] = abs(shared) + abs(own) * max(abs(low), abs(high))
+    for lane in range(lanes):
+        w[0, lane] = 2.0 * h * (w_cell[0] - energies[lane])
+    w_cell[0] = 2.0 * h * max(abs(w_cell[0] - low), abs(w_cell[0] - high))
+    for j in range(1, w_size):
+        shared = 2.0 * h * w_cell[j]
+        for lane in range(lanes):
+            w[j, lane] = shared
+        w_cell[j] = abs(shared)
+    zeta = np.sqrt(_sum_abs(m_cell, 0, sizes) * _sum_abs(w_cell, 0, w_size))
+    return _terms(w_cell, m_cell, zeta, w_size, sizes, majorant)
+
+
+@kernel
+def _scratch():
+    return (
+        np.empty((_TERMS + 1, LANES)),
+        np.empty((_TERMS + 1, LANES)),
+        np.empty((_DEGREE, LANES)),
+        np.empty((_DEGREE, LANES)),
+        np.empty(_DEGREE),
+        np.empty(_DEGREE),
+        np.empty(_DEGREE),
+        np.empty((2, _TERMS + 1)),
+    )
 
 
 @kernel
@@ -245,14 +322,14 @@ def _cross(
             a[0, lane], b[0, lane] = p[lane], f[lane]
         _series(a, b, w, m, lanes, terms, w_size, max(m_size, q_size))
         for lane in range(lanes):
-            before = _is_positive(p[lane], f[lane])
+            before = is_positive(p[lane], f[lane])
             gain_p, gain_f = a[terms, lane], b[terms, lane]
             for k in range(terms - 1, 0, -1):
                 gain_p += a[k, lane]
                 gain_f += b[k, lane]
             _add(p, p_carry, lane, gain_p)
             _add(f, f_carry, lane, gain_f)
-            if _is_positive(p[lane], f[lane]) != before:
+            if is_positive(p[lane], f[lane]) != before:
                 count[lane] += 1
         part += 1
         age += 1
@@ -262,21 +339,20 @@ def _cross(
     return age
 
 
-@kernel
-def _scratch():
-    return (
-        np.empty((_TERMS + 1, LANES)),
-        np.empty((_TERMS + 1, LANES)),
-        np.empty((_DEGREE, LANES)),
-        np.empty((_DEGREE, LANES)),
-        np.empty(_DEGREE),
-        np.empty(_DEGREE),
-        np.empty(_DEGREE),
-        np.empty((2, _TERMS + 1)),
+@kernel(
+    signature=types.void(
+        CELLS,
+        EDGE,
+        types.boolean,
+        FLOATS,
+        INTEGERS,
+        FLOATS,
+        FLOATS,
+        INTEGERS,
+        types.float64[:, :, ::1],
+        types.int64,
     )
-
-
-@kernel
+)
 def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
     """Shoot from one edge to the nodes `stop`, for up to LANES energies at once.
 
@@ -333,258 +409,19 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         node += -1 if backward else 1
 
 
-@kernel
-def angles(cells, left, right, energies, stop, sigma, turn, angle):
-    """Shoot from both edges and compare the two solutions where they meet.
-
-    With psi_L = A sin(theta) / sigma, phi_L = A cos(theta), and the same for the mirror image of
-    the right solution, the sum of both Pruefer angles D grows steadily with E and is (n + 1) pi at
-    the level with n nodes.
-
-    Parameters
-    ----------
-    energies : ndarray, shape (k,), any number
-    stop : ndarray of int64, shape (k,)
-        Node where they meet.
-    sigma : ndarray, shape (k,)
-        Scale of phi / psi; any positive number is right, one near sqrt(2 |E - V| / m) is smooth.
-    turn : ndarray of int64, shape (k,)
-        Result.
-    angle : ndarray, shape (k,)
-        Result: D = turn pi + angle, with angle in (-pi/2, pi/2], precise near zero.
-
-    References
-    ----------
-    .. [1] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
-    """
-    trail = np.empty((0, 3, 0))
-    psi, phi, psi_r, phi_r = np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
-    zeros, zeros_r = np.empty(LANES, np.int64), np.empty(LANES, np.int64)
-    for low in range(0, energies.size, LANES):
-        high = min(low + LANES, energies.size)
-        lanes = high - low
-        sweep(
-            cells, left, False, energies[low:high], stop[low:high],
-            psi[:lanes], phi[:lanes], zeros[:lanes], trail, 1,
-        )  # fmt: skip
-        sweep(
-            cells, right, True, energies[low:high], stop[low:high],
-            psi_r[:lanes], phi_r[:lanes], zeros_r[:lanes], trail, 1,
-        )  # fmt: skip
-        for lane in range(lanes):
-            turn[low + lane], angle[low + lane] = _joined(
-                psi[lane], phi[lane], psi_r[lane], phi_r[lane],
-                zeros[lane] + zeros_r[lane], sigma[low + lane],
-            )  # fmt: skip
-
-
-@kernel
-def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
-    """turn and angle of `angles` from the two solutions and the zeros that both have passed."""
-    sine = sigma * (psi * phi_r + phi * psi_r)
-    cosine = phi * phi_r - sigma * psi * (sigma * psi_r)
-    if _is_positive(psi, phi) != _is_positive(psi_r, phi_r):
-        sine, cosine = -sine, -cosine
-    # Both angles lie in [0, pi), their sum in [0, 2 pi): sine < 0 is its upper half.
-    if cosine <= 0.0:
-        return zeros + 1, np.arctan2(-sine, -cosine) if sine != 0.0 else 0.0
-    return zeros + (2 if sine < 0.0 else 0), np.arctan(sine / cosine)
-
-
-@kernel
-def isolate(cells, left, right, stop, sigma, resolution, first, last, start, bracket, count):
-    """Cut an energy interval until each wanted level is alone in its piece, by counting.
-
-    Parameters
-    ----------
-    stop, sigma
-        One node and one scale for all energies, see `angles`.
-    resolution : (relative, floor)
-        A piece narrower than relative * |E - floor| + spacing of doubles at E is not cut further.
-    first, last : int
-        Levels wanted: first <= n < last.
-    start : (low, high, count_low, count_high)
-        The interval and the number of levels below each end.
-    bracket, count : ndarray, shape (last - first, 2), of float64 and int64
-        Result: the piece that holds each level and the numbers of levels below its ends.
-    """
-    size = last - first
-    ends, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
-    ends[0, 0], ends[0, 1], counts[0, 0], counts[0, 1] = start
-    pieces = 1
-    while pieces > 0:
-        each = max(LANES // pieces, 1)
-        points = np.empty(pieces * LANES)
-        owner = np.empty(pieces * LANES, np.int64)
-        used = 0
-        for i in range(pieces):
-            inside = max(each, min(counts[i, 1] - counts[i, 0], LANES - 1))
-            for k in range(inside):
-                points[used] = ends[i, 0] + (ends[i, 1] - ends[i, 0]) * ((k + 1.0) / (inside + 1.0))
-                owner[used] = i
-                used += 1
-        turn, angle = np.empty(used, np.int64), np.empty(used)
-        angles(
-            cells, left, right, points[:used], np.full(used, stop), np.full(used, sigma), turn, angle
-        )
-        new_ends, new_counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
-        kept, k = 0, 0
-        for i in range(pieces):
-            low, n_low = ends[i, 0], counts[i, 0]
-            while n_low < counts[i, 1]:
-                if k < used and owner[k] == i:
-                    high, n_high = points[k], turn[k] - (1 if angle[k] < 0.0 else 0)
-                    n_high = min(max(n_high, n_low), counts[i, 1])
-                    k += 1
-                else:
-                    high, n_high = ends[i, 1], counts[i, 1]
-                if n_high > first and n_low < last and n_high > n_low:
-                    floor = resolution[1]
-                    size_high = max(abs(low), abs(high))
-                    fine = resolution[0] * (high - floor) + 2.0 * _EPS * size_high
-                    if n_high == n_low + 1 or high - low <= fine:
-                        for n in range(max(n_low, first), min(n_high, last)):
-                            bracket[n - first, 0], bracket[n - first, 1] = low, high
-                            count[n - first, 0], count[n - first, 1] = n_low, n_high
-                    else:
-                        new_ends[kept, 0], new_ends[kept, 1] = low, high
-                        new_counts[kept, 0], new_counts[kept, 1] = n_low, n_high
-                        kept += 1
-                low, n_low = high, n_high
-            while k < used and owner[k] == i:
-                k += 1
-        ends, counts, pieces = new_ends, new_counts, kept
-
-
-@kernel
-def refine(cells, left, right, edge, stop, sigma, resolution, n, bracket, energy, rounds):
-    """Close the brackets of isolated levels by root finding on the angle of `angles`.
-
-    Inverse quadratic interpolation kept inside the bracket, with bisection where that is unsafe
-    (T. R. Chandrupatla, Adv. Eng. Softw. 28 (1997) 145), in the variable u = -sqrt(edge - E), in
-    which the angle is smooth up to the continuum; u = E between two walls (edge infinite).
-
-    Parameters
-    ----------
-    stop, sigma : ndarray, shape (k,)
-    resolution : (relative, floor)
-        As for `isolate`; the error aimed at.
-    n : ndarray of int64, shape (k,)
-    bracket : ndarray, shape (k, 2)
-        Holds just level n; overwritten by a smaller one.
-    energy : ndarray, shape (k,)
-        Result: the best energy.
-    rounds : int
-        Most evaluations a level.
-
-    Returns
-    -------
-    ndarray of bool, shape (k,)
-        Which levels have converged.
-    """
-    size = n.size
-    # x1 is the newest end of the bracket, x2 the other one, x3 the point dropped last.
-    x, f = np.empty((3, size)), np.empty((3, size))
-    turn, angle = np.empty(size, np.int64), np.empty(size)
-    for end in range(2):
-        angles(cells, left, right, bracket[:, end].copy(), stop, sigma, turn, angle)
-        for i in range(size):
-            x[end, i], x[2, i] = bracket[i, end], bracket[i, end]
-            f[end, i] = (turn[i] - n[i] - 1) * np.pi + angle[i]
-            f[2, i] = f[end, i]
-    share = np.full(size, 0.5)
-    done = np.zeros(size, np.bool_)
-    for i in range(size):
-        if f[0, i] >= 0.0 or f[1, i] < 0.0:
-            # The count that made this bracket and the angle at its end differ by rounding: the
-            # level is that end.
-            energy[i] = x[0, i] if f[0, i] >= 0.0 else x[1, i]
-            done[i] = True
-    points = np.empty(size)
-    active = np.empty(size, np.int64)
-    for _ in range(rounds):
-        used = 0
-        for i in range(size):
-            if not done[i]:
-                points[used] = _between(x[0, i], x[1, i], share[i], edge)
-                active[used] = i
-                used += 1
-        if used == 0:
-            break
-        chosen = active[:used]
-        angles(
-            cells, left, right, points[:used], stop[chosen], sigma[chosen], turn[:used], angle[:used]
-        )
-        for k in range(used):
-            i = active[k]
-            value = (turn[k] - n[i] - 1) * np.pi + angle[k]
-            done[i] = _narrow(x, f, share, i, points[k], value, edge, resolution)
-    for i in range(size):
-        if f[0, i] < 0.0 or f[1, i] < 0.0:
-            best = 0 if abs(f[0, i]) < abs(f[1, i]) else 1
-            energy[i] = x[best, i]
-        bracket[i, 0], bracket[i, 1] = min(x[0, i], x[1, i]), max(x[0, i], x[1, i])
-    return done
-
-
-@kernel
-def _between(one, other, share, edge):
-    """The energy at `share` of the way from one to other, measured in u."""
-    if edge == np.inf:
-        return one + share * (other - one)
-    u_one, u_other = -np.sqrt(max(edge - one, 0.0)), -np.sqrt(max(edge - other, 0.0))
-    both = u_one + u_other
-    step = share * (one - other) / both if both != 0.0 else 0.0
-    # E is moved, not recomputed from u: edge - u^2 would round to the depth of the edge.
-    return one - step * (2.0 * u_one + step)
-
-
-@kernel
-def _ratio(a, b, c, edge):
-    """(u_a - u_b) / (u_c - u_b), without cancellation."""
-    if edge == np.inf:
-        return (a - b) / (c - b)
-    u = -np.sqrt(max(edge - b, 0.0))
-    u_a, u_c = -np.sqrt(max(edge - a, 0.0)), -np.sqrt(max(edge - c, 0.0))
-    return (a - b) / (c - b) * ((u_c + u) / (u_a + u))
-
-
-@kernel
-def _narrow(x, f, share, i, point, value, edge, resolution):
-    """One step of Chandrupatla's method for level i; True when its bracket is closed."""
-    if (value < 0.0) == (f[0, i] < 0.0):
-        x[2, i], f[2, i] = x[0, i], f[0, i]
-    else:
-        x[2, i], f[2, i] = x[1, i], f[1, i]
-        x[1, i], f[1, i] = x[0, i], f[0, i]
-    x[0, i], f[0, i] = point, value
-    x1, x2, x3 = x[0, i], x[1, i], x[2, i]
-    f1, f2, f3 = f[0, i], f[1, i], f[2, i]
-    height = max(point - resolution[1], 0.0)
-    if edge < np.inf:
-        # Near the continuum the state lies mostly in the tails, which round nothing.
-        height = min(height, np.sqrt(height * max(edge - point, 0.0)))
-    fine = 0.25 * resolution[0] * height + _EPS * abs(point)
-    width = abs(x2 - x1)
-    if value == 0.0 or width <= fine:
-        return True
-    least = fine / width
-    share[i] = 0.5
-    if f3 != f1 and f3 != f2:
-        xi = _ratio(x1, x2, x3, edge)
-        ph = (f1 - f2) / (f3 - f2)
-        if ph * ph < xi and (1.0 - ph) ** 2 < 1.0 - xi:
-            share[i] = f1 / (f2 - f1) * f3 / (f2 - f3) + _ratio(x3, x1, x2, edge) * f1 / (
-                f3 - f1
-            ) * f2 / (f3 - f2)
-    if least >= 0.5:
-        share[i] = 0.5
-    else:
-        share[i] = min(max(share[i], least), 1.0 - least)
-    return False
-
-
-@kernel
+@kernel(
+    signature=types.void(
+        CELLS,
+        FLOATS,
+        types.float64[:, ::1],
+        types.float64[:, ::1],
+        INTEGERS,
+        FLOATS,
+        INTEGERS,
+        types.float64[:, ::1],
+        types.float64[:, ::1],
+    )
+)
 def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, phi):
     """Evaluate wave functions inside cells, from the node on the side where they grow inwards.
 
@@ -637,44 +474,3 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
                 for lane in range(lanes):
                     psi[lane_level[lane], point] = p[lane] * np.exp(log[lane])
                     phi[lane_level[lane], point] = sign * f[lane] * np.exp(log[lane])
-
-
-@kernel
-def _load(w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h, w, m, majorant):
-    """Spread a cell's polynomials over the lanes, multiplied by h; return the terms needed."""
-    lanes = energies.size
-    sizes = max(m_size, q_size)
-    for j in range(sizes):
-        shared = m_cell[j] * h if j < m_size else 0.0
-        own = q_cell[j] * h if j < q_size else 0.0
-        for lane in range(lanes):
-            m[j, lane] = shared + own * energies[lane]
-        m_cell[j] = abs(shared) + abs(own) * max(abs(low), abs(high))
-    for lane in range(lanes):
-        w[0, lane] = 2.0 * h * (w_cell[0] - energies[lane])
-    w_cell[0] = 2.0 * h * max(abs(w_cell[0] - low), abs(w_cell[0] - high))
-    for j in range(1, w_size):
-        shared = 2.0 * h * w_cell[j]
-        for lane in range(lanes):
-            w[j, lane] = shared
-        w_cell[j] = abs(shared)
-    zeta = np.sqrt(_sum_abs(m_cell, 0, sizes) * _sum_abs(w_cell, 0, w_size))
-    return _terms(w_cell, m_cell, zeta, w_size, sizes, majorant)
-
-
-@kernel
-def _rescale(p, f, p_carry, f_carry, log, lanes):
-    for lane in range(lanes):
-        size = abs(p[lane]) + abs(f[lane])
-        factor = 1.0
-        if size > _BIG:
-            factor = _SMALL
-            log[lane] += _LOG_BIG
-        elif size < _SMALL:
-            factor = _BIG
-            log[lane] -= _LOG_BIG
-        if factor != 1.0:
-            p[lane] *= factor
-            f[lane] *= factor
-            p_carry[lane] *= factor
-            f_carry[lane] *= factor

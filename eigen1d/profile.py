@@ -391,10 +391,13 @@ class Profile:
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
         if not 1e-15 <= tolerance < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
-        functions = [_finite("V", V)] + ([_finite("mass", mass)] if callable(mass) else [])
+        unit = units.electron_mass
+        own = mass if callable(mass) else (lambda x: np.full(x.shape, _per_row("mass", mass, 1)[0]))
+        weight = _finite("mass", own)
+        ends = np.concatenate([[low], breaks, [high]])
         try:
             x, fields = _cells.from_callable(
-                functions, np.concatenate([[low], breaks, [high]]), tolerance
+                _finite("V", V), lambda x: unit * weight(x), ends, tolerance
             )
         except ValueError as fault:
             if isinstance(fault, InputError):
@@ -403,8 +406,9 @@ class Profile:
                 f"no polynomial follows the function near x = {fault}; if it jumps or has a kink "
                 f"there, write breaks=[{fault}]"
             ) from None
-        if not callable(mass):
-            fields.append(_per_row("mass", mass, x.size - 1)[:, None])
+        fields[1] = (
+            fields[1] / unit if callable(mass) else _per_row("mass", mass, x.size - 1)[:, None]
+        )
         return cls._from_fields(
             x, fields, left, right, units=units, kind="function", title=title, tolerance=tolerance
         )

@@ -21,7 +21,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _cells, _kernels
+from . import _cells, _kernels, _search
 from .errors import InputError
 from .levels import Budget, Levels
 
@@ -86,7 +86,7 @@ class Search:
         # The deepest cell: where all levels of a single well live.
         self.home = int(np.argmin(fields[0][:, 0] + fields[0].sum(axis=1)))
         self.home_mass = float(fields[1][self.home, 0])
-        self.resolution = (ROUNDING + profile.tolerance, self.floor)
+        self.resolution = (ROUNDING + profile.tolerance, float(self.floor))
 
     # Counting -----------------------------------------------------------------------------------
 
@@ -104,7 +104,7 @@ class Search:
 
     def _angles(self, energies, stop, sigma):
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        _kernels.angles(self.cells, self.left, self.right, energies, stop, sigma, turn, angle)
+        _search.angles(self.cells, self.left, self.right, energies, stop, sigma, turn, angle)
         return turn, angle
 
     def _sigma(self, energies):
@@ -167,9 +167,9 @@ class Search:
         bracket, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
         low, high, below = self._interval(last)
         sigma = float(self._sigma(np.array([high]))[0])
-        _kernels.isolate(
+        _search.isolate(
             self.cells, self.left, self.right, self.home, sigma, self.resolution,
-            first, last, (low, high, 0, below), bracket, counts,
+            first, last, (float(low), float(high), 0, below), bracket, counts,
         )  # fmt: skip
         energy = bracket.mean(axis=1)
         alone = counts[:, 1] == counts[:, 0] + 1
@@ -196,7 +196,7 @@ class Search:
             part = bracket[todo]
             best = np.empty(todo.size)
             sigma = self._sigma(part[:, 1])
-            done = _kernels.refine(
+            done = _search.refine(
                 self.cells, self.left, self.right, self.edge, stop, sigma, self.resolution,
                 n[todo], part, best, rounds,
             )  # fmt: skip
@@ -230,9 +230,7 @@ class Search:
         stop = np.full(lanes, 0 if backward else cells)
         psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
         edge = self.right if backward else self.left
-        _kernels.sweep(
-            self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride
-        )
+        _kernels.sweep(self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         return trail
 
     def _verified(self, n, energy, bracket, alone):
@@ -309,7 +307,10 @@ def _glued(left, right, stop):
     a, b = _balanced(left[stop], left[stop]), _balanced(right[stop], left[stop])
     factor = (a[0] * b[0] + a[1] * b[1]) / (b[0] ** 2 + b[1] ** 2)
     psi, phi = np.empty(left.shape[0]), np.empty(left.shape[0])
-    for part, half, size in ((slice(0, stop + 1), left, 1.0), (slice(stop + 1, None), right, factor)):
+    for part, half, size in (
+        (slice(0, stop + 1), left, 1.0),
+        (slice(stop + 1, None), right, factor),
+    ):
         grown = np.exp(np.minimum(half[part, 2] - half[stop, 2], 700.0)) * size
         psi[part], phi[part] = half[part, 0] * grown, half[part, 1] * grown
     norm = scale if scale > 0 else 1.0
