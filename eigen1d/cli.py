@@ -1,0 +1,376 @@
+"""The command line: parses, calls, prints; computes nothing.
+
+    eigen1d levels FILE     every bound level of a table, with its bracket, as table, JSON, CSV
+    eigen1d draw FILE       a picture of V(x) with each level and its wave function
+
+Results go to stdout, messages to stderr. Exit status: 0 done; 2 the input or the call is wrong;
+3 a check failed; 1 a fault of the program.
+"""
+
+import argparse
+import json
+import math
+import os
+import re
+import sys
+import traceback
+
+from . import __version__, _files
+from .errors import CheckError, InputError
+
+DESCRIPTION = """\
+Every bound level of a one-dimensional potential, none missed, each in a two-sided bracket."""
+STATUSES = """\
+exit status: 0 done; 2 the input or the call is wrong; 3 a check failed; 1 a fault of the program"""
+
+
+def main(argv=None):
+    """Run one command and return its exit status.
+
+    Parameters
+    ----------
+    argv : sequence of str, optional
+        Default: what stands on the command line.
+
+    Returns
+    -------
+    int
+        0 done; 2 the input or the call is wrong; 3 a check failed; 1 a fault of the program.
+
+    Examples
+    --------
+    >>> main(["--version"])
+    eigen1d 0.1.0
+    0
+    """
+    try:
+        args = _parser().parse_args(argv)
+        args.run(args)
+        sys.stdout.flush()
+    except SystemExit as end:  # --help and --version
+        return end.code or 0
+    except BrokenPipeError:
+        _let_the_reader_go()
+    except InputError as fault:
+        return _complain(f"error: {fault}", 2)
+    except CheckError as fault:
+        return _complain(f"check failed: {fault}", 3)
+    except KeyboardInterrupt:
+        return _complain("interrupted", 130)
+    except Exception:
+        traceback.print_exc()
+        return _complain(
+            "this is a fault of the program, not of your input.\n"
+            "  Please report it with the lines above and the table.",
+            1,
+        )
+    return 0
+
+
+# The words ---------------------------------------------------------------------------------------
+
+
+class _Parser(argparse.ArgumentParser):
+    """An argument parser whose errors are InputErrors, and which knows negative energies."""
+
+    def __init__(self, *args, **keywords):
+        super().__init__(*args, allow_abbrev=False, **keywords)
+        # argparse takes "-1e-3" for an option, and has no public way to say otherwise.
+        self._negative_number_matcher = re.compile(r"-(\d+\.?\d*|\.\d+)(e[-+]?\d+)?$", re.I)
+
+    def error(self, message):
+        raise InputError(f"{message}\n  {self.prog} --help shows what can be written.")
+
+
+def _parser():
+    parser = _Parser(prog="eigen1d", description=DESCRIPTION, epilog=STATUSES)
+    parser.add_argument("--version", action="version", version=f"eigen1d {__version__}")
+    commands = parser.add_subparsers(metavar="COMMAND", required=True)
+    levels = commands.add_parser(
+        "levels", help="print every bound level of a table", epilog=STATUSES,
+        description="Print every bound level of a table, with its bracket.",
+    )  # fmt: skip
+    draw = commands.add_parser(
+        "draw", help="draw V(x) with its levels and wave functions", epilog=STATUSES,
+        description="Draw V(x) with each level at its energy and its wave function on it.",
+    )  # fmt: skip
+    for command in (levels, draw):
+        _add_common(command)
+    levels.set_defaults(run=_levels, output=None)
+    draw.add_argument(
+        "--output", "-o", metavar="FILE",
+        help="the picture: PNG, PDF or SVG by its suffix (default: the table's name with .png, in "
+        "the working folder)",
+    )  # fmt: skip
+    draw.add_argument("--density", action="store_true", help="draw psi^2 instead of psi")
+    draw.set_defaults(run=_draw)
+    return parser
+
+
+def _add_common(command):
+    add = command.add_argument
+    add("file", metavar="FILE", help="a table of rows or of layers")
+    add("--count", type=_whole, metavar="N", help="how many levels, lowest first (default: all)")
+    add("--window", type=_number, nargs=2, metavar=("LOW", "HIGH"),
+        help="all levels between two energies, in the table's unit of energy")  # fmt: skip
+    add("--method", default="shooting", metavar="NAME",
+        help="shooting (default) or finite-difference")  # fmt: skip
+    add("--no-cross-check", action="store_true", help="do not solve by the other method too")
+    add("--interpolation", metavar="NAME", help="linear, step, smooth or monotone")
+    add("--left", metavar="EDGE", help="open or wall")
+    add("--right", metavar="EDGE", help="open or wall")
+    add("--columns", metavar="NAMES", help="for a file without a header, such as x,V,m")
+    add("--units", metavar="UNITS", help="units of length and energy for --columns: nm,eV")
+    add("--json", metavar="FILE", help="write the levels as JSON; - is stdout")
+    add("--csv", metavar="FILE", help="write one row a level")
+    add("--states", metavar="FILE", help="write V and the wave functions, one row a position")
+
+
+def _whole(text):
+    try:
+        return int(text)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"expected a whole number, found {text!r}") from None
+
+
+def _number(text):
+    try:
+        return float(text)
+    except ValueError:
+        raise argparse.ArgumentTypeError(f"expected a number, found {text!r}") from None
+
+
+# The commands ------------------------------------------------------------------------------------
+
+
+def _levels(args):
+    levels = _solved(args)
+    _write(args, levels)
+    words = _words(args, levels)
+    if args.json == "-":
+        _say(*words, stream=sys.stderr)
+    else:
+        table = [*_table(levels), ""] if len(levels) else []
+        _say(*_heading(levels.profile), "", *table, *words)
+
+
+def _draw(args):
+    if args.output is None:
+        args.output = os.path.splitext(os.path.basename(args.file))[0] + ".png"
+    from . import draw
+
+    draw.check_suffix(args.output)
+    levels = _solved(args)
+    figure = draw.draw(levels, density=args.density)
+    _write(args, levels)
+    draw.save(figure, args.output, inputs=[args.file])
+    _say(*_words(args, levels), stream=sys.stderr if args.json == "-" else sys.stdout)
+    _say(f"wrote {args.output}", stream=sys.stderr)
+
+
+def _solved(args):
+    """Read, check every output, solve: nothing is written before all of that went well."""
+    from .tables import read_profile
+
+    _check_outputs(args)
+    profile = read_profile(
+        args.file, interpolation=args.interpolation, left=args.left, right=args.right,
+        columns=args.columns, units=args.units,
+    )  # fmt: skip
+    # As a name of the package, not of the module: see eigen1d/__init__.py.
+    from . import solve
+
+    levels = solve(
+        profile, count=args.count, window=args.window, method=args.method,
+        cross_check=not args.no_cross_check,
+    )  # fmt: skip
+    if args.count is not None and len(levels) < args.count:
+        exist = _counted(len(levels), "bound level")
+        remedy = f"Write --count {len(levels)}, or leave" if len(levels) else "Leave"
+        raise InputError(
+            f"{args.file}: --count {args.count} asks for more levels than exist: {exist}\n"
+            f"  {remedy} --count out for all there are."
+        )
+    return levels
+
+
+def _check_outputs(args):
+    """Raise `InputError` for an output that cannot be written, before anything is computed."""
+    outputs = {
+        name: path
+        for name in ("json", "csv", "states", "output")
+        if (path := getattr(args, name)) is not None
+    }
+    if outputs.get("json") == "-":
+        del outputs["json"]
+    places = {}
+    for name, path in outputs.items():
+        if path == "-":
+            raise InputError(f"--{name} -: only --json can go to stdout; name a file")
+        place = os.path.realpath(path)
+        if place in places:
+            raise InputError(
+                f"--{places[place]} and --{name} both name {path}; each needs a file of its own"
+            )
+        places[place] = name
+        _check_writable(path, place, args.file)
+
+
+def _check_writable(path, place, table):
+    try:
+        _files._check(path, place, [table])
+        if os.access(place if os.path.exists(place) else os.path.dirname(place), os.W_OK):
+            return
+        reason = "no permission to write there"
+    except OSError as fault:
+        reason = fault.strerror
+    raise InputError(f"{path}: cannot be written: {reason}\n  Name a file in a folder of yours.")
+
+
+def _write(args, levels):
+    inputs = [args.file]
+    if args.csv is not None:
+        levels.to_csv(args.csv, inputs)
+    if args.states is not None:
+        from .draw import positions
+
+        levels.states_to_csv(args.states, positions(levels), inputs)
+    if args.json is not None:
+        text = json.dumps(levels.to_dict(), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+        if args.json == "-":
+            _say(text, end="")
+        else:
+            _files.write_whole(args.json, text, inputs)
+
+
+# What is printed ---------------------------------------------------------------------------------
+
+
+def _heading(profile):
+    name = profile.title or os.path.basename(profile.source)
+    edges = f"left edge {profile.left.kind}, right edge {profile.right.kind}"
+    given = _counted(profile.row_count, "row" if profile.kind == "rows" else "layer")
+    return [name, f"{given}, {_counted(profile.cells, 'cell')}; {edges}"]
+
+
+def _table(levels):
+    """Lines of the table of levels, with units in its header."""
+    energy, length = levels.profile.units.energy, levels.profile.units.length
+    budget = levels.budget
+    crossed = budget.method is not None
+    columns = [
+        ("n", [str(n) for n in levels.n]),
+        (f"energy [{energy}]", _numbers(levels.energy, budget.total)),
+        (f"bracket +- [{energy}]", [f"{half:.1e}" for half in budget.numeric]),
+    ]
+    if crossed:
+        columns.append((f"cross-check [{energy}]", [f"{d:.1e}" for d in budget.method]))
+    digits = levels.spread_x * 1e-4
+    columns += [
+        (f"<x> [{length}]", _numbers(levels.mean_x, digits)),
+        (f"spread [{length}]", _numbers(levels.spread_x, digits)),
+    ]
+    aligned = []
+    for head, cells in columns:
+        width = max(map(len, [head, *cells]))
+        aligned.append([cell.rjust(width) for cell in [head, *cells]])
+    return ["  ".join(line) for line in zip(*aligned, strict=True)]
+
+
+def _numbers(values, uncertainties):
+    """Numbers whose last digit is no finer than their uncertainty, aligned at the decimal point."""
+    size = max(map(abs, values), default=0.0)
+    if size != 0 and not 1e-3 <= size < 1e7:
+        return [
+            f"{v:.{_digits(u / 10.0 ** math.floor(math.log10(abs(v))), v) if v else 0}e}"
+            for v, u in zip(values, uncertainties, strict=True)
+        ]
+    digits = [_digits(u, v) for v, u in zip(values, uncertainties, strict=True)]
+    most = max(digits, default=0)
+    cells = [f"{v:.{d}f}" for v, d in zip(values, digits, strict=True)]
+    # A number without decimals also lacks the point that the others have.
+    return [
+        c + " " * (most - d + (most > 0 and d == 0)) for c, d in zip(cells, digits, strict=True)
+    ]
+
+
+def _digits(uncertainty, value):
+    """How many decimals a number with this uncertainty may show."""
+    if not uncertainty > 0:  # nothing known: what a float holds
+        uncertainty = math.ulp(value)
+    return min(max(math.floor(-math.log10(uncertainty)), 0), 17)
+
+
+def _words(args, levels):
+    """Sentences: whether the list is complete, where the continuum starts, what was assumed."""
+    words = [_completeness(args, levels)]
+    words += [note[0].upper() + note[1:] + "." for note in levels.notes]
+    if len(levels):
+        both = "bracket and cross-check" if levels.budget.method is not None else "bracket"
+        words.append(
+            f"Energies are cut to the digits that {both} support; --json FILE has every digit."
+        )
+    profile = levels.profile
+    if profile.mass_cells.shape[1] == 1 and (profile.mass_cells == 1).all():
+        words.append(
+            "The mass is 1 m_e everywhere, which is assumed where a table has no column m."
+        )
+    return words
+
+
+def _completeness(args, levels):
+    profile, count = levels.profile, len(levels)
+    unit, edge = profile.units.energy, profile.open_edge
+    walls = math.isinf(edge)
+    continuum = f"the continuum starts at {edge:.10g} {unit}"
+    if not levels.complete:
+        return "The list is NOT complete: a bracket could not be closed in double precision."
+    if args.window is not None:
+        low, high = args.window
+        found = _counted(count, "level")
+        where = f"between {low:.10g} and {high:.10g} {unit}"
+        also = "." if walls else f"; {continuum}."
+        return f"The list is complete: {found} {where}{also}"
+    if walls:
+        return (
+            "Between two walls levels go on for ever; "
+            f"listed are the lowest {count}, none missed. --count N asks for N."
+        )
+    if count == 0:
+        return (
+            f"No level is bound: none lies below the continuum, which starts at {edge:.10g} {unit}."
+        )
+    if args.count is not None:
+        return (
+            f"Listed are the lowest {count}, none missed; there may be more. {_capital(continuum)}."
+        )
+    return f"The list is complete: {_counted(count, 'bound level')}; {continuum}."
+
+
+def _counted(count, noun):
+    return f"{count or 'no'} {noun}{'' if count == 1 else 's'}"
+
+
+def _capital(text):
+    return text[0].upper() + text[1:]
+
+
+def _say(*lines, stream=None, end="\n"):
+    """Print, spelling out what the terminal's encoding does not have."""
+    stream = stream or sys.stdout
+    encoding = getattr(stream, "encoding", None) or "utf-8"
+    text = "\n".join(lines) + end
+    stream.write(text.encode(encoding, "backslashreplace").decode(encoding))
+
+
+def _complain(message, status):
+    _say(f"eigen1d: {message}", stream=sys.stderr)
+    return status
+
+
+def _let_the_reader_go():
+    """Whoever read our output has seen enough; keep Python from complaining at exit."""
+    try:
+        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+    except (OSError, ValueError):
+        pass  # stdout is no file of ours

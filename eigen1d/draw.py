@@ -1,0 +1,275 @@
+"""One picture: V(x), each level at its energy, its wave function on it, the continuum shaded.
+
+matplotlib is imported when a picture is drawn: `positions` serves tables of wave functions too.
+"""
+
+import io
+import os
+
+import numpy as np
+
+from ._files import write_whole
+from .errors import InputError
+
+FORMATS = ("png", "pdf", "svg")
+# Neighbouring levels alternate between a blue and an orange that differ in lightness too: they stay
+# apart in every kind of colour blindness and in grey print.
+COLOURS = ("#1d5c96", "#dd7324")
+INK, CONTINUUM, WALL = "#22262b", "#e9ebee", "#b9bec5"
+_TAIL_LENGTHS = 5.0  # decay lengths shown beyond an open edge: psi falls to below 1 %
+_TAIL_SHARE = (0.04, 0.35)  # but at least and at most this part of the profile's span
+_LABEL_HEIGHT = 0.032  # of the axes: what a line of text needs
+_TALLEST, _LEAST = 0.13, 0.012  # height of a wave function, as a part of the axes
+
+
+def draw(levels, *, density=False):
+    """Draw V(x) with its levels and their wave functions.
+
+    Parameters
+    ----------
+    levels : Levels
+    density : bool, optional
+        Draw psi^2 rather than psi.
+
+    Returns
+    -------
+    matplotlib.figure.Figure
+        Each wave function stands on its level, scaled to the room that its neighbours leave.
+
+    Examples
+    --------
+    >>> from eigen1d import Profile, solve
+    >>> box = Profile.from_layers([10.0], [0.0], left="wall", right="wall")
+    >>> figure = draw(solve(box, count=3))
+    >>> figure.axes[0].get_xlabel()
+    'x [nm]'
+    """
+    from matplotlib.backends.backend_agg import FigureCanvasAgg
+    from matplotlib.figure import Figure
+
+    figure = Figure(figsize=(8.0, 5.6), dpi=150, layout="constrained")
+    FigureCanvasAgg(figure)
+    axes = figure.add_subplot()
+    profile = levels.profile
+    left, right = _span(levels)
+    bottom, top = _heights(levels)
+    axes.set_xlim(left, right)
+    axes.set_ylim(bottom, top)
+    _draw_surroundings(axes, profile, (left, right), (bottom, top))
+    _draw_waves(axes, levels, density, top - bottom)
+    _draw_potential(axes, profile, left, right)
+    _draw_labels(axes, levels, top - bottom)
+    axes.set_xlabel(f"x [{profile.units.length}]")
+    axes.set_ylabel(f"energy [{profile.units.energy}]")
+    name = profile.title or os.path.basename(profile.source) or "potential"
+    what = "psi$^2$" if density else "psi"
+    axes.set_title(name, loc="left", fontsize=11, parse_math=False, wrap=True)
+    axes.set_title(f"{what} on each level, not to scale", loc="right", fontsize=8, color="#5b626b")
+    axes.spines[["top", "right"]].set_visible(False)
+    return figure
+
+
+def check_suffix(path):
+    """Return the format that the suffix of `path` asks for, or raise `InputError`."""
+    suffix = os.path.splitext(os.fspath(path))[1].lower().removeprefix(".")
+    if suffix not in FORMATS:
+        found = f"the suffix .{suffix}" if suffix else "no suffix"
+        raise InputError(
+            f"{path}: {found} says no format that pictures are written in\n"
+            "  End the name in .png, .pdf or .svg."
+        )
+    return suffix
+
+
+def save(figure, path, inputs=()):
+    """Write a figure as PNG, PDF or SVG, by its suffix; whole or not at all.
+
+    Parameters
+    ----------
+    figure : matplotlib.figure.Figure
+    path : str or PathLike
+    inputs : sequence of str or PathLike, optional
+        Files that were read and must not be overwritten.
+
+    Raises
+    ------
+    InputError
+        Another suffix, or a path that cannot be written.
+    """
+    from matplotlib import rc_context
+
+    form = check_suffix(path)
+    content = io.BytesIO()
+    # No date and no random names: the same levels give the same bytes.
+    undated = {"png": {}, "pdf": {"CreationDate": None}, "svg": {"Date": None}}[form]
+    with rc_context({"svg.hashsalt": "eigen1d", "svg.fonttype": "none"}):
+        figure.savefig(content, format=form, metadata=undated)
+    write_whole(path, content.getvalue(), inputs)
+
+
+def positions(levels, points=2001):
+    """Equally spaced positions that show every wave function with its tails.
+
+    Parameters
+    ----------
+    levels : Levels
+    points : int, optional
+
+    Returns
+    -------
+    ndarray, shape (points,)
+        From the first to the last cell and, beyond open edges, some decay lengths of the highest
+        level, in `units.length`.
+    """
+    return np.linspace(*_span(levels), points, endpoint=True)
+
+
+# What is in view ---------------------------------------------------------------------------------
+
+
+def _span(levels):
+    """The first and the last position in view."""
+    profile = levels.profile
+    x = profile.x
+    span = x[-1] - x[0]
+    out = []
+    for edge, end, side in ((profile.left, x[0], -1), (profile.right, x[-1], 1)):
+        beyond = 0.0
+        if edge.kind == "open":
+            beyond = _TAIL_SHARE[0] * span
+            depth = edge.V - levels.energy
+            if depth.size and (depth > 0).any():
+                mass = edge.mass * profile.units.electron_mass
+                longest = 1.0 / np.sqrt(2.0 * mass * depth[depth > 0].min())
+                beyond = min(max(_TAIL_LENGTHS * longest, beyond), _TAIL_SHARE[1] * span)
+        out.append(end + side * beyond)
+    return out
+
+
+def _heights(levels):
+    """The lowest and the highest energy in view.
+
+    The barriers are shown whole unless they dwarf the levels: a diatomic curve's inner wall would
+    leave nothing of the rest.
+    """
+    profile = levels.profile
+    low = profile.V_min
+    reach = [e for e in (*levels.energy[-1:], profile.open_edge) if np.isfinite(e)]
+    peak = max(_corners(profile))
+    high = max(reach, default=peak)
+    if not high > low:  # nothing bound: V itself is the picture
+        high = peak if peak > low else low + 1.0
+    room = high - low
+    high = peak if high < peak < high + 0.6 * room else high
+    return low - 0.06 * room, high + 0.12 * room
+
+
+def _corners(profile):
+    """V at both ends of each cell."""
+    return np.concatenate([profile.V_cells[:, 0], profile.V_cells.sum(axis=1)])
+
+
+# The parts of the picture ------------------------------------------------------------------------
+
+
+def _draw_surroundings(axes, profile, across, heights):
+    """The continuum, and what lies behind walls."""
+    if np.isfinite(profile.open_edge):
+        axes.axhspan(profile.open_edge, heights[1], color=CONTINUUM, zorder=0, linewidth=0)
+        axes.text(
+            0.995, profile.open_edge + 0.008 * (heights[1] - heights[0]), "continuum",
+            transform=axes.get_yaxis_transform(), ha="right", va="bottom", fontsize=8,
+            color="#5b626b",
+        )  # fmt: skip
+    depth = 0.03 * (across[1] - across[0])
+    for edge, end, side in ((profile.left, across[0], -1), (profile.right, across[1], 1)):
+        if edge.kind == "wall":
+            outer = end + side * depth
+            axes.axvspan(
+                min(end, outer), max(end, outer), facecolor="white", edgecolor=WALL, hatch="////",
+                linewidth=0, zorder=4,
+            )  # fmt: skip
+            axes.axvline(end, color=INK, linewidth=2.0, zorder=5)
+            low, high = axes.get_xlim()
+            axes.set_xlim(min(low, outer), max(high, outer))
+
+
+def _draw_potential(axes, profile, left, right):
+    """V(x), a jump as a vertical line: each cell is drawn from its own end to its own end."""
+    inner = np.linspace(0.0, 1.0, 2 if profile.V_cells.shape[1] <= 2 else 33)
+    if profile.cells * inner.size > 200_000:  # finer than any picture
+        inner = inner[[0, -1]]
+    start, width = profile.x[:-1, None], np.diff(profile.x)[:, None]
+    x = (start + width * inner).ravel()
+    V = np.zeros((profile.cells, inner.size))
+    for k in reversed(range(profile.V_cells.shape[1])):
+        V = V * inner + profile.V_cells[:, k : k + 1]
+    x = np.concatenate([[left], x, [right]])
+    V = np.concatenate([[V[0, 0]], V.ravel(), [V[-1, -1]]])
+    axes.plot(x, V, color=INK, linewidth=1.4, zorder=3, solid_joinstyle="miter", gid="potential")
+
+
+def _draw_waves(axes, levels, density, height):
+    if not len(levels):
+        axes.text(
+            0.5, 0.5, "no bound level", transform=axes.transAxes, ha="center", color="#5b626b"
+        )
+        return
+    left, right = _span(levels)
+    x = np.linspace(left, right, 1500 + 12 * int(levels.n[-1]))
+    psi = levels.psi(x)
+    if density:
+        psi = psi**2
+    room = _rooms(levels.energy, height)
+    crowd = np.clip(len(levels) / 12, 1.0, 4.0)  # many levels: thinner lines
+    for i, energy in enumerate(levels.energy):
+        colour = COLOURS[int(levels.n[i]) % 2]
+        # psi has lobes on both sides of its level, psi^2 only above it.
+        scale = room[i] * (0.85 if density else 0.5) / np.abs(psi[i]).max()
+        curve = energy + scale * psi[i]
+        axes.axhline(energy, color=colour, linewidth=0.5, alpha=0.6, zorder=1)
+        axes.fill_between(x, energy, curve, color=colour, alpha=0.22, linewidth=0, zorder=2)
+        axes.plot(x, curve, color=colour, linewidth=1.3 / crowd, zorder=2, gid=f"psi_{levels.n[i]}")
+
+
+def _rooms(energy, height):
+    """The height that each wave function may take: the distance to the neighbours it is clear of.
+
+    Levels closer than a hair in the picture (the levels of a stack) cannot be kept apart by any
+    scale; they share the room of their group.
+    """
+    hair = _LEAST * height
+    gaps = np.diff(energy)
+    below = np.concatenate([[np.inf], gaps])
+    above = np.concatenate([gaps, [np.inf]])
+    for i in range(1, energy.size):
+        if below[i] < hair:
+            below[i] = below[i - 1]
+    for i in reversed(range(energy.size - 1)):
+        if above[i] < hair:
+            above[i] = above[i + 1]
+    return np.clip(np.minimum(below, above), hair, _TALLEST * height)
+
+
+def _draw_labels(axes, levels, height):
+    for first, last, place in _merged_labels(levels.energy, _LABEL_HEIGHT * height):
+        n = f"{levels.n[first]}" if first == last else f"{levels.n[first]} to {levels.n[last]}"
+        axes.text(
+            1.008, place, f"n = {n}", transform=axes.get_yaxis_transform(), ha="left",
+            va="center", fontsize=8, color=INK, gid="label",
+        )  # fmt: skip
+
+
+def _merged_labels(energy, height):
+    """Groups of levels (first, last, place of the label), no two places closer than `height`.
+
+    A level joins the group below it if the labels of the two would overlap; the label moves to the
+    middle of what it names, and may then meet the next group below.
+    """
+    groups = []
+    for i, e in enumerate(energy):
+        groups.append((i, i, e))
+        while len(groups) > 1 and groups[-1][2] - groups[-2][2] < height:
+            (first, _, _), (_, last, _) = groups[-2:]
+            groups[-2:] = [(first, last, energy[first : last + 1].mean())]
+    return groups
