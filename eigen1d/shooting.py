@@ -239,7 +239,7 @@ class Search:
         Levels that counting could not part keep the interval that holds all of them.
         """
         height = np.maximum(energy - self.floor, 0.0)
-        half = self.resolution[0] * height + 2 * np.spacing(np.abs(energy))
+        half = self.resolution[0] * height + 4 * np.spacing(np.abs(energy))
         half = np.where(alone, half, half + 0.5 * (bracket[:, 1] - bracket[:, 0]))
         out = np.empty((energy.size, 2))
         todo = np.arange(energy.size)
