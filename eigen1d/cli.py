@@ -265,10 +265,10 @@ def _table(levels):
     ]
     if crossed:
         columns.append((f"cross-check [{energy}]", [f"{d:.1e}" for d in budget.method]))
-    digits = levels.spread_x * 1e-4
+    spread = levels.spread_x
     columns += [
-        (f"<x> [{length}]", _numbers(levels.mean_x, digits)),
-        (f"spread [{length}]", _numbers(levels.spread_x, digits)),
+        (f"<x> [{length}]", _numbers(levels.mean_x, spread * 1e-4, spread.max())),
+        (f"spread [{length}]", _numbers(spread, spread * 1e-4)),
     ]
     aligned = []
     for head, cells in columns:
@@ -277,21 +277,25 @@ def _table(levels):
     return ["  ".join(line) for line in zip(*aligned, strict=True)]
 
 
-def _numbers(values, uncertainties):
-    """Numbers whose last digit is no finer than their uncertainty, aligned at the decimal point."""
-    size = max(map(abs, values), default=0.0)
+def _numbers(values, uncertainties, size=0.0):
+    """Numbers whose last digit is no finer than their uncertainty, aligned at the decimal point.
+
+    With exponents where the largest of them, or `size`, would need too many digits without.
+    """
+    size = max(abs(values).max(), size)
     if size != 0 and not 1e-3 <= size < 1e7:
         return [
-            f"{v:.{_digits(u / 10.0 ** math.floor(math.log10(abs(v))), v) if v else 0}e}"
+            f"{v:.{_digits(u / 10.0 ** math.floor(math.log10(abs(v))), 1.0) if v else 0}e}"
             for v, u in zip(values, uncertainties, strict=True)
         ]
     digits = [_digits(u, v) for v, u in zip(values, uncertainties, strict=True)]
-    most = max(digits, default=0)
-    cells = [f"{v:.{d}f}" for v, d in zip(values, digits, strict=True)]
-    # A number without decimals also lacks the point that the others have.
-    return [
-        c + " " * (most - d + (most > 0 and d == 0)) for c, d in zip(cells, digits, strict=True)
-    ]
+    most = max(digits)
+    cells = []
+    for v, d in zip(values, digits, strict=True):
+        text = f"{round(v, d) + 0.0:.{d}f}"  # + 0.0: no minus before a zero
+        # A number without decimals also lacks the point that the others have.
+        cells.append(text + " " * (most - d + (most > 0 and d == 0)))
+    return cells
 
 
 def _digits(uncertainty, value):

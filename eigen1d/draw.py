@@ -16,8 +16,9 @@ FORMATS = ("png", "pdf", "svg")
 # apart in every kind of colour blindness and in grey print.
 COLOURS = ("#1d5c96", "#dd7324")
 INK, CONTINUUM, WALL = "#22262b", "#e9ebee", "#b9bec5"
-_TAIL_LENGTHS = 5.0  # decay lengths shown beyond an open edge: psi falls to below 1 %
-_TAIL_SHARE = (0.04, 0.35)  # but at least and at most this part of the profile's span
+GREY = "#5b626b"
+_FAINT = 0.01  # a tail is shown until psi has fallen to this part of its largest value,
+_TAIL_SHARE = (0.05, 0.35)  # over at least and at most this part of the profile's span
 _LABEL_HEIGHT = 0.032  # of the axes: what a line of text needs
 _TALLEST, _LEAST = 0.13, 0.012  # height of a wave function, as a part of the axes
 
@@ -60,11 +61,14 @@ def draw(levels, *, density=False):
     _draw_potential(axes, profile, left, right)
     _draw_labels(axes, levels, top - bottom)
     axes.set_xlabel(f"x [{profile.units.length}]")
-    axes.set_ylabel(f"energy [{profile.units.energy}]")
+    axes.set_ylabel(f"energy [{profile.units.energy.replace('^-1', '$^{-1}$')}]")
     name = profile.title or os.path.basename(profile.source) or "potential"
-    what = "psi$^2$" if density else "psi"
+    what = "\N{GREEK SMALL LETTER PSI}" + "\N{SUPERSCRIPT TWO}" * density
     axes.set_title(name, loc="left", fontsize=11, parse_math=False, wrap=True)
-    axes.set_title(f"{what} on each level, not to scale", loc="right", fontsize=8, color="#5b626b")
+    axes.text(
+        1.0, -0.075, f"{what} on each level, scaled to fit", transform=axes.transAxes, ha="right",
+        va="top", fontsize=8, color=GREY,
+    )  # fmt: skip
     axes.spines[["top", "right"]].set_visible(False)
     return figure
 
@@ -130,19 +134,19 @@ def positions(levels, points=2001):
 def _span(levels):
     """The first and the last position in view."""
     profile = levels.profile
-    x = profile.x
-    span = x[-1] - x[0]
+    x = np.linspace(profile.x[0], profile.x[-1], 1001)
+    psi = np.abs(levels.psi(x)) if len(levels) else np.empty((0, x.size))
     out = []
-    for edge, end, side in ((profile.left, x[0], -1), (profile.right, x[-1], 1)):
+    for edge, at, side in ((profile.left, 0, -1), (profile.right, -1, 1)):
         beyond = 0.0
         if edge.kind == "open":
-            beyond = _TAIL_SHARE[0] * span
-            depth = edge.V - levels.energy
-            if depth.size and (depth > 0).any():
-                mass = edge.mass * profile.units.electron_mass
-                longest = 1.0 / np.sqrt(2.0 * mass * depth[depth > 0].min())
-                beyond = min(max(_TAIL_LENGTHS * longest, beyond), _TAIL_SHARE[1] * span)
-        out.append(end + side * beyond)
+            mass = edge.mass * profile.units.electron_mass
+            kappa = np.sqrt(2.0 * mass * np.maximum(edge.V - levels.energy, 0.0))
+            with np.errstate(divide="ignore"):  # a level at the edge itself has an endless tail
+                reach = np.log(np.maximum(psi[:, at] / (_FAINT * psi.max(axis=1)), 1.0)) / kappa
+            least, most = (share * (x[-1] - x[0]) for share in _TAIL_SHARE)
+            beyond = min(max(reach.max(initial=0.0), least), most)
+        out.append(x[at] + side * beyond)
     return out
 
 
@@ -153,14 +157,14 @@ def _heights(levels):
     leave nothing of the rest.
     """
     profile = levels.profile
-    low = profile.V_min
+    low = min(profile.V_min, profile.open_edge)
     reach = [e for e in (*levels.energy[-1:], profile.open_edge) if np.isfinite(e)]
     peak = max(_corners(profile))
     high = max(reach, default=peak)
     if not high > low:  # nothing bound: V itself is the picture
         high = peak if peak > low else low + 1.0
     room = high - low
-    high = peak if high < peak < high + 0.6 * room else high
+    high = peak if high < peak < high + room else high
     return low - 0.06 * room, high + 0.12 * room
 
 
@@ -177,9 +181,8 @@ def _draw_surroundings(axes, profile, across, heights):
     if np.isfinite(profile.open_edge):
         axes.axhspan(profile.open_edge, heights[1], color=CONTINUUM, zorder=0, linewidth=0)
         axes.text(
-            0.995, profile.open_edge + 0.008 * (heights[1] - heights[0]), "continuum",
-            transform=axes.get_yaxis_transform(), ha="right", va="bottom", fontsize=8,
-            color="#5b626b",
+            0.995, 0.5 * (profile.open_edge + heights[1]), "continuum",
+            transform=axes.get_yaxis_transform(), ha="right", va="center", fontsize=8, color=GREY,
         )  # fmt: skip
     depth = 0.03 * (across[1] - across[0])
     for edge, end, side in ((profile.left, across[0], -1), (profile.right, across[1], 1)):
@@ -211,51 +214,57 @@ def _draw_potential(axes, profile, left, right):
 
 def _draw_waves(axes, levels, density, height):
     if not len(levels):
-        axes.text(
-            0.5, 0.5, "no bound level", transform=axes.transAxes, ha="center", color="#5b626b"
-        )
+        axes.text(0.01, 0.97, "no bound level", transform=axes.transAxes, va="top", color=GREY)
         return
     left, right = _span(levels)
     x = np.linspace(left, right, 1500 + 12 * int(levels.n[-1]))
     psi = levels.psi(x)
     if density:
         psi = psi**2
-    room = _rooms(levels.energy, height)
-    crowd = np.clip(len(levels) / 12, 1.0, 4.0)  # many levels: thinner lines
+    room, sharing = _rooms(levels.energy, height)
+    crowd = np.clip(len(levels) / 12, 1.0, 3.0)  # many levels: thinner lines
     for i, energy in enumerate(levels.energy):
         colour = COLOURS[int(levels.n[i]) % 2]
+        size = np.abs(psi[i])
         # psi has lobes on both sides of its level, psi^2 only above it.
-        scale = room[i] * (0.85 if density else 0.5) / np.abs(psi[i]).max()
-        curve = energy + scale * psi[i]
-        axes.axhline(energy, color=colour, linewidth=0.5, alpha=0.6, zorder=1)
-        axes.fill_between(x, energy, curve, color=colour, alpha=0.22, linewidth=0, zorder=2)
-        axes.plot(x, curve, color=colour, linewidth=1.3 / crowd, zorder=2, gid=f"psi_{levels.n[i]}")
+        curve = energy + room[i] * (0.85 if density else 0.5) * psi[i] / size.max()
+        seen = size > (0.1 if density else 1.0) * _FAINT * size.max()
+        seen = slice(np.argmax(seen), seen.size - np.argmax(seen[::-1]))
+        axes.axhline(energy, color=colour, linewidth=0.6, alpha=0.7, zorder=1)
+        axes.fill_between(
+            x[seen], energy, curve[seen], color=colour, alpha=0.22 / sharing[i], linewidth=0,
+            zorder=2,
+        )  # fmt: skip
+        axes.plot(
+            x[seen], curve[seen], color=colour, linewidth=1.3 / crowd, alpha=sharing[i] ** -0.25,
+            zorder=2, gid=f"psi_{levels.n[i]}",
+        )  # fmt: skip
 
 
 def _rooms(energy, height):
-    """The height that each wave function may take: the distance to the neighbours it is clear of.
+    """(height that each wave function may take, how many levels share that room).
 
-    Levels closer than a hair in the picture (the levels of a stack) cannot be kept apart by any
-    scale; they share the room of their group.
+    The room is the distance to the nearest neighbour. Levels closer than a hair in the picture, as
+    those of a stack are, no scale can keep apart: they share the room of their group.
     """
     hair = _LEAST * height
-    gaps = np.diff(energy)
-    below = np.concatenate([[np.inf], gaps])
-    above = np.concatenate([gaps, [np.inf]])
-    for i in range(1, energy.size):
-        if below[i] < hair:
-            below[i] = below[i - 1]
-    for i in reversed(range(energy.size - 1)):
-        if above[i] < hair:
-            above[i] = above[i + 1]
-    return np.clip(np.minimum(below, above), hair, _TALLEST * height)
+    cuts = np.flatnonzero(np.diff(energy) >= hair) + 1
+    room, sharing = np.empty(energy.size), np.empty(energy.size)
+    for group in np.split(np.arange(energy.size), cuts):
+        first, last = group[0], group[-1]
+        below = energy[first] - energy[first - 1] if first > 0 else np.inf
+        above = energy[last + 1] - energy[last] if last + 1 < energy.size else np.inf
+        room[group] = np.clip(min(below, above), hair, _TALLEST * height)
+        sharing[group] = group.size
+    return room, sharing
 
 
 def _draw_labels(axes, levels, height):
     for first, last, place in _merged_labels(levels.energy, _LABEL_HEIGHT * height):
-        n = f"{levels.n[first]}" if first == last else f"{levels.n[first]} to {levels.n[last]}"
+        joint = {0: "", 1: f", {levels.n[last]}"}.get(last - first, f" to {levels.n[last]}")
         axes.text(
-            1.008, place, f"n = {n}", transform=axes.get_yaxis_transform(), ha="left",
+            1.008, place, f"n = {levels.n[first]}{joint}",
+            transform=axes.get_yaxis_transform(), ha="left",
             va="center", fontsize=8, color=INK, gid="label",
         )  # fmt: skip
 
