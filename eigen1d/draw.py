@@ -181,8 +181,8 @@ def _draw_surroundings(axes, profile, across, heights):
     if np.isfinite(profile.open_edge):
         axes.axhspan(profile.open_edge, heights[1], color=CONTINUUM, zorder=0, linewidth=0)
         axes.text(
-            0.995, 0.5 * (profile.open_edge + heights[1]), "continuum",
-            transform=axes.get_yaxis_transform(), ha="right", va="center", fontsize=8, color=GREY,
+            0.995, 0.985, "continuum", transform=axes.transAxes, ha="right", va="top", fontsize=8,
+            color=GREY,
         )  # fmt: skip
     depth = 0.03 * (across[1] - across[0])
     for edge, end, side in ((profile.left, across[0], -1), (profile.right, across[1], 1)):

@@ -1,0 +1,520 @@
+"""The command line: what it prints, what it writes, and how it refuses."""
+
+import csv
+import io
+import json
+import os
+import shutil
+import subprocess
+import sys
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+from eigen1d import cli, read_profile, solve
+
+POTENTIALS = Path(__file__).parent.parent / "potentials"
+WELL = "x [nm], V [eV], m [m_e]\n0, 0.3, 0.067\n5, 0.3, 0.067\n5, 0, 0.067\n15, 0, 0.067\n"
+WELL += "15, 0.3, 0.067\n20, 0.3, 0.067\n"
+
+
+@pytest.fixture(autouse=True)
+def folder(tmp_path, monkeypatch):
+    """An empty working folder with one table, so that messages hold no path."""
+    monkeypatch.chdir(tmp_path)
+    Path("well.csv").write_text(WELL)
+    return tmp_path
+
+
+@pytest.fixture
+def run(capsys):
+    """Run the command line; return status, stdout and stderr."""
+
+    def call(*argv):
+        status = cli.main([str(word) for word in argv])
+        return status, *capsys.readouterr()
+
+    return call
+
+
+def refused(run, *argv):
+    """Run a call that must be refused: status 2, one message, nothing printed, nothing written."""
+    before = {path: path.read_bytes() for path in Path().rglob("*") if path.is_file()}
+    status, out, err = run(*argv)
+    assert (status, out) == (2, "")
+    assert err.startswith("eigen1d: error: ") and err.endswith("\n")
+    assert err.count("error:") == 1 and "Traceback" not in err
+    assert {path: path.read_bytes() for path in Path().rglob("*") if path.is_file()} == before
+    return err.removeprefix("eigen1d: error: ").rstrip("\n")
+
+
+# What is printed ---------------------------------------------------------------------------------
+
+
+def test_table_of_levels(run):
+    """One row a level, units in the header, and in words what the list is."""
+    status, out, err = run("levels", "well.csv")
+    assert (status, err) == (0, "")
+    title, given, _, head, *rows, _, complete, digits = out.splitlines()
+    assert title == "well.csv"
+    assert given == "6 rows, 3 cells; left edge open, right edge open"
+    assert head.split() == (
+        "n energy [eV] bracket +- [eV] cross-check [eV] <x> [nm] spread [nm]".split()
+    )
+    levels = solve(read_profile("well.csv"), cross_check=True)
+    assert len(rows) == len(levels) == 3
+    for i, row in enumerate(rows):
+        n, energy, bracket, crossed, mean, spread = row.split()
+        assert int(n) == i
+        assert float(energy) == pytest.approx(levels.energy[i], abs=levels.budget.total[i] * 5)
+        assert float(bracket) == pytest.approx(levels.budget.numeric[i], rel=0.05)
+        assert float(crossed) == pytest.approx(levels.budget.method[i], rel=0.05)
+        assert float(mean) == pytest.approx(10.0, abs=1e-3)
+        assert float(spread) == pytest.approx(levels.spread_x[i], rel=1e-3)
+    assert complete == "The list is complete: 3 bound levels; the continuum starts at 0.3 eV."
+    assert digits == (
+        "Energies are cut to the digits that bracket and cross-check support; --json FILE has "
+        "every digit."
+    )
+
+
+@pytest.mark.parametrize(
+    ("value", "uncertainty", "shown"),
+    [
+        (0.123456789, 2e-5, "0.1234"),
+        (0.123456789, 1e-4, "0.1234"),
+        (0.123456789, 9.9e-5, "0.1235"),
+        (-39867.6, 0.3, "-39868"),
+        (-1e-17, 1e-4, "0.0000"),
+        (2.777472759853e-07, 1.1e-21, "2.7774727598530e-07"),
+        (2.777472759853e-07, 3e-11, "2.777e-07"),
+        (8.5e12, 2e9, "8.50e+12"),
+    ],
+)
+def test_no_digit_finer_than_the_uncertainty(value, uncertainty, shown):
+    """Digits that nothing supports are read as knowledge."""
+    size = 1.0 if value == -1e-17 else 0.0
+    (text,) = cli._numbers(np.array([value]), np.array([uncertainty]), size)
+    expected = f"{value:.4f}" if shown == "0.1234" else shown
+    assert text == expected
+    mantissa, _, exponent = text.partition("e")
+    last = 10.0 ** (int(exponent or 0) - len(mantissa.partition(".")[2]))
+    assert last >= uncertainty * (1 - 1e-12)
+
+
+def test_numbers_align_at_the_decimal_point():
+    """A column of energies is compared by eye."""
+    cells = cli._numbers(np.array([1.25, 22.5, 333.0]), np.array([1e-3, 0.1, 2.0]))
+    assert cells == ["1.250", "22.5  ", "333    "]
+
+
+@pytest.mark.parametrize(
+    ("options", "sentence"),
+    [
+        (
+            ["--count", 2],
+            "Listed are the lowest 2, none missed; there may be more. The continuum starts at "
+            "0.3 eV.",
+        ),
+        (
+            ["--window", -1, "2e-1"],
+            "The list is complete: 2 levels between -1 and 0.2 eV; the continuum starts at 0.3 eV.",
+        ),
+        (
+            ["--window", "-2e-1", "-1e-1"],
+            "The list is complete: no levels between -0.2 and -0.1 eV; the continuum starts at "
+            "0.3 eV.",
+        ),
+        (
+            ["--left", "wall", "--right", "wall"],
+            "Between two walls levels go on for ever; listed are the lowest 10, none missed. "
+            "--count N asks for N.",
+        ),
+        (
+            ["--left", "wall", "--right", "wall", "--window", 0, 0.1],
+            "The list is complete: 1 level between 0 and 0.1 eV.",
+        ),
+    ],
+)
+def test_words_say_what_the_list_is(run, options, sentence):
+    """Complete, or the lowest few of more, or a choice from infinitely many: the user must know."""
+    status, out, _ = run("levels", "well.csv", "--no-cross-check", *options)
+    assert status == 0 and sentence in out.splitlines()
+
+
+def test_nothing_bound_is_said_in_words(run):
+    """No level is an answer about the wafer, not a fault of the call."""
+    Path("barrier.csv").write_text("thickness [nm], V [eV]\n5, 0.1\n5, 0.4\n5, 0.2\n")
+    status, out, err = run("levels", "barrier.csv", "--json", "levels.json")
+    assert (status, err) == (0, "")
+    assert (
+        "No level is bound: none lies below the continuum, which starts at 0.1 eV."
+        in out.splitlines()
+    )
+    assert json.loads(Path("levels.json").read_text())["levels"] == []
+
+
+def test_default_mass_is_mentioned(run):
+    """A table without a mass gives free electrons: levels off by an order in a semiconductor."""
+    sentence = "The mass is 1 m_e everywhere, which is assumed where a table has no column m."
+    Path("free.csv").write_text("thickness [nm], V [eV]\n5, 0.4\n5, 0\n5, 0.4\n")
+    assert sentence in run("levels", "free.csv", "--count", 1)[1]
+    assert sentence not in run("levels", "well.csv")[1]
+
+
+def test_file_without_header_and_other_readings(run):
+    """The reader's options all arrive: columns, units, interpolation, edges, method."""
+    bare = "".join(WELL.splitlines(keepends=True)[1:])
+    Path("bare.txt").write_text(bare)
+    named = ("--columns", "x,V,m", "--units", "nm,eV")
+    same = run("levels", "bare.txt", *named)[1].splitlines()[3:]
+    assert same == run("levels", "well.csv")[1].splitlines()[3:]
+    step = run("levels", "bare.txt", *named, "--interpolation", "step", "--right", "wall")[1]
+    assert "left edge open, right edge wall" in step
+    assert "--columns" in refused(run, "levels", "bare.txt")
+
+
+def test_title_beyond_the_terminals_encoding_is_spelled_out(run):
+    """A title with a Greek letter must not crash a terminal that has none."""
+    Path("greek.csv").write_text("# title: \N{GREEK SMALL LETTER MU}-well\n" + WELL)
+    for encoding, title in (
+        ("ascii", b"\\u03bc-well"),
+        ("utf-8", "\N{GREEK SMALL LETTER MU}-well"),
+    ):
+        done = subprocess.run(
+            [sys.executable, "-m", "eigen1d", "levels", "greek.csv", "--no-cross-check"],
+            env=os.environ | {"PYTHONIOENCODING": encoding, "PYTHONPATH": str(POTENTIALS.parent)},
+            capture_output=True,
+        )
+        assert done.returncode == 0 and done.stderr == b""
+        title = title if isinstance(title, bytes) else title.encode()
+        assert done.stdout.splitlines()[0] == title
+
+
+# What is written ---------------------------------------------------------------------------------
+
+KEYS = {
+    "": ["schema", "profile", "method", "complete", "levels"],
+    "profile": [
+        "title", "source", "sha256", "kind", "rows", "cells", "length_unit", "energy_unit", "left",
+        "right", "open_edge",
+    ],
+    "level": ["n", "energy", "bracket", "mean_x", "spread_x", "budget"],
+    "budget": ["numeric", "table", "noise", "method", "total"],
+}  # fmt: skip
+
+
+def test_json_on_stdout_is_only_json(run):
+    """A program reads it; the words go to stderr. The keys are a contract."""
+    status, out, err = run("levels", "well.csv", "--json", "-")
+    assert status == 0
+    assert err.startswith("The list is complete: 3 bound levels")
+    found = json.loads(out)
+    assert list(found) == KEYS[""] and found["schema"] == "eigen1d/levels-1"
+    assert list(found["profile"]) == KEYS["profile"]
+    assert found["profile"]["source"] == "well.csv" and found["profile"]["open_edge"] == 0.3
+    levels = solve(read_profile("well.csv"))
+    for i, level in enumerate(found["levels"]):
+        assert list(level) == KEYS["level"] and list(level["budget"]) == KEYS["budget"]
+        assert level["energy"] == levels.energy[i]
+        assert level["bracket"] == list(levels.bracket[i])
+        assert level["budget"]["table"] is None and level["budget"]["noise"] is None
+        assert level["budget"]["method"] is not None
+
+
+def test_terms_that_do_not_apply_are_null(run):
+    """Without a cross-check, and between walls, there is no number: null, never 0."""
+    walls = ("--left", "wall", "--right", "wall", "--no-cross-check")
+    assert run("levels", "well.csv", *walls, "--json", "levels.json")[0] == 0
+    found = json.loads(Path("levels.json").read_text())
+    assert found["profile"]["open_edge"] is None
+    assert [level["budget"]["method"] for level in found["levels"]] == [None] * 10
+
+
+def test_csv_of_levels_and_of_states(run):
+    """Both read back as the numbers themselves; the states go on beyond the table."""
+    status, *_ = run("levels", "well.csv", "--csv", "levels.csv", "--states", "states.csv")
+    assert status == 0
+    levels = solve(read_profile("well.csv"))
+    head, *rows = csv.reader(io.StringIO(Path("levels.csv").read_text()))
+    assert head == [
+        "n", "energy [eV]", "bracket_low [eV]", "bracket_high [eV]", "mean_x [nm]", "spread_x [nm]",
+    ]  # fmt: skip
+    assert np.array_equal(np.array(rows, float)[:, 1], levels.energy)
+    head, *rows = csv.reader(io.StringIO(Path("states.csv").read_text()))
+    assert head == ["x [nm]", "V [eV]"] + [f"psi_{n} [nm^-1/2]" for n in range(3)]
+    x, V, *psi = np.array(rows, float).T
+    assert np.array_equal(V, levels.profile.V(x))
+    assert x[0] < 0 and x[-1] > 20  # tails beyond the table
+    inside = levels.probability(x[0], x[-1])  # a long tail is cut, so not all of 1
+    assert [np.trapezoid(p**2, x) for p in psi] == pytest.approx(inside, abs=1e-6)
+    assert inside.min() > 0.99
+
+
+@pytest.mark.parametrize(
+    ("suffix", "begin"), [("png", b"\x89PNG\r\n\x1a\n"), ("PDF", b"%PDF-"), ("svg", b"<?xml")]
+)
+def test_pictures(run, suffix, begin):
+    """PNG, PDF and SVG, by the suffix; the same words as with `levels`."""
+    status, out, err = run("draw", "well.csv", "-o", f"picture.{suffix}", "--no-cross-check")
+    assert (status, err) == (0, f"wrote picture.{suffix}\n")
+    assert "The list is complete: 3 bound levels" in out
+    assert Path(f"picture.{suffix}").read_bytes().startswith(begin)
+
+
+def test_picture_takes_the_name_of_the_table(run):
+    """The shortest call draws, and says where to."""
+    status, _, err = run("draw", "well.csv", "--density", "--no-cross-check")
+    assert (status, err) == (0, "wrote well.png\n")
+    assert Path("well.png").exists()
+
+
+def test_closed_pipe_is_no_error():
+    """`eigen1d levels FILE | head -1` is a fair question."""
+    table = POTENTIALS / "stack_20.csv"
+    command = f"{sys.executable} -m eigen1d levels {table} --no-cross-check --json - | head -c 1"
+    done = subprocess.run(
+        ["bash", "-o", "pipefail", "-c", command],
+        env=os.environ | {"PYTHONPATH": str(POTENTIALS.parent)},
+        capture_output=True, text=True,
+    )  # fmt: skip
+    assert (done.returncode, done.stdout) == (0, "{")
+    assert "Traceback" not in done.stderr and "Broken" not in done.stderr
+
+
+# What is refused ---------------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("make", "first"),
+    [
+        (None, "missing.csv: "),
+        ("folder", "missing.csv: "),
+        (b"", "missing.csv: "),
+        (b"x [nm], V [eV]\n", "missing.csv, line 1: "),
+        (b"x [nm], V [eV]\n0, 1\n", "missing.csv, line 2: "),
+        (b"\x89PNG\r\n\x1a\n\x00\x00\x00\rIHDR", "missing.csv"),
+        ("x [nm], V [eV]\n0, 1\n1, 2\n# \N{MICRO SIGN}\n".encode("latin-1"), "missing.csv"),
+        (b"x [nm], V\n0, 1\n1, 2\n", "missing.csv, line 1, column 2"),
+        (b"x [nm], V [volt]\n0, 1\n1, 2\n", "missing.csv, line 1, column 2"),
+        (b"x [nm], V [nm]\n0, 1\n1, 2\n", "missing.csv, line 1, column 2"),
+        (b"x [nm], x [nm], V [eV]\n0, 0, 1\n1, 1, 2\n", "missing.csv, line 1, column 2"),
+        (b"x [nm], V [eV], w [nm]\n0, 1, 1\n1, 2, 1\n", "missing.csv, line 1, column 3"),
+        (b"x [nm], V [eV]\n0, 1\n1\n", "missing.csv, line 3, column 2"),
+        (b"x [nm], V [eV]\n0, 1\n1, O.2\n", "missing.csv, line 3, column 2 (V [eV]): expected"),
+        (b"x [nm], V [eV]\n0, 1\n1, nan\n", "missing.csv, line 3, column 2"),
+        (b"x [nm], V [eV]\n0, inf\n1, 1\n", "missing.csv, line 2, column 2"),
+        (b"x [nm], V [eV]\n0, 1\n2, 1\n1, 1\n", "missing.csv, line 4, column 1"),
+        (b"x [nm], V [eV]\n0, 1\n0, 2\n0, 3\n1, 1\n", "missing.csv, line 4, column 1"),
+        (b"x [nm], V [eV], m [m_e]\n0, 1, 0\n1, 1, 1\n", "missing.csv, line 2, column 3"),
+        (b"thickness [nm], V [eV]\n-1, 0\n", "missing.csv, line 2, column 1"),
+        (b"x [nm], V [eV], sigma_V [eV]\n0, 1, 1\n1, 1, -1\n", "missing.csv, line 3, column 3"),
+        (b"x [nm], V [eV]\n0,0, 0,3\n5,0, 0,1\n", "missing.csv, line 2, column 3"),
+    ],
+    ids=[
+        "missing file", "directory", "empty", "header only", "one row", "binary",
+        "wrong encoding", "missing unit", "unknown unit", "unit of the wrong kind",
+        "duplicated column", "unknown column", "ragged row", "text in a number", "nan", "inf",
+        "x not ascending", "three rows at one x", "zero mass", "negative thickness",
+        "negative sigma", "decimal commas between commas",
+    ],
+)  # fmt: skip
+@pytest.mark.parametrize("command", ["levels", "draw"])
+def test_bad_tables_are_refused(run, make, first, command):
+    """One message with the place, status 2, nothing written; the texts are in test_tables.py."""
+    if make == "folder":
+        os.mkdir("missing.csv")
+    elif make is not None:
+        Path("missing.csv").write_bytes(make)
+    message = refused(run, command, "missing.csv", "--json", "levels.json")
+    assert message.startswith(first)
+
+
+def test_windows_files_and_decimal_commas_are_read(run):
+    """A byte order mark, CRLF, and decimal commas between semicolons: common, and unambiguous."""
+    expected = run("levels", "well.csv", "--json", "-")[1]
+    windows = b"\xef\xbb\xbf" + WELL.replace("\n", "\r\n").encode()
+    commas = WELL.replace(",", ";").replace(".", ",").encode()
+    for data in (windows, commas):
+        Path("well.csv").write_bytes(data)
+        status, out, _ = run("levels", "well.csv", "--json", "-")
+        assert status == 0
+        assert json.loads(out)["levels"] == json.loads(expected)["levels"]
+
+
+@pytest.mark.parametrize(
+    ("argv", "message"),
+    [
+        (
+            ["levels", "well.csv", "--count", "4"],
+            "well.csv: --count 4 asks for more levels than exist: 3 bound levels\n"
+            "  Write --count 3, or leave --count out for all there are.",
+        ),
+        (
+            ["levels", "well.csv", "--window", "0.3", "0.1"],
+            "window must ascend: its first energy lies below its second; found 0.3, 0.1",
+        ),
+        (
+            ["levels", "well.csv", "--count", "2", "--window", "0", "1"],
+            "give count or window, not both: a window returns all levels in it",
+        ),
+        (["levels", "well.csv", "--count", "0"], "count must be a whole number from 1; found 0"),
+        (
+            ["levels", "well.csv", "--count", "two"],
+            "argument --count: expected a whole number, found 'two'\n"
+            "  eigen1d levels --help shows what can be written.",
+        ),
+        (
+            ["levels", "well.csv", "--window", "0", "x"],
+            "argument --window: expected a number, found 'x'\n"
+            "  eigen1d levels --help shows what can be written.",
+        ),
+        (
+            ["levels", "well.csv", "--method", "guessing"],
+            "unknown method 'guessing'; write one of: shooting, finite-difference",
+        ),
+        (
+            ["levels", "well.csv", "--interpolation", "cubic"],
+            "unknown interpolation 'cubic'; write one of: linear, step, smooth, monotone",
+        ),
+        (
+            ["levels", "well.csv", "--left", "shut"],
+            "unknown left 'shut'; write one of: open, wall",
+        ),
+        (
+            ["levels", "well.csv", "--json", "nowhere/levels.json"],
+            "nowhere/levels.json: there is no folder nowhere\n"
+            "  Make the folder first, or name one that exists.",
+        ),
+        (
+            ["levels", "well.csv", "--csv", "./well.csv"],
+            "./well.csv: would overwrite the input well.csv\n  Name another file for the output.",
+        ),
+        (
+            ["levels", "well.csv", "--csv", "a.csv", "--states", "./a.csv"],
+            "--csv and --states both name ./a.csv; each needs a file of its own",
+        ),
+        (
+            ["levels", "well.csv", "--csv", "-"],
+            "--csv -: only --json can go to stdout; name a file",
+        ),
+        (
+            ["draw", "well.csv", "-o", "well.gif"],
+            "well.gif: the suffix .gif says no format that pictures are written in\n"
+            "  End the name in .png, .pdf or .svg.",
+        ),
+        (
+            ["draw", "well.csv", "-o", "well"],
+            "well: no suffix says no format that pictures are written in\n"
+            "  End the name in .png, .pdf or .svg.",
+        ),
+        (
+            ["draw", "well.csv", "-o", "a.png", "--json", "nowhere/a.json"],
+            "nowhere/a.json: there is no folder nowhere\n"
+            "  Make the folder first, or name one that exists.",
+        ),
+    ],
+    ids=lambda value: " ".join(value) if isinstance(value, list) else "",
+)
+def test_bad_calls_are_refused(run, argv, message):
+    """What is wrong, what was found, what to write; and no output is half there."""
+    assert refused(run, *argv) == message
+
+
+@pytest.mark.parametrize("argv", [[], ["solve", "well.csv"], ["levels"], ["levels", "--wat", "x"]])
+def test_calls_that_make_no_sense_name_the_help(run, argv):
+    """argparse chooses the words; the shape and the status are ours."""
+    assert refused(run, *argv).endswith("--help shows what can be written.")
+
+
+def test_count_where_nothing_is_bound(run):
+    """More levels asked for than exist, also if none exists."""
+    Path("barrier.csv").write_text("thickness [nm], V [eV]\n5, 0.1\n5, 0.4\n5, 0.2\n")
+    assert refused(run, "levels", "barrier.csv", "--count", "1") == (
+        "barrier.csv: --count 1 asks for more levels than exist: no bound levels\n"
+        "  Leave --count out for all there are."
+    )
+
+
+def test_write_protected_output_is_refused_before_anything_is_computed(run, monkeypatch):
+    """A run of an hour must not end with the news that its result has no place."""
+    os.mkdir("locked")
+    access = os.access
+    # A superuser may write anywhere, so the answer of a locked folder is given by hand.
+    monkeypatch.setattr(os, "access", lambda p, mode: "locked" not in str(p) and access(p, mode))
+    message = refused(run, "levels", "well.csv", "--csv", "a.csv", "--json", "locked/b.json")
+    assert message == (
+        "locked/b.json: cannot be written: no permission to write there\n"
+        "  Name a file in a folder of yours."
+    )
+
+
+def test_output_over_the_input_through_a_link_is_refused(run):
+    """Another name of the input is still the input."""
+    os.symlink("well.csv", "link.csv")
+    assert "would overwrite the input" in refused(run, "levels", "well.csv", "--csv", "link.csv")
+
+
+# Checks and faults -------------------------------------------------------------------------------
+
+
+def test_failed_check_is_status_3_and_writes_nothing(run, monkeypatch):
+    """Scripts must be able to tell a doubtful number from a wrong call."""
+    import eigen1d
+    from eigen1d import CheckError
+
+    def disagree(*_, **__):
+        raise CheckError("level n = 0: 1 eV, 2 eV")
+
+    monkeypatch.setattr(eigen1d, "solve", disagree)
+    assert run("levels", "well.csv", "--json", "levels.json") == (
+        3, "", "eigen1d: check failed: level n = 0: 1 eV, 2 eV\n",
+    )  # fmt: skip
+    assert os.listdir() == ["well.csv"]
+
+
+def test_fault_of_the_program_keeps_its_traceback(run, monkeypatch):
+    """Whoever mends it needs the traceback; the user must know that the table is not at fault."""
+    import eigen1d
+
+    def broken(*_, **__):
+        raise ZeroDivisionError("float division by zero")
+
+    monkeypatch.setattr(eigen1d, "solve", broken)
+    status, out, err = run("levels", "well.csv", "--json", "levels.json")
+    assert (status, out) == (1, "")
+    assert "Traceback" in err and "ZeroDivisionError" in err
+    assert "eigen1d: this is a fault of the program, not of your input." in err
+    assert os.listdir() == ["well.csv"]
+
+
+def test_help_and_version(run):
+    """Every option that the reader knows is in the help, with the words that it takes."""
+    status, out, _ = run("--version")
+    assert (status, out) == (0, "eigen1d 0.1.0\n")
+    status, out, _ = run("levels", "--help")
+    from eigen1d._interpolation import INTERPOLATIONS
+    from eigen1d.solve import METHODS
+
+    assert status == 0
+    for word in (*INTERPOLATIONS, *METHODS):
+        assert word in out
+    assert run("draw", "--help")[0] == 0
+
+
+def test_module_is_the_command():
+    """`python -m eigen1d` and the console script are one."""
+    done = subprocess.run(
+        [sys.executable, "-m", "eigen1d", "levels", "missing.csv"],
+        env=os.environ | {"PYTHONPATH": str(POTENTIALS.parent)},
+        capture_output=True, text=True,
+    )  # fmt: skip
+    assert done.returncode == 2 and done.stderr.startswith("eigen1d: error: missing.csv: ")
+
+
+def test_copy_of_a_shipped_table_gives_the_same_levels(run):
+    """What is printed depends on the table's content, not on where it lies."""
+    shutil.copy(POTENTIALS / "graded_well.csv", "copy.csv")
+    one = run("levels", POTENTIALS / "graded_well.csv")
+    assert one[0] == 0 and one == run("levels", "copy.csv")

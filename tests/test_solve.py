@@ -1,0 +1,223 @@
+"""The front door: public names, choice of method, and what the second opinion may say."""
+
+import importlib
+import subprocess
+import sys
+from dataclasses import replace
+
+import numpy as np
+import pytest
+
+import eigen1d
+from eigen1d import CheckError, InputError, Profile, Units, solve
+from eigen1d.levels import Budget
+
+HEAVY = ("numba", "scipy", "matplotlib")
+DOOR = importlib.import_module("eigen1d.solve")
+
+
+@pytest.fixture(scope="module")
+def well():
+    """A 10 nm well of 0.3 eV: three bound levels."""
+    return Profile.from_rows([0, 5, 5, 15, 15, 20], [0.3, 0.3, 0, 0, 0.3, 0.3], mass=0.067)
+
+
+class Second:
+    """A second opinion with a known fault: energies off by `shift`, the levels `lost` unseen."""
+
+    def __init__(self, shift=0.0, error=1e-9, lost=()):
+        self.shift, self.error, self.lost = shift, error, lost
+
+    def find(self, profile, request):
+        found = importlib.import_module("eigen1d.shooting").find(profile, request)
+        seen = ~np.isin(found.n, self.lost)
+        return replace(
+            found,
+            n=found.n[seen],
+            energy=found.energy[seen] + self.shift,
+            bracket=found.bracket[seen],
+            method="finite-difference",
+            budget=Budget(numeric=np.full(seen.sum(), self.error)),
+        )
+
+    def estimates(self, profile, first, last):
+        energy = solve(profile).energy[first:last] + self.shift
+        return energy, np.full(last - first, self.error)
+
+
+@pytest.fixture
+def second(monkeypatch):
+    """Put a faulty solver in the place of the finite differences."""
+
+    def install(**fault):
+        module = DOOR._module
+        instead = {"finite-difference": Second(**fault)}
+        monkeypatch.setattr(DOOR, "_module", lambda name: instead.get(name) or module(name))
+
+    return install
+
+
+def test_public_names_are_these():
+    """Other people's scripts import them; a name leaves or joins only on purpose."""
+    assert sorted(eigen1d.__all__) == [
+        "CheckError", "InputError", "Levels", "Profile", "TableError", "Units", "read_profile",
+        "solve",
+    ]  # fmt: skip
+    for name in eigen1d.__all__:
+        assert getattr(eigen1d, name).__name__ == name
+    assert set(eigen1d.__all__) < set(dir(eigen1d))
+    with pytest.raises(AttributeError, match="no attribute 'solv'"):
+        eigen1d.solv  # noqa: B018
+
+
+@pytest.mark.parametrize(
+    "imports",
+    ["import eigen1d.solve", "import eigen1d.cli", "from eigen1d.solve import solve"],
+)
+def test_solve_is_the_function_whoever_imports_the_module_first(imports):
+    """The module of the same name must not take the function's place in the package."""
+    code = f"{imports}\nimport eigen1d\nassert eigen1d.solve.__name__ == 'solve', eigen1d.solve"
+    subprocess.run([sys.executable, "-c", code], check=True)
+
+
+@pytest.mark.parametrize(
+    "code",
+    ["import eigen1d", "from eigen1d.cli import main; main(['--help'])"],
+)
+def test_a_light_start_loads_nothing_heavy(code):
+    """Help must answer at once; numba alone takes longer than a person waits gladly."""
+    code += f"\nimport sys; print([m for m in {HEAVY + ('numpy',)} if m in sys.modules])"
+    run = subprocess.run([sys.executable, "-c", code], check=True, capture_output=True, text=True)
+    assert run.stdout.splitlines()[-1] == "[]"
+
+
+def test_versions_agree():
+    """The package and its metadata must name one version."""
+    import pathlib
+    import tomllib
+
+    project = pathlib.Path(__file__).parent.parent / "pyproject.toml"
+    assert tomllib.loads(project.read_text())["project"]["version"] == eigen1d.__version__
+
+
+@pytest.mark.parametrize(
+    ("keywords", "message"),
+    [
+        (
+            {"method": "guessing"},
+            "unknown method 'guessing'; write one of: shooting, finite-difference",
+        ),
+        (
+            {"count": 2, "window": (0, 1)},
+            "give count or window, not both: a window returns all levels in it",
+        ),
+        ({"count": 0}, "count must be a whole number from 1; found 0"),
+        ({"count": 2.0}, "count must be a whole number from 1; found 2.0"),
+        (
+            {"window": (1, 0)},
+            "window must ascend: its first energy lies below its second; found 1, 0",
+        ),
+    ],
+)
+def test_wrong_calls_say_what_to_write(well, keywords, message):
+    """From Python the text is the one that the command line prints."""
+    with pytest.raises(InputError) as caught:
+        solve(well, **keywords)
+    assert str(caught.value) == message
+
+
+def test_default_is_every_bound_level(well):
+    """A 10 nm well of 0.3 eV and mass 0.067: z0 = 3.64, so ceil(2 z0 / pi) = 3 levels.
+
+    Common practice, no source.
+    """
+    levels = solve(well)
+    assert list(levels.n) == [0, 1, 2] and levels.complete
+    assert levels.budget.method is None
+    assert len(solve(well, count=2)) == 2
+    assert len(solve(well, count=9)) == 3
+    assert list(solve(well, window=(0.1, 0.3)).n) == [1, 2]
+
+
+def test_nothing_bound_is_an_answer():
+    """A barrier binds nothing; scripts that loop over profiles must not stop there."""
+    barrier = Profile.from_layers([5.0, 5.0, 5.0], [0.0, 0.3, 0.0])
+    levels = solve(barrier)
+    assert len(levels) == 0 and levels.complete
+
+
+@pytest.mark.parametrize("method", ["shooting", "finite-difference"])
+def test_cross_check_fills_the_method_term(well, method):
+    """The difference of two independent methods is a term of its own, and never above the error."""
+    levels = solve(well, method=method, cross_check=True)
+    assert levels.method == method
+    assert levels.budget.method.shape == (3,)
+    assert (levels.budget.method < 1e-6).all() and (levels.budget.method > 0).any()
+    other = solve(well, method=({"shooting", "finite-difference"} - {method}).pop())
+    assert np.array_equal(levels.budget.method, abs(levels.energy - other.energy))
+
+
+def test_agreement_within_the_error_passes(well, second):
+    """A difference that the second method announces is no contradiction."""
+    second(shift=0.9e-9, error=1e-9)
+    levels = solve(well, cross_check=True)
+    assert levels.budget.method == pytest.approx([0.9e-9] * 3, rel=1e-6)
+    assert (levels.budget.total >= levels.budget.method).all()
+
+
+def test_disagreement_shows_both_numbers(well, second):
+    """A number that two methods do not share must not be used, and the user must see why."""
+    second(shift=2e-9, error=1e-9)
+    with pytest.raises(CheckError) as caught:
+        solve(well, cross_check=True)
+    energy = solve(well).energy[0]
+    assert str(caught.value).splitlines()[:2] == [
+        f"level n = 0: shooting finds {energy:.16g} eV, finite-difference {energy + 2e-9:.16g} eV",
+        "  They are 2e-09 eV apart; bracket and error estimate together allow 1e-09 eV.",
+    ]
+    assert "use neither" in str(caught.value)
+
+
+def test_not_a_number_is_a_disagreement(well, second):
+    """NaN compares false with everything; that must not read as agreement."""
+    second(shift=np.nan)
+    with pytest.raises(CheckError, match="finite-difference nan eV"):
+        solve(well, cross_check=True)
+
+
+def test_a_level_that_only_one_method_finds_is_a_disagreement(well, second):
+    """A missed level is the worst fault there is, whichever method misses it."""
+    second(lost=[1])
+    with pytest.raises(CheckError, match="level n = 1: shooting finds .* eV, .* no such level"):
+        solve(well, cross_check=True)
+    with pytest.raises(CheckError, match="level n = 1: shooting finds .* eV, .* no such level"):
+        solve(well, method="finite-difference", cross_check=True)
+
+
+def test_a_level_nearer_to_the_continuum_than_the_error_may_be_unseen(well, second):
+    """Finite differences cannot tell on which side of the edge such a level lies."""
+    bound_by = 0.3 - solve(well).energy[2]
+    second(lost=[2], error=1.01 * bound_by)
+    assert list(solve(well, cross_check=True).n) == [0, 1, 2]
+    second(lost=[2], error=0.99 * bound_by)
+    with pytest.raises(CheckError, match="level n = 2"):
+        solve(well, cross_check=True)
+
+
+def test_a_level_at_an_end_of_the_window_may_be_unseen(well, second):
+    """What holds for the continuum's edge holds for an edge that the user drew."""
+    energy = solve(well).energy
+    second(lost=[1], error=1e-6)
+    window = (energy[1] - 1e-7, 0.3)
+    assert list(solve(well, window=window, cross_check=True).n) == [1, 2]
+    with pytest.raises(CheckError, match="level n = 1"):
+        solve(well, window=(energy[1] - 1e-5, 0.3), cross_check=True)
+
+
+def test_two_walls_give_the_lowest_ten():
+    """Levels never end there; E_n = pi^2 (n+1)^2 / (2 L^2) for L = 1 (common practice)."""
+    box = Profile.from_layers(
+        [1.0], [0.0], left="wall", right="wall", units=Units("bohr", "hartree")
+    )
+    expected = np.pi**2 / 2 * np.arange(1, 11) ** 2
+    assert solve(box).energy == pytest.approx(expected, rel=1e-14)
