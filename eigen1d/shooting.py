@@ -65,7 +65,7 @@ def find(profile, request):
         bracket=bracket,
         complete=complete,
         method="shooting",
-        states=States(search, energy),
+        states=States(search, energy.copy()),
         budget=Budget(numeric=half_width),
         notes=notes,
     )
