@@ -15,9 +15,10 @@ import re
 import sys
 import traceback
 
-from . import __version__, _files
+from . import _files
 from .errors import CheckError, InputError
 
+VERSION = sys.modules[__package__].__version__
 DESCRIPTION = """\
 Every bound level of a one-dimensional potential, none missed, each in a two-sided bracket."""
 STATUSES = """\
@@ -84,7 +85,7 @@ class _Parser(argparse.ArgumentParser):
 
 def _parser():
     parser = _Parser(prog="eigen1d", description=DESCRIPTION, epilog=STATUSES)
-    parser.add_argument("--version", action="version", version=f"eigen1d {__version__}")
+    parser.add_argument("--version", action="version", version=f"eigen1d {VERSION}")
     commands = parser.add_subparsers(metavar="COMMAND", required=True)
     levels = commands.add_parser(
         "levels", help="print every bound level of a table", epilog=STATUSES,
@@ -156,7 +157,8 @@ def _levels(args):
 
 def _draw(args):
     if args.output is None:
-        args.output = os.path.splitext(os.path.basename(args.file))[0] + ".png"
+        name = os.path.basename(os.path.normpath(args.file))
+        args.output = os.path.splitext(name)[0] + ".png"
     from . import draw
 
     draw.check_suffix(args.output)

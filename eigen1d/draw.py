@@ -5,6 +5,7 @@ matplotlib is imported when a picture is drawn: `positions` serves tables of wav
 
 import io
 import os
+import textwrap
 
 import numpy as np
 
@@ -64,7 +65,7 @@ def draw(levels, *, density=False):
     axes.set_ylabel(f"energy [{profile.units.energy.replace('^-1', '$^{-1}$')}]")
     name = profile.title or os.path.basename(profile.source) or "potential"
     what = "\N{GREEK SMALL LETTER PSI}" + "\N{SUPERSCRIPT TWO}" * density
-    axes.set_title(name, loc="left", fontsize=11, parse_math=False, wrap=True)
+    axes.set_title(textwrap.fill(name, 84), loc="left", fontsize=11, parse_math=False)
     axes.text(
         1.0, -0.075, f"{what} on each level, scaled to fit", transform=axes.transAxes, ha="right",
         va="top", fontsize=8, color=GREY,
