@@ -185,6 +185,40 @@ def padded(fields):
     return [np.pad(f, ((0, 0), (0, width - f.shape[1]))) for f in fields]
 
 
+def scaled(coefficients, factor):
+    """Return the cells times a number; one number for all cells stays one number."""
+    if coefficients.strides[0] == 0:
+        return np.broadcast_to(coefficients[:1] * factor, coefficients.shape)
+    return coefficients * factor
+
+
+def product(a, b):
+    """Return the coefficients of the product of two polynomials, cell by cell."""
+    out = np.zeros((a.shape[0], a.shape[1] + b.shape[1] - 1))
+    for j in range(b.shape[1]):
+        out[:, j : j + a.shape[1]] += a * b[:, j : j + 1]
+    return out
+
+
+def graded(start, end):
+    """Return cells that run straight from `start` to `end`, shape (cells,); constant if equal."""
+    if np.array_equal(start, end):
+        return np.array(start)[:, None]
+    return np.column_stack([start, end - start])
+
+
+def from_ppoly(function, x):
+    """Return the coefficients of a PPoly on cells with ends `x`, which refine its own."""
+    piece = np.clip(
+        np.searchsorted(function.x, x[:-1], side="right") - 1, 0, function.c.shape[1] - 1
+    )
+    power = np.arange(function.c.shape[0])[:, None]
+    width = np.diff(function.x)[piece]
+    own = np.ascontiguousarray((function.c[::-1, piece] * width**power).T, dtype=float)
+    offset = (x[:-1] - function.x[piece]) / width
+    return reexpanded(own, offset, np.diff(x) / width)
+
+
 def from_callable(V, mass, breaks, tolerance):
     """Cut functions into common polynomial cells, by Chebyshev interpolation and halving.
 

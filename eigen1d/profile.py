@@ -10,78 +10,12 @@ from functools import cached_property
 import numpy as np
 
 from . import _cells, _interpolation
+from ._checks import check_mass, check_rows, choice, finite, frozen, numbers, per_row
+from ._parts import Edge, Natural, Rows, edges
 from .errors import InputError
 from .units import Units
 
-EDGES = ("open", "wall")
 NM_EV = Units("nm", "eV")
-
-
-@dataclass(frozen=True)
-class Edge:
-    """What lies beyond one end of the cells.
-
-    Attributes
-    ----------
-    kind : {"open", "wall"}
-        "open": V, mass and alpha keep their end value for ever. "wall": psi = 0 at the end.
-    V, mass, alpha : float
-        End values; of no effect at a wall.
-    """
-
-    kind: str
-    V: float
-    mass: float
-    alpha: float = 0.0
-
-
-@dataclass(frozen=True, eq=False)
-class Rows:
-    """The table that a profile came from: what `slope_V` and the noise refer to.
-
-    Attributes
-    ----------
-    x, V : ndarray, shape (rows,)
-    interpolation : str
-    sigma_V : ndarray, shape (rows,), or None
-        Standard deviation of each V.
-    """
-
-    x: np.ndarray
-    V: np.ndarray
-    interpolation: str
-    sigma_V: np.ndarray | None = None
-
-    def stretches(self):
-        """Slices of rows between jumps: x strictly ascends in each; lone rows are left out."""
-        cuts = np.flatnonzero(np.diff(self.x) == 0) + 1
-        bounds = np.concatenate([[0], cuts, [self.x.size]])
-        return [slice(a, b) for a, b in zip(bounds[:-1], bounds[1:], strict=True) if b - a > 1]
-
-
-@dataclass(frozen=True, eq=False)
-class Natural:
-    """Cells in units with hbar = 1: the user's length and energy, masses scaled to match.
-
-    The mass in a cell at energy E is the polynomial `mass` + E * `mass_per_energy`, which is how a
-    nonparabolicity alpha enters: m (1 + alpha (E - V)).
-
-    Attributes
-    ----------
-    width : ndarray, shape (cells,)
-    V, mass : ndarray, shape (cells, degree + 1)
-        Power coefficients in t, 0 to 1 across each cell.
-    mass_per_energy : ndarray, shape (cells, degree + 1), no columns where alpha is zero
-    left, right : Edge
-        With masses in the same units.
-    """
-
-    width: np.ndarray
-    V: np.ndarray
-    mass: np.ndarray
-    mass_per_energy: np.ndarray
-    left: Edge
-    right: Edge
 
 
 @dataclass(frozen=True, eq=False)
@@ -179,37 +113,29 @@ class Profile:
         >>> well.V([1.0, 5.0])
         array([0.3, 0. ])
         """
-        x, V = _numbers("x", x), _numbers("V", V)
+        x, V = numbers("x", x), numbers("V", V)
         if x.size < 2 or x.size != V.size:
             raise InputError(
                 f"x and V need two or more rows, equally many; found {x.size}, {V.size}"
             )
-        _choice("interpolation", interpolation, _interpolation.INTERPOLATIONS)
-        _check_rows(x)
-        mass = _per_row("mass", mass, x.size)
-        alpha = None if alpha is None else _per_row("alpha", alpha, x.size)
-        _check_mass(mass, alpha)
+        choice("interpolation", interpolation, _interpolation.INTERPOLATIONS)
+        check_rows(x)
+        mass = per_row("mass", mass, x.size)
+        alpha = None if alpha is None else per_row("alpha", alpha, x.size)
+        check_mass(mass, alpha)
         if sigma_V is not None:
-            sigma_V = _per_row("sigma_V", sigma_V, x.size)
+            sigma_V = per_row("sigma_V", sigma_V, x.size)
             if (sigma_V < 0).any():
                 raise InputError(f"sigma_V must not be negative; row {np.argmin(sigma_V)} is")
         rows = Rows(x, V, interpolation, sigma_V)
-        kept = np.flatnonzero(np.diff(x) > 0)
         positive = "monotone" if interpolation == "smooth" else interpolation
-        given = [(V, interpolation), (mass, positive)] + (
-            [(alpha, positive)] if alpha is not None else []
-        )
-        fields = []
-        for values, how in given:
-            if values.strides == (0,):  # one number for all rows
-                fields.append(np.broadcast_to(values[:1, None], (kept.size, 1)))
-                continue
-            parts = [_interpolation.cells(how, x[s], values[s]) for s in rows.stretches()]
-            fields.append(np.concatenate(_cells.padded(parts)) if len(parts) > 1 else parts[0])
+        fields = [rows.cells(V, interpolation), rows.cells(mass, positive)]
+        if alpha is not None:
+            fields.append(rows.cells(alpha, positive))
         return cls._joined(
-            np.append(x[kept], x[-1]),
+            np.append(x[:-1][np.diff(x) > 0], x[-1]),
             fields,
-            _edges(left, right, V, V, mass, mass, alpha, alpha),
+            edges(left, right, V, V, mass, mass, alpha),
             units=units,
             kind="rows",
             title=title,
@@ -263,32 +189,32 @@ class Profile:
         >>> box.x
         array([ 0., 10.])
         """
-        thickness, V = _numbers("thickness", thickness), _numbers("V", V)
+        thickness, V = numbers("thickness", thickness), numbers("V", V)
         count = thickness.size
         if count == 0 or V.size != count:
             raise InputError(f"thickness and V must be equally long; found {count} and {V.size}")
         if (thickness <= 0).any():
             bad = int(np.argmin(thickness))
             raise InputError(f"thickness must be positive; layer {bad} has {thickness[bad]:g}")
-        mass = _per_row("mass", mass, count)
-        V_end = V if V_end is None else _per_row("V_end", V_end, count)
-        mass_end = mass if mass_end is None else _per_row("mass_end", mass_end, count)
-        alpha = None if alpha is None else _per_row("alpha", alpha, count)
-        _check_mass(mass, alpha)
-        _check_mass(mass_end, None)
-        x = np.concatenate([[0.0], np.cumsum(thickness)]) + _numbers("start", start)[0]
+        mass = per_row("mass", mass, count)
+        V_end = V if V_end is None else per_row("V_end", V_end, count)
+        mass_end = mass if mass_end is None else per_row("mass_end", mass_end, count)
+        alpha = None if alpha is None else per_row("alpha", alpha, count)
+        check_mass(mass, alpha)
+        check_mass(mass_end, None)
+        x = np.concatenate([[0.0], np.cumsum(thickness)]) + numbers("start", start)[0]
         if (np.diff(x) <= 0).any():
             bad = int(np.argmin(np.diff(x)))
             raise InputError(
                 f"layer {bad} is too thin for its position to be told apart from the next"
             )
-        fields = [_graded(V, V_end), _graded(mass, mass_end)]
+        fields = [_cells.graded(V, V_end), _cells.graded(mass, mass_end)]
         if alpha is not None:
             fields.append(alpha[:, None].copy())
         return cls._joined(
             x,
             fields,
-            _edges(left, right, V, V_end, mass, mass_end, alpha, alpha),
+            edges(left, right, V, V_end, mass, mass_end, alpha),
             units=units,
             kind="layers",
             title=title,
@@ -323,9 +249,9 @@ class Profile:
                 )
             inside = (mass.x > x[0]) & (mass.x < x[-1])
             x = np.union1d(x, mass.x[inside])
-        fields = [_from_ppoly(V, x)]
+        fields = [_cells.from_ppoly(V, x)]
         fields.append(
-            _from_ppoly(mass, x) if graded else _per_row("mass", mass, x.size - 1)[:, None]
+            _cells.from_ppoly(mass, x) if graded else per_row("mass", mass, x.size - 1)[:, None]
         )
         if not all(np.isfinite(f).all() for f in fields):
             raise InputError("V and mass must be finite")
@@ -385,19 +311,19 @@ class Profile:
         >>> bool(abs(trap.V(1.7) - 1.7**2) < 1e-14)
         True
         """
-        low, high = _numbers("span", span)
-        breaks = np.unique(_numbers("breaks", breaks)) if len(breaks) else np.zeros(0)
+        low, high = numbers("span", span)
+        breaks = np.unique(numbers("breaks", breaks)) if len(breaks) else np.zeros(0)
         if not low < high or (breaks.size and not (low < breaks[0] and breaks[-1] < high)):
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
         if not 1e-15 <= tolerance < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
         unit = units.electron_mass
-        own = mass if callable(mass) else (lambda x: np.full(x.shape, _per_row("mass", mass, 1)[0]))
-        weight = _finite("mass", own)
+        own = mass if callable(mass) else (lambda x: np.full(x.shape, per_row("mass", mass, 1)[0]))
+        weight = finite("mass", own)
         ends = np.concatenate([[low], breaks, [high]])
         try:
             x, fields = _cells.from_callable(
-                _finite("V", V), lambda x: unit * weight(x), ends, tolerance
+                finite("V", V), lambda x: unit * weight(x), ends, tolerance
             )
         except ValueError as fault:
             if isinstance(fault, InputError):
@@ -407,23 +333,23 @@ class Profile:
                 f"there, write breaks=[{fault}]"
             ) from None
         fields[1] = (
-            fields[1] / unit if callable(mass) else _per_row("mass", mass, x.size - 1)[:, None]
+            fields[1] / unit if callable(mass) else per_row("mass", mass, x.size - 1)[:, None]
         )
         return cls._from_fields(
             x, fields, left, right, units=units, kind="function", title=title, tolerance=tolerance
         )
 
     @classmethod
-    def _joined(cls, x, fields, edges, **keywords):
+    def _joined(cls, x, fields, ends, **keywords):
         if x.size > 2 and max(f.shape[1] for f in fields) <= 4:
             x, fields = _cells.merged(x, fields)
         return cls(
-            x=_frozen(x),
-            V_cells=_frozen(fields[0]),
-            mass_cells=_frozen(fields[1]),
-            alpha_cells=_frozen(fields[2]) if len(fields) > 2 else None,
-            left=edges[0],
-            right=edges[1],
+            x=frozen(x),
+            V_cells=frozen(fields[0]),
+            mass_cells=frozen(fields[1]),
+            alpha_cells=frozen(fields[2]) if len(fields) > 2 else None,
+            left=ends[0],
+            right=ends[1],
             **keywords,
         )
 
@@ -431,10 +357,9 @@ class Profile:
     def _from_fields(cls, x, fields, left, right, **keywords):
         if _cells.minimum(fields[1]) <= 0:
             raise InputError("mass must be positive everywhere")
-        start = [f[0, 0] for f in fields]
-        end = [f[-1].sum() for f in fields]
-        edges = _edges(left, right, start[:1], end[:1], start[1:], end[1:], None, None)
-        return cls._joined(x, fields, edges, **keywords)
+        start, end = [f[:1, 0] for f in fields], [f[-1:].sum(axis=1) for f in fields]
+        ends = edges(left, right, start[0], end[0], start[1], end[1])
+        return cls._joined(x, fields, ends, **keywords)
 
     # Asking it ----------------------------------------------------------------------------------
 
@@ -494,15 +419,11 @@ class Profile:
         Natural
         """
         unit = self.units.electron_mass
-        mass = self.mass_cells
-        if mass.strides[0] == 0:  # one number for all cells stays one number
-            mass = np.broadcast_to(mass[:1] * unit, mass.shape)
-        else:
-            mass = mass * unit
+        mass = _cells.scaled(self.mass_cells, unit)
         per_energy = np.empty((self.cells, 0))
         if self.alpha_cells is not None:
-            per_energy = _product(mass, self.alpha_cells)
-            mass, taken = _cells.padded([np.array(mass), _product(per_energy, self.V_cells)])
+            per_energy = _cells.product(mass, self.alpha_cells)
+            mass, taken = _cells.padded([np.array(mass), _cells.product(per_energy, self.V_cells)])
             mass = mass - taken
         return Natural(
             np.diff(self.x),
@@ -522,70 +443,52 @@ class Profile:
         """
         slope = np.column_stack([field * self.x[:-1], field * np.diff(self.x)])
         V, slope = _cells.padded([self.V_cells, slope])
-        rows = self.rows
-        if rows is not None:
-            # A straight line added to the rows is the same line added to the interpolant.
-            linear = rows.interpolation in ("linear", "smooth")
-            rows = replace(rows, V=_frozen(rows.V + field * rows.x)) if linear else None
         return replace(
             self,
-            V_cells=_frozen(V + slope),
+            V_cells=frozen(V + slope),
             left=replace(self.left, V=self.left.V + field * self.x[0]),
             right=replace(self.right, V=self.right.V + field * self.x[-1]),
-            rows=rows,
+            rows=self.rows and self.rows.tilted(field),
         )
 
     def stretched(self, factor):
         """Return the profile with every position multiplied by `factor`, which must be positive."""
         if not factor > 0:
             raise InputError(f"factor must be positive; found {factor}; use mirrored() to reflect")
-        rows = self.rows and replace(self.rows, x=_frozen(self.rows.x * factor))
-        return replace(self, x=_frozen(self.x * factor), rows=rows)
+        rows = self.rows and replace(self.rows, x=frozen(self.rows.x * factor))
+        return replace(self, x=frozen(self.x * factor), rows=rows)
 
     def scaled(self, factor):
         """Return the profile with V multiplied by `factor`."""
-        rows = self.rows
-        if rows is not None:
-            sigma = rows.sigma_V
-            sigma = None if sigma is None else _frozen(sigma * abs(factor))
-            rows = replace(rows, V=_frozen(rows.V * factor), sigma_V=sigma)
-        return self._with_V(self.V_cells * factor, lambda V: V * factor, rows)
+        return self._with_V(
+            self.V_cells * factor, lambda V: V * factor, self.rows and self.rows.scaled(factor)
+        )
 
     def shifted(self, energy):
         """Return the profile with `energy` added to V."""
         V = self.V_cells.copy()
         V[:, 0] += energy
-        rows = self.rows and replace(self.rows, V=_frozen(self.rows.V + energy))
+        rows = self.rows and replace(self.rows, V=frozen(self.rows.V + energy))
         return self._with_V(V, lambda V: V + energy, rows)
 
     def mirrored(self):
         """Return the mirror image: x replaced by -x, left and right exchanged."""
-        rows = self.rows
-        if rows is not None:
-            sigma = None if rows.sigma_V is None else _frozen(rows.sigma_V[::-1])
-            # The mirror image of "until the next row" is "since the row before": not a step table.
-            rows = (
-                None
-                if rows.interpolation == "step"
-                else replace(rows, x=_frozen(-rows.x[::-1]), V=_frozen(rows.V[::-1]), sigma_V=sigma)
-            )
+        alpha = self.alpha_cells
         return replace(
             self,
-            x=_frozen(-self.x[::-1]),
-            V_cells=_frozen(_cells.mirrored(self.V_cells)),
-            mass_cells=_frozen(_cells.mirrored(self.mass_cells)),
-            alpha_cells=None
-            if self.alpha_cells is None
-            else _frozen(_cells.mirrored(self.alpha_cells)),
+            x=frozen(-self.x[::-1]),
+            V_cells=frozen(_cells.mirrored(self.V_cells)),
+            mass_cells=frozen(_cells.mirrored(self.mass_cells)),
+            alpha_cells=None if alpha is None else frozen(_cells.mirrored(alpha)),
             left=self.right,
             right=self.left,
-            rows=rows,
+            rows=self.rows and self.rows.mirrored(),
         )
 
     def _with_V(self, cells, of_edge, rows):
         return replace(
             self,
-            V_cells=_frozen(cells),
+            V_cells=frozen(cells),
             left=replace(self.left, V=of_edge(self.left.V)),
             right=replace(self.right, V=of_edge(self.right.V)),
             rows=rows,
@@ -594,115 +497,3 @@ class Profile:
     def with_source(self, source, sha256):
         """Return the profile with the name and digest of the file that it was read from."""
         return replace(self, source=source, sha256=sha256)
-
-
-# Validators: each checks one thing and returns the cleaned value ---------------------------------
-
-
-def _numbers(name, values):
-    try:
-        values = np.array(values, dtype=float, ndmin=1)
-    except (TypeError, ValueError):
-        raise InputError(f"{name} must be numbers; found {values!r:.80}") from None
-    if values.ndim != 1:
-        raise InputError(f"{name} must be one row of numbers; found shape {values.shape}")
-    bad = np.flatnonzero(~np.isfinite(values))
-    if bad.size:
-        raise InputError(f"{name} must be finite; row {bad[0]} has {values[bad[0]]}")
-    return _frozen(values)
-
-
-def _per_row(name, values, count):
-    """One number for all rows (as a view with no memory of its own), or one a row."""
-    values = _numbers(name, values)
-    if values.size not in (1, count):
-        raise InputError(f"{name} must be one number or {count} of them; found {values.size}")
-    return np.broadcast_to(values, (count,)) if values.size == 1 else values
-
-
-def _choice(name, value, allowed):
-    if value not in allowed:
-        raise InputError(f"unknown {name} {value!r}; write one of: {', '.join(allowed)}")
-
-
-def _check_rows(x):
-    step = np.diff(x)
-    if (step < 0).any():
-        bad = int(np.argmax(step < 0)) + 1
-        raise InputError(f"x must ascend; row {bad} has {x[bad]:.12g} after {x[bad - 1]:.12g}")
-    triple = np.flatnonzero((step[1:] == 0) & (step[:-1] == 0))
-    if triple.size:
-        raise InputError(
-            f"three rows at x = {x[triple[0]]:.12g}; a jump is two rows at one x: the value on its "
-            "left, then the value on its right"
-        )
-    if not (step > 0).any():
-        raise InputError("x must cover a length; all rows are at one place")
-
-
-def _check_mass(mass, alpha):
-    if (mass <= 0).any():
-        bad = int(np.argmin(mass))
-        raise InputError(f"mass must be positive; row {bad} has {mass[bad]:g}")
-    if alpha is not None and (alpha < 0).any():
-        bad = int(np.argmin(alpha))
-        raise InputError(
-            f"alpha must not be negative; row {bad} has {alpha[bad]:g}. Levels are counted by "
-            "nodes, which needs a mass that does not fall with energy"
-        )
-
-
-def _edges(left, right, V, V_end, mass, mass_end, alpha, alpha_end):
-    _choice("left edge", left, EDGES)
-    _choice("right edge", right, EDGES)
-    first = 0.0 if alpha is None else float(alpha[0])
-    last = 0.0 if alpha is None else float(alpha_end[-1])
-    return (
-        Edge(left, float(V[0]), float(mass[0]), first),
-        Edge(right, float(V_end[-1]), float(mass_end[-1]), last),
-    )
-
-
-def _graded(start, end):
-    if np.array_equal(start, end):
-        return np.array(start)[:, None]
-    return np.column_stack([start, end - start])
-
-
-def _from_ppoly(function, x):
-    """Coefficients of a PPoly on cells x that refine its own."""
-    piece = np.clip(
-        np.searchsorted(function.x, x[:-1], side="right") - 1, 0, function.c.shape[1] - 1
-    )
-    power = np.arange(function.c.shape[0])[:, None]
-    width = np.diff(function.x)[piece]
-    own = np.ascontiguousarray((function.c[::-1, piece] * width**power).T, dtype=float)
-    offset = (x[:-1] - function.x[piece]) / width
-    return _cells.reexpanded(own, offset, np.diff(x) / width)
-
-
-def _product(a, b):
-    """Coefficients of the product of two polynomials, cell by cell."""
-    out = np.zeros((a.shape[0], a.shape[1] + b.shape[1] - 1))
-    for j in range(b.shape[1]):
-        out[:, j : j + a.shape[1]] += a * b[:, j : j + 1]
-    return out
-
-
-def _finite(name, function):
-    def checked(x):
-        values = np.asarray(function(x), dtype=float)
-        if not np.isfinite(values).all():
-            bad = x.flat[np.argmin(np.isfinite(np.broadcast_to(values, x.shape)))]
-            raise InputError(f"{name} must be finite on the span; it is not at x = {bad:.12g}")
-        return values
-
-    return checked
-
-
-def _frozen(array):
-    array = np.asarray(array)
-    if array.flags.writeable:
-        array = array.view()
-        array.flags.writeable = False
-    return array

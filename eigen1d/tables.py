@@ -15,6 +15,7 @@ import re
 import numpy as np
 
 from ._interpolation import INTERPOLATIONS
+from ._parts import EDGES
 from ._table_faults import NUMBER, number_remedy, quoted
 from ._table_header import (
     DELIMITERS,
@@ -28,7 +29,7 @@ from ._table_header import (
 )
 from ._table_text import decoded, read_bytes
 from .errors import InputError
-from .profile import EDGES, Profile
+from .profile import Profile
 from .units import Units, energy_in_hartree
 
 # What `# key: value` lines may set, and the words they may set it to.

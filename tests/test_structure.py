@@ -11,8 +11,9 @@ PACKAGE = ROOT / "eigen1d"
 # A file imports only from floors below its own. A new file is placed here first.
 FLOORS = [
     {"errors", "_cells", "_interpolation", "_kernels"},
-    {"units", "_files", "_search", "_table_faults"},
-    {"profile", "_table_text", "_table_header"},
+    {"units", "_files", "_checks", "_search", "_table_faults"},
+    {"_parts", "_table_text", "_table_header"},
+    {"profile"},
     {"_quadrature", "tables", "square_well", "closed_forms"},
     {"levels"},
     {"shooting", "finite_difference"},

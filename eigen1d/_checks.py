@@ -1,0 +1,84 @@
+"""Validators: each checks one thing, raises `InputError`, returns the cleaned value if any."""
+
+import numpy as np
+
+from .errors import InputError
+
+
+def numbers(name, values):
+    """A row of finite numbers, read-only."""
+    try:
+        values = np.array(values, dtype=float, ndmin=1)
+    except (TypeError, ValueError):
+        raise InputError(f"{name} must be numbers; found {values!r:.80}") from None
+    if values.ndim != 1:
+        raise InputError(f"{name} must be one row of numbers; found shape {values.shape}")
+    bad = np.flatnonzero(~np.isfinite(values))
+    if bad.size:
+        raise InputError(f"{name} must be finite; row {bad[0]} has {values[bad[0]]}")
+    return frozen(values)
+
+
+def per_row(name, values, count):
+    """One number for all rows (as a view with no memory of its own), or one a row."""
+    values = numbers(name, values)
+    if values.size not in (1, count):
+        raise InputError(f"{name} must be one number or {count} of them; found {values.size}")
+    return np.broadcast_to(values, (count,)) if values.size == 1 else values
+
+
+def choice(name, value, allowed):
+    """A name that is in the list `allowed`."""
+    if value not in allowed:
+        raise InputError(f"unknown {name} {value!r}; write one of: {', '.join(allowed)}")
+
+
+def check_rows(x):
+    """Positions that never descend, at most two at one place, and that cover a length."""
+    step = np.diff(x)
+    if (step < 0).any():
+        bad = int(np.argmax(step < 0)) + 1
+        raise InputError(f"x must ascend; row {bad} has {x[bad]:.12g} after {x[bad - 1]:.12g}")
+    triple = np.flatnonzero((step[1:] == 0) & (step[:-1] == 0))
+    if triple.size:
+        raise InputError(
+            f"three rows at x = {x[triple[0]]:.12g}; a jump is two rows at one x: the value on its "
+            "left, then the value on its right"
+        )
+    if not (step > 0).any():
+        raise InputError("x must cover a length; all rows are at one place")
+
+
+def check_mass(mass, alpha):
+    """A mass that is positive, and that does not fall with energy."""
+    if (mass <= 0).any():
+        bad = int(np.argmin(mass))
+        raise InputError(f"mass must be positive; row {bad} has {mass[bad]:g}")
+    if alpha is not None and (alpha < 0).any():
+        bad = int(np.argmin(alpha))
+        raise InputError(
+            f"alpha must not be negative; row {bad} has {alpha[bad]:g}. Levels are counted by "
+            "nodes, which needs a mass that does not fall with energy"
+        )
+
+
+def finite(name, function):
+    """The function, asked to return finite values wherever it is called."""
+
+    def checked(x):
+        values = np.asarray(function(x), dtype=float)
+        if not np.isfinite(values).all():
+            bad = x.flat[np.argmin(np.isfinite(np.broadcast_to(values, x.shape)))]
+            raise InputError(f"{name} must be finite on the span; it is not at x = {bad:.12g}")
+        return values
+
+    return checked
+
+
+def frozen(array):
+    """The array, or a view of it, that nobody can write to."""
+    array = np.asarray(array)
+    if array.flags.writeable:
+        array = array.view()
+        array.flags.writeable = False
+    return array
