@@ -14,8 +14,19 @@ EPS = np.finfo(float).eps
 # (which grow as (6/rho)**j for a Bernstein ellipse rho) lose no digits: with rho > 15 or so, which
 # 1e-13 at degree 12 requires, they decay.
 DEGREE = 12
+# Chebyshev points of degree 2 * DEGREE: every second one interpolates, the others judge.
+_POINTS = 0.5 * (1.0 - np.cos(np.pi * np.arange(2 * DEGREE + 1) / (2 * DEGREE)))
+_TO_CHEBYSHEV = np.linalg.inv(chebyshev.chebvander(2 * _POINTS[::2] - 1, DEGREE))
+_JUDGE = chebyshev.chebvander(2 * _POINTS[1::2] - 1, DEGREE)
 _PHASE, _SLOPE = 4.0, 16.0  # a cell longer than this, with a top this much above its bottom, is cut
-_SPLITS = 60  # halvings of the span before a function is called too rough
+# A function is too rough if a cell fails that is shorter than _SHORTEST times its x or the span: a
+# kink or a jump is cut for ever. Below that its own rounding, of x alone, hides what it is.
+_SHORTEST = 2.0**-40
+_MOST_CELLS = 1 << 18  # open at once, 50 MB an array: a function with noise everywhere comes here
+
+
+class TooRough(ValueError):
+    """A function that no polynomial follows near a place, or that too many would have to follow."""
 
 
 def evaluated(coefficients, t):
@@ -219,19 +230,21 @@ def from_ppoly(function, x):
     return reexpanded(own, offset, np.diff(x) / width)
 
 
-def from_callable(V, mass, breaks, tolerance):
+def from_callable(V, mass, breaks, tolerance, unit=1.0):
     """Cut functions into common polynomial cells, by Chebyshev interpolation and halving.
 
     Parameters
     ----------
     V, mass : callable
-        Each maps an array to an array of the same shape; mass in units with hbar = 1. The tolerance
-        of V is relative to the cell's own height above the least V sampled, that of the mass to
-        its size.
+        Each maps an array to an array of the same shape, or to one number. The tolerance of V is
+        relative to the cell's own height above the least V sampled, that of the mass to its size.
     breaks : ndarray
-        Ends of the span and points where a function is not smooth, ascending.
+        Ends of the span and points where a function is not smooth, ascending. Those inside are
+        approached from both sides, and the functions never asked exactly there.
     tolerance : float
         Accepted interpolation error. Rounding of the functions themselves is allowed on top.
+    unit : float, optional
+        Factor that brings the mass to units with hbar = 1.
 
     Returns
     -------
@@ -240,8 +253,8 @@ def from_callable(V, mass, breaks, tolerance):
 
     Raises
     ------
-    ValueError
-        A function that no cell down to 2**-60 of the span can follow; carries the place.
+    TooRough
+        A function that no short cell, or no reasonable number of cells, can follow.
 
     Notes
     -----
@@ -253,43 +266,41 @@ def from_callable(V, mass, breaks, tolerance):
     ----------
     .. [1] L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM (2013), ch. 3, 8.
     """
-    # Chebyshev points of degree 2 * DEGREE: every second one interpolates, the others judge.
-    points = 0.5 * (1.0 - np.cos(np.pi * np.arange(2 * DEGREE + 1) / (2 * DEGREE)))
-    to_chebyshev = np.linalg.inv(chebyshev.chebvander(2 * points[::2] - 1, DEGREE))
-    judge = chebyshev.chebvander(2 * points[1::2] - 1, DEGREE)
     left, right = np.array(breaks[:-1], dtype=float), np.array(breaks[1:], dtype=float)
+    span = breaks[-1] - breaks[0]
     least = np.inf
     done = []
-    for _ in range(_SPLITS):
-        at = left[:, None] + points * (right - left)[:, None]
+    while left.size:
+        at = left[:, None] + _POINTS * (right - left)[:, None]
         at[:, -1] = right
-        samples = [_sampled(f, at) for f in (V, mass)]
+        for column, side in ((0, np.inf), (-1, -np.inf)):
+            inner = np.isin(at[:, column], breaks[1:-1])
+            at[inner, column] = np.nextafter(at[inner, column], side)
+        samples = [np.broadcast_to(f(at), at.shape) for f in (V, mass)]
         least = min(least, samples[0].min())
         top, bottom = samples[0].max(axis=1) - least, samples[0].min(axis=1) - least
-        phase = np.sqrt(2 * samples[1].max(axis=1) * top) * (right - left)
+        phase = np.sqrt(2 * unit * samples[1].max(axis=1) * top) * (right - left)
         good = (phase <= _PHASE) | (bottom * _SLOPE >= top)
         spectra = []
-        for index, values in enumerate(samples):
-            spectrum = values[:, ::2] @ to_chebyshev.T
-            size = np.abs(values).max(axis=1)
-            height = top if index == 0 else size
-            miss = np.abs(spectrum @ judge.T - values[:, 1::2]).max(axis=1)
-            good &= miss <= 0.25 * tolerance * height + 4 * EPS * size
-            # Trailing coefficients below rounding are noise; dropping them lowers the degree.
-            tail = np.maximum.accumulate(np.abs(spectrum[:, ::-1]), axis=1)[:, ::-1]
-            spectrum[tail <= 0.25 * EPS * size[:, None]] = 0.0
+        for values, height in zip(samples, (top, np.abs(samples[1]).max(axis=1)), strict=True):
+            spectrum, miss, rounding = _fitted(at, values)
+            good &= miss <= 0.25 * tolerance * height + rounding
             spectra.append(spectrum)
         done.append((left[good], [s[good] for s in spectra]))
         left, right = left[~good], right[~good]
-        if left.size == 0:
-            break
+        short = right - left < _SHORTEST * np.maximum(span, np.minimum(np.abs(left), np.abs(right)))
+        if short.any() or left.size > _MOST_CELLS:
+            place = left[np.argmax(short)]
+            place = f"{breaks[0] + span * round((place - breaks[0]) / span, 12):.12g}"
+            raise TooRough(
+                f"no polynomial follows the function near x = {place}; if it jumps or has a kink "
+                f"there, write breaks=[{place}]"
+                if short.any()
+                else f"the function asks for more than {_MOST_CELLS} cells, at x = {place} and "
+                "elsewhere; if its values are noisy, give a larger tolerance, or rows to from_rows"
+            )
         middle = 0.5 * (left + right)
-        if (middle <= left).any() or (middle >= right).any():
-            break
         left, right = np.concatenate([left, middle]), np.concatenate([middle, right])
-    if left.size:
-        span = breaks[-1] - breaks[0]
-        raise ValueError(f"{breaks[0] + span * round((left[0] - breaks[0]) / span, 12):.12g}")
     start = np.concatenate([d[0] for d in done])
     order = np.argsort(start)
     x = np.append(start[order], breaks[-1])
@@ -297,9 +308,18 @@ def from_callable(V, mass, breaks, tolerance):
     return x, [_power(spectrum) for spectrum in fields]
 
 
-def _sampled(f, at):
-    values = np.asarray(f(at), dtype=float)
-    return np.broadcast_to(values, at.shape) if values.shape != at.shape else values
+def _fitted(at, values):
+    """Chebyshev coefficients of each cell, their miss, and what rounding explains of it."""
+    spectrum = values[:, ::2] @ _TO_CHEBYSHEV.T
+    miss = np.abs(spectrum @ _JUDGE.T - values[:, 1::2]).max(axis=1)
+    size = np.abs(values).max(axis=1)
+    # x is rounded before the function sees it: |x| eps times the slope, for a function of x - a.
+    slope = np.ptp(values, axis=1) / (at[:, -1] - at[:, 0])
+    rounding = 4 * EPS * (size + slope * np.abs(at).max(axis=1))
+    # Trailing coefficients below rounding are noise; dropping them lowers the degree.
+    tail = np.maximum.accumulate(np.abs(spectrum[:, ::-1]), axis=1)[:, ::-1]
+    spectrum[tail <= 0.25 * EPS * size[:, None]] = 0.0
+    return spectrum, miss, rounding
 
 
 def _power(spectrum):

@@ -8,6 +8,8 @@ from .errors import InputError
 def numbers(name, values):
     """A row of finite numbers, read-only."""
     try:
+        if np.iscomplexobj(values):
+            raise TypeError("a cast to float would drop the imaginary part")
         values = np.array(values, dtype=float, ndmin=1)
     except (TypeError, ValueError):
         raise InputError(f"{name} must be numbers; found {values!r:.80}") from None
@@ -17,6 +19,14 @@ def numbers(name, values):
     if bad.size:
         raise InputError(f"{name} must be finite; row {bad[0]} has {values[bad[0]]}")
     return frozen(values)
+
+
+def number(name, value):
+    """One finite number."""
+    values = numbers(name, value)
+    if values.size != 1:
+        raise InputError(f"{name} must be one number; found {values.size}")
+    return float(values[0])
 
 
 def per_row(name, values, count):
@@ -62,14 +72,30 @@ def check_mass(mass, alpha):
         )
 
 
-def finite(name, function):
-    """The function, asked to return finite values wherever it is called."""
+def sampler(name, function, positive=False):
+    """The function, held to return finite (and positive) numbers, one for each x or one for all."""
+    if not callable(function):
+        raise InputError(f"{name} must be a function of x; found {function!r:.80}")
 
     def checked(x):
-        values = np.asarray(function(x), dtype=float)
-        if not np.isfinite(values).all():
-            bad = x.flat[np.argmin(np.isfinite(np.broadcast_to(values, x.shape)))]
-            raise InputError(f"{name} must be finite on the span; it is not at x = {bad:.12g}")
+        try:
+            with np.errstate(all="ignore"):  # what is not finite in the end has its own message
+                values = np.asarray(function(x))
+        except (TypeError, ValueError) as fault:
+            raise InputError(
+                f"{name} failed on an array of positions: {fault}; write it with numpy functions, "
+                "or wrap it in np.vectorize"
+            ) from fault
+        if values.dtype.kind not in "biuf" or values.shape not in ((), x.shape):
+            raise InputError(
+                f"{name} must return one number for each x; for {x.size} of them, shape {x.shape}, "
+                f"it returned {values.dtype} of shape {values.shape}"
+            )
+        usable = np.isfinite(values) & ((values > 0) | (not positive))
+        if not usable.all():
+            bad = x.flat[np.argmin(np.broadcast_to(usable, x.shape))]
+            wanted = "finite and positive" if positive else "finite"
+            raise InputError(f"{name} must be {wanted} on the span; it is not at x = {bad:.12g}")
         return values
 
     return checked

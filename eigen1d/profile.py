@@ -10,7 +10,7 @@ from functools import cached_property
 import numpy as np
 
 from . import _cells, _interpolation
-from ._checks import check_mass, check_rows, choice, finite, frozen, numbers, per_row
+from ._checks import check_mass, check_rows, choice, frozen, number, numbers, per_row, sampler
 from ._parts import Edge, Natural, Rows, edges
 from .errors import InputError
 from .units import Units
@@ -302,8 +302,8 @@ class Profile:
         Raises
         ------
         InputError
-            A span that is not ascending, a value that is not finite, or a function that jumps or
-            wiggles where `breaks` names no place.
+            A span that is not ascending, a value that is not finite, or a function that jumps,
+            bends or wiggles where `breaks` names no place.
 
         Examples
         --------
@@ -311,30 +311,25 @@ class Profile:
         >>> bool(abs(trap.V(1.7) - 1.7**2) < 1e-14)
         True
         """
-        low, high = numbers("span", span)
-        breaks = np.unique(numbers("breaks", breaks)) if len(breaks) else np.zeros(0)
+        span, breaks = numbers("span", span), np.unique(numbers("breaks", breaks))
+        if span.size != 2:
+            raise InputError(f"span must be two numbers (low, high); found {span.size}")
+        low, high = span
         if not low < high or (breaks.size and not (low < breaks[0] and breaks[-1] < high)):
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
-        if not 1e-15 <= tolerance < 1e-3:
+        if not 1e-15 <= number("tolerance", tolerance) < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
-        unit = units.electron_mass
-        own = mass if callable(mass) else (lambda x: np.full(x.shape, per_row("mass", mass, 1)[0]))
-        weight = finite("mass", own)
+        one = None if callable(mass) else number("mass", mass)
+        weight = sampler("mass", mass if one is None else lambda x: one, positive=True)
         ends = np.concatenate([[low], breaks, [high]])
         try:
             x, fields = _cells.from_callable(
-                finite("V", V), lambda x: unit * weight(x), ends, tolerance
+                sampler("V", V), weight, ends, tolerance, units.electron_mass
             )
-        except ValueError as fault:
-            if isinstance(fault, InputError):
-                raise
-            raise InputError(
-                f"no polynomial follows the function near x = {fault}; if it jumps or has a kink "
-                f"there, write breaks=[{fault}]"
-            ) from None
-        fields[1] = (
-            fields[1] / unit if callable(mass) else per_row("mass", mass, x.size - 1)[:, None]
-        )
+        except _cells.TooRough as fault:
+            raise InputError(str(fault)) from None
+        if one is not None:  # to the last digit, and without memory of its own
+            fields[1] = np.broadcast_to(one, (x.size - 1, 1))
         return cls._from_fields(
             x, fields, left, right, units=units, kind="function", title=title, tolerance=tolerance
         )
