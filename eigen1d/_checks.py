@@ -23,10 +23,15 @@ def numbers(name, values):
 
 def number(name, value):
     """One finite number."""
-    values = numbers(name, value)
-    if values.size != 1:
-        raise InputError(f"{name} must be one number; found {values.size}")
-    return float(values[0])
+    if np.ndim(value):
+        raise InputError(f"{name} must be one number; found {value!r:.80}")
+    try:
+        value = float(value)
+    except (TypeError, ValueError):
+        raise InputError(f"{name} must be a number; found {value!r:.80}") from None
+    if not np.isfinite(value):
+        raise InputError(f"{name} must be finite; found {value}")
+    return value
 
 
 def per_row(name, values, count):
@@ -57,6 +62,47 @@ def check_rows(x):
         )
     if not (step > 0).any():
         raise InputError("x must cover a length; all rows are at one place")
+
+
+def layer_ends(thickness, start):
+    """The ends of layers that are thick enough to be told apart, shape (layers + 1,)."""
+    if (thickness <= 0).any():
+        bad = int(np.argmin(thickness))
+        raise InputError(f"thickness must be positive; layer {bad} has {thickness[bad]:g}")
+    x = np.concatenate([[0.0], np.cumsum(thickness)]) + start
+    if (np.diff(x) <= 0).any():
+        bad = int(np.argmin(np.diff(x)))
+        raise InputError(f"layer {bad} is too thin for its position to be told apart from the next")
+    return x
+
+
+def check_ppoly(name, function):
+    """A PPoly of one real function, its breakpoints ascending."""
+    from scipy.interpolate import PPoly
+
+    if not isinstance(function, PPoly):
+        raise InputError(
+            f"{name} must be a scipy.interpolate.PPoly, such as a CubicSpline; found "
+            f"{type(function).__name__}"
+        )
+    if function.c.ndim != 2 or np.iscomplexobj(function.c):
+        raise InputError(
+            f"{name} must be one real function; its coefficients are {function.c.dtype} of shape "
+            f"{function.c.shape}"
+        )
+    if function.x[0] > function.x[-1]:
+        raise InputError(
+            f"breakpoints of {name} must ascend; found {function.x[0]:g} to {function.x[-1]:g}"
+        )
+
+
+def check_span(mass_x, x):
+    """Breakpoints of a mass that cover those of V."""
+    if mass_x[0] > x[0] or mass_x[-1] < x[-1]:
+        raise InputError(
+            f"mass covers {mass_x[0]:g} to {mass_x[-1]:g}, V covers {x[0]:g} to {x[-1]:g}; "
+            "give a mass for the whole span of V"
+        )
 
 
 def check_mass(mass, alpha):

@@ -9,8 +9,8 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _cells, _interpolation
-from ._checks import check_mass, check_rows, choice, frozen, number, numbers, per_row, sampler
+from . import _cells, _checks, _interpolation
+from ._checks import frozen
 from ._parts import Edge, Natural, Rows, edges
 from .errors import InputError
 from .units import Units
@@ -63,6 +63,11 @@ class Profile:
     row_count: int = 0
     tolerance: float = 0.0
 
+    def __post_init__(self):
+        _check_units(self.units)
+        if not (np.isfinite(self.V_cells).all() and (np.diff(self.x) > 0).all()):
+            raise InputError("positions or energies leave the range of double precision")
+
     # Making one ---------------------------------------------------------------------------------
 
     @classmethod
@@ -113,18 +118,18 @@ class Profile:
         >>> well.V([1.0, 5.0])
         array([0.3, 0. ])
         """
-        x, V = numbers("x", x), numbers("V", V)
+        x, V = _checks.numbers("x", x), _checks.numbers("V", V)
         if x.size < 2 or x.size != V.size:
             raise InputError(
                 f"x and V need two or more rows, equally many; found {x.size}, {V.size}"
             )
-        choice("interpolation", interpolation, _interpolation.INTERPOLATIONS)
-        check_rows(x)
-        mass = per_row("mass", mass, x.size)
-        alpha = None if alpha is None else per_row("alpha", alpha, x.size)
-        check_mass(mass, alpha)
+        _checks.choice("interpolation", interpolation, _interpolation.INTERPOLATIONS)
+        _checks.check_rows(x)
+        mass = _checks.per_row("mass", mass, x.size)
+        alpha = None if alpha is None else _checks.per_row("alpha", alpha, x.size)
+        _checks.check_mass(mass, alpha)
         if sigma_V is not None:
-            sigma_V = per_row("sigma_V", sigma_V, x.size)
+            sigma_V = _checks.per_row("sigma_V", sigma_V, x.size)
             if (sigma_V < 0).any():
                 raise InputError(f"sigma_V must not be negative; row {np.argmin(sigma_V)} is")
         rows = Rows(x, V, interpolation, sigma_V)
@@ -189,25 +194,17 @@ class Profile:
         >>> box.x
         array([ 0., 10.])
         """
-        thickness, V = numbers("thickness", thickness), numbers("V", V)
+        thickness, V = _checks.numbers("thickness", thickness), _checks.numbers("V", V)
         count = thickness.size
         if count == 0 or V.size != count:
             raise InputError(f"thickness and V must be equally long; found {count} and {V.size}")
-        if (thickness <= 0).any():
-            bad = int(np.argmin(thickness))
-            raise InputError(f"thickness must be positive; layer {bad} has {thickness[bad]:g}")
-        mass = per_row("mass", mass, count)
-        V_end = V if V_end is None else per_row("V_end", V_end, count)
-        mass_end = mass if mass_end is None else per_row("mass_end", mass_end, count)
-        alpha = None if alpha is None else per_row("alpha", alpha, count)
-        check_mass(mass, alpha)
-        check_mass(mass_end, None)
-        x = np.concatenate([[0.0], np.cumsum(thickness)]) + numbers("start", start)[0]
-        if (np.diff(x) <= 0).any():
-            bad = int(np.argmin(np.diff(x)))
-            raise InputError(
-                f"layer {bad} is too thin for its position to be told apart from the next"
-            )
+        x = _checks.layer_ends(thickness, _checks.number("start", start))
+        mass = _checks.per_row("mass", mass, count)
+        V_end = V if V_end is None else _checks.per_row("V_end", V_end, count)
+        mass_end = mass if mass_end is None else _checks.per_row("mass_end", mass_end, count)
+        alpha = None if alpha is None else _checks.per_row("alpha", alpha, count)
+        _checks.check_mass(mass, alpha)
+        _checks.check_mass(mass_end, None)
         fields = [_cells.graded(V, V_end), _cells.graded(mass, mass_end)]
         if alpha is not None:
             fields.append(alpha[:, None].copy())
@@ -237,27 +234,24 @@ class Profile:
         Raises
         ------
         InputError
-            A span that the mass does not cover, a mass that is not positive, values not finite.
+            Not a PPoly of one real function, a span that the mass does not cover, a mass that is
+            not positive, values not finite.
         """
-        graded = hasattr(mass, "x")
-        x = np.asarray(V.x, dtype=float)
-        if graded:
-            if mass.x[0] > x[0] or mass.x[-1] < x[-1]:
-                raise InputError(
-                    f"mass covers {mass.x[0]:g} to {mass.x[-1]:g}, V covers {x[0]:g} to {x[-1]:g}; "
-                    "give a mass for the whole span of V"
-                )
-            inside = (mass.x > x[0]) & (mass.x < x[-1])
-            x = np.union1d(x, mass.x[inside])
-        fields = [_cells.from_ppoly(V, x)]
-        fields.append(
-            _cells.from_ppoly(mass, x) if graded else per_row("mass", mass, x.size - 1)[:, None]
-        )
-        if not all(np.isfinite(f).all() for f in fields):
+        _checks.check_ppoly("V", V)
+        x = V.x
+        if hasattr(mass, "c"):
+            _checks.check_ppoly("mass", mass)
+            _checks.check_span(mass.x, x)
+            x = np.union1d(x, mass.x[(mass.x > x[0]) & (mass.x < x[-1])])
+            weight = _cells.from_ppoly(mass, x)
+        else:
+            weight = np.broadcast_to(_checks.number("mass", mass), (x.size - 1, 1))
+        V_cells = _cells.from_ppoly(V, x)
+        if not (np.isfinite(V_cells).all() and np.isfinite(weight).all()):
             raise InputError("V and mass must be finite")
         return cls._from_fields(
             x,
-            fields,
+            [V_cells, weight],
             left,
             right,
             units=units,
@@ -311,20 +305,21 @@ class Profile:
         >>> bool(abs(trap.V(1.7) - 1.7**2) < 1e-14)
         True
         """
-        span, breaks = numbers("span", span), np.unique(numbers("breaks", breaks))
+        _check_units(units)
+        span, breaks = _checks.numbers("span", span), np.unique(_checks.numbers("breaks", breaks))
         if span.size != 2:
             raise InputError(f"span must be two numbers (low, high); found {span.size}")
         low, high = span
         if not low < high or (breaks.size and not (low < breaks[0] and breaks[-1] < high)):
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
-        if not 1e-15 <= number("tolerance", tolerance) < 1e-3:
+        if not 1e-15 <= _checks.number("tolerance", tolerance) < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
-        one = None if callable(mass) else number("mass", mass)
-        weight = sampler("mass", mass if one is None else lambda x: one, positive=True)
+        one = None if callable(mass) else _checks.number("mass", mass)
+        weight = _checks.sampler("mass", mass if one is None else lambda x: one, positive=True)
         ends = np.concatenate([[low], breaks, [high]])
         try:
             x, fields = _cells.from_callable(
-                sampler("V", V), weight, ends, tolerance, units.electron_mass
+                _checks.sampler("V", V), weight, ends, tolerance, units.electron_mass
             )
         except _cells.TooRough as fault:
             raise InputError(str(fault)) from None
@@ -436,6 +431,7 @@ class Profile:
 
         Open edges keep the end values of the tilted cells.
         """
+        field = _checks.number("field", field)
         slope = np.column_stack([field * self.x[:-1], field * np.diff(self.x)])
         V, slope = _cells.padded([self.V_cells, slope])
         return replace(
@@ -448,19 +444,21 @@ class Profile:
 
     def stretched(self, factor):
         """Return the profile with every position multiplied by `factor`, which must be positive."""
-        if not factor > 0:
+        if not _checks.number("factor", factor) > 0:
             raise InputError(f"factor must be positive; found {factor}; use mirrored() to reflect")
         rows = self.rows and replace(self.rows, x=frozen(self.rows.x * factor))
         return replace(self, x=frozen(self.x * factor), rows=rows)
 
     def scaled(self, factor):
         """Return the profile with V multiplied by `factor`."""
+        factor = _checks.number("factor", factor)
         return self._with_V(
             self.V_cells * factor, lambda V: V * factor, self.rows and self.rows.scaled(factor)
         )
 
     def shifted(self, energy):
         """Return the profile with `energy` added to V."""
+        energy = _checks.number("energy", energy)
         V = self.V_cells.copy()
         V[:, 0] += energy
         rows = self.rows and replace(self.rows, V=frozen(self.rows.V + energy))
@@ -492,3 +490,8 @@ class Profile:
     def with_source(self, source, sha256):
         """Return the profile with the name and digest of the file that it was read from."""
         return replace(self, source=source, sha256=sha256)
+
+
+def _check_units(units):
+    if not isinstance(units, Units):
+        raise InputError(f'units must be Units("nm", "eV") or the like; found {units!r:.80}')
