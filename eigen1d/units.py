@@ -1,9 +1,9 @@
 """Units at the border: inside the package hbar = 1 and only the mass is ever converted.
 
 Lengths and energies stay in the user's units, so no position and no energy is rounded on the way
-in or out. An electron mass is then `Units.electron_mass` in units of hbar^2 / (energy length^2): the
-one factor that solvers need; with Units("bohr", "hartree") it is 1. The factors are ratios of CODATA
-constants as scipy.constants gives them; none is typed here.
+in or out. An electron mass is then `Units.electron_mass` in hbar^2 / (energy unit * length unit^2):
+the one factor that solvers need; with Units("bohr", "hartree") it is 1. The factors are ratios of
+CODATA constants as scipy.constants gives them; none is typed here.
 """
 
 from dataclasses import dataclass
