@@ -58,7 +58,7 @@ def _smooth_cells(x, values):
 
 
 def _monotone_cells(x, values):
-    """Shape-preserving cubic of F. N. Fritsch, J. Butland, SIAM J. Sci. Stat. Comput. 5 (1984) 300."""
+    """Shape-preserving: F. N. Fritsch, J. Butland, SIAM J. Sci. Stat. Comput. 5 (1984) 300."""
     from scipy.interpolate import PchipInterpolator
 
     if x.size == 2:
