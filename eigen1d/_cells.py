@@ -73,17 +73,31 @@ def minimum(coefficients):
     bound = coefficients[:, 0] - np.abs(coefficients[:, 1:]).sum(axis=1)
     for row in np.flatnonzero(bound < least):
         if bound[row] < least:
-            for root in polynomial.polyroots(polynomial.polyder(_trimmed(coefficients[row]))):
-                # A double zero of the derivative may come out as a complex pair: its real part is
-                # as good a sample as any.
-                t = min(max(root.real, 0.0), 1.0)
-                least = min(least, polynomial.polyval(t, coefficients[row]))
+            t = _turning_points(coefficients[row])
+            least = min(least, polynomial.polyval(t, coefficients[row]).min(initial=least))
     return float(least)
 
 
-def _trimmed(c):
-    nonzero = np.flatnonzero(c)
-    return c[: nonzero[-1] + 1] if nonzero.size else c[:1]
+def _turning_points(c):
+    """Where the derivative of one cell polynomial vanishes, cut to 0..1.
+
+    A leading coefficient that is rounding of the others puts a root near infinity, whose size costs
+    the roots on the cell their digits: such terms are left out while roots are sought, and Newton's
+    method on the whole derivative makes up for it.
+    """
+    slope = polynomial.polyder(c)
+    large = np.flatnonzero(np.abs(slope) > 1e-10 * np.abs(slope).max(initial=0.0))
+    if not large.size:
+        return np.zeros(1)
+    # A double root may come out as a complex pair: its real part is as good a sample as any.
+    t = np.clip(polynomial.polyroots(slope[: large[-1] + 1]).real, 0.0, 1.0)
+    bend = polynomial.polyder(slope)
+    for _ in range(2):
+        change = polynomial.polyval(t, slope)
+        rate = polynomial.polyval(t, bend)
+        move = np.divide(change, rate, out=np.zeros_like(t), where=rate != 0)
+        t = np.clip(t - np.clip(move, -0.1, 0.1), 0.0, 1.0)
+    return t
 
 
 def merged(x, fields):
