@@ -13,44 +13,18 @@ The chain over cells is serial, so trial energies run side by side as lanes of t
 Sweeping to the left is sweeping to the right through the mirror image, where phi changes sign.
 """
 
-import numba
 import numpy as np
 from numba import types
 
-LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
-LARGEST = 2.25  # of 2 m |V - E| h^2 in a series step; < pi^2: at most one zero of psi in it
+from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, LARGEST, kernel
+from ._straight import straight as _straight
+
 _TERMS = 96  # most terms of a series; a cell that asks for more is cut further
 _DEGREE = 32  # most coefficients of a polynomial
-EPS = np.finfo(np.float64).eps
 _BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
 _LOG_BIG = 300 * np.log(2.0)
 _AGE = 16  # steps between two looks at amplitudes: far from enough to leave the range of doubles
 _MOST_PARTS = 1 << 20  # of a cell
-_INVERSE = 1.0 / ((np.arange(_TERMS) + 1.0) * (np.arange(_TERMS) + 2.0))
-
-
-def kernel(function=None, signature=None):
-    """Compile: cached, division by zero as IEEE says, and no fast-math, which the compensated sums
-    in `_add` would not survive. Kernels that Python calls have a signature, so that there is one
-    version of each, whether arrays are read-only, strided or neither.
-    """
-    if function is None:
-        return lambda function: kernel(function, signature)
-    options = {"cache": True, "error_model": "numpy", "nogil": True}
-    return (
-        numba.njit(signature, **options)(function) if signature else numba.njit(**options)(function)
-    )
-
-
-def _given(dimensions, contiguous=False):
-    """Type of an array that a kernel only reads."""
-    layout = "C" if contiguous else "A"
-    return types.Array(types.float64, dimensions, layout, readonly=True)
-
-
-CELLS = types.Tuple((_given(1), _given(2), _given(2), _given(2)))
-EDGE = _given(1)
-FLOATS, INTEGERS = types.float64[::1], types.int64[::1]
 
 
 @kernel
@@ -266,89 +240,6 @@ def _scratch():
         np.empty(_DEGREE),
         np.empty((2, _TERMS + 1)),
     )
-
-
-def _straight_step(terms):
-    """Make the kernel that crosses a short cell of straight V and constant mass with `terms` terms.
-
-    The common case, and the only one that tables of millions of rows consist of. With t in [0, 1]
-    and h psi' = m h phi, psi'' = (z + s t) psi gives
-    a_(k+2) = (z a_k + s a_(k-1)) / ((k+1) (k+2)), and nothing else. A constant number of terms is
-    unrolled, which leaves one loop over lanes for the vector unit; all its data in one array at
-    constant offsets spares it checks for overlap. 2.4 ns a lane with 4 terms, 3.5 ns with 8,
-    against 26 ns with terms outside lanes in separate arrays.
-    """
-
-    @kernel
-    def step(state, v, scale, s, mh):
-        inverse = 1.0 / mh
-        for lane in range(LANES):
-            p, f = state[lane], state[LANES + lane]
-            z = scale * (v - state[5 * LANES + lane])
-            before, a, b = 0.0, p, mh * f
-            gain_p, gain_f = b, 0.0
-            for k in range(terms):
-                c = (z * a + s * before) * (1.0 / ((k + 1.0) * (k + 2.0)))
-                gain_p += c
-                gain_f += (k + 2.0) * c
-                before, a, b = a, b, c
-            # Compensated sums, see `_add`, which a call for each array would keep from vectors.
-            gain_p += state[2 * LANES + lane]
-            new_p = p + gain_p
-            part = new_p - p
-            state[2 * LANES + lane] = (p - (new_p - part)) + (gain_p - part)
-            state[lane] = new_p
-            gain_f = gain_f * inverse + state[3 * LANES + lane]
-            new_f = f + gain_f
-            part = new_f - f
-            state[3 * LANES + lane] = (f - (new_f - part)) + (gain_f - part)
-            state[LANES + lane] = new_f
-            was = (p > 0.0) | ((p == 0.0) & (f > 0.0))
-            now = (new_p > 0.0) | ((new_p == 0.0) & (new_f > 0.0))
-            state[4 * LANES + lane] += 1.0 if was != now else 0.0
-
-    return step
-
-
-_straight_3, _straight_5, _straight_8 = _straight_step(3), _straight_step(5), _straight_step(8)
-_straight_12, _straight_22 = _straight_step(12), _straight_step(22)
-
-
-@kernel
-def _straight(state, v, slope, mass, h, low, high):
-    """Cross a cell of straight V and constant mass; False, and nothing done, if it is too long.
-
-    `state` holds, LANES numbers each: psi, phi, their carries, zeros, energies. A majorant of the
-    series decides how many terms, as in `_terms`: it starts from (1, zeta) and stops when three in
-    a row (the reach of the recurrence) are below rounding of the first change.
-    """
-    scale = 2.0 * mass * h * h
-    most = scale * max(abs(v - low), abs(v - high))
-    s = scale * slope
-    size = most + abs(s)
-    if size > LARGEST:
-        return False
-    target = 0.03 * EPS * np.sqrt(size)
-    before, a, b = 0.0, 1.0, np.sqrt(size)
-    terms, quiet = 0, 0
-    while quiet < 3 and terms < 22:
-        before, a, b = a, b, (most * a + abs(s) * before) * _INVERSE[terms]
-        terms += 1
-        quiet = quiet + 1 if (terms + 1.0) * b <= target else 0
-    if quiet < 3:
-        return False
-    terms -= quiet
-    if terms <= 3:
-        _straight_3(state, v, scale, s, mass * h)
-    elif terms <= 5:
-        _straight_5(state, v, scale, s, mass * h)
-    elif terms <= 8:
-        _straight_8(state, v, scale, s, mass * h)
-    elif terms <= 12:
-        _straight_12(state, v, scale, s, mass * h)
-    else:
-        _straight_22(state, v, scale, s, mass * h)
-    return True
 
 
 @kernel

@@ -10,10 +10,10 @@ PACKAGE = ROOT / "eigen1d"
 
 # A file imports only from floors below its own. A new file is placed here first.
 FLOORS = [
-    {"errors", "_cells", "_interpolation", "_kernels"},
-    {"units", "_files", "_checks", "_search", "_table_faults"},
-    {"_parts", "_table_text", "_table_header"},
-    {"profile"},
+    {"errors", "_cells", "_interpolation", "_compiled"},
+    {"units", "_files", "_checks", "_straight", "_table_faults"},
+    {"_parts", "_kernels", "_table_text", "_table_header"},
+    {"profile", "_search"},
     {"_quadrature", "tables", "square_well", "closed_forms"},
     {"levels"},
     {"shooting", "finite_difference"},
@@ -58,7 +58,7 @@ def test_every_floor_names_files_that_exist():
 
 def test_the_oracle_and_the_solvers_do_not_know_each_other():
     """The analytic square well judges the solvers, so it must share nothing with them."""
-    solvers = {"shooting", "finite_difference", "_kernels", "_search"}
+    solvers = {"shooting", "finite_difference", "_compiled", "_straight", "_kernels", "_search"}
     for name in ("square_well", "closed_forms"):
         assert not solvers & set(package_imports(PACKAGE / f"{name}.py"))
     for name in solvers:
@@ -69,4 +69,4 @@ def test_the_oracle_and_the_solvers_do_not_know_each_other():
 def test_the_two_methods_share_no_numerics():
     """The second opinion is one only if it shares nothing but the profile with the first."""
     theirs = set(package_imports(PACKAGE / "finite_difference.py"))
-    assert not theirs & {"shooting", "_kernels", "_search"}
+    assert not theirs & {"shooting", "_compiled", "_straight", "_kernels", "_search"}
