@@ -331,7 +331,9 @@ class Profile:
 
     @classmethod
     def _joined(cls, x, fields, ends, **keywords):
-        if x.size > 2 and max(f.shape[1] for f in fields) <= 4:
+        # Cells of a function are cut on purpose, so that low ones do not round by high ones.
+        cut = keywords["kind"] == "function" or max(f.shape[1] for f in fields) > 4
+        if x.size > 2 and not cut:
             x, fields = _cells.merged(x, fields)
         return cls(
             x=frozen(x),
