@@ -1,0 +1,375 @@
+"""Arithmetic of piecewise polynomials: one function before and after, on fewer or more cells."""
+
+import math
+from fractions import Fraction
+
+import numpy as np
+import pytest
+from numpy.polynomial import polynomial
+from scipy.interpolate import PPoly
+
+from eigen1d import _cells
+
+EPS = np.finfo(float).eps
+T = np.linspace(0.0, 1.0, 21)
+
+
+def table(coefficients, t=T):
+    """Values of each cell at all t: shape (cells, t.size)."""
+    return polynomial.polyval(t, np.asarray(coefficients, dtype=float).T)
+
+
+def random_cells(seed, cells=7, degree=5):
+    return np.random.default_rng(seed).normal(size=(cells, degree + 1))
+
+
+# --- values, shifts, mirrors ---------------------------------------------------------------------
+
+
+def test_evaluated_is_the_power_sum():
+    """Everything a user sees of V goes through it; numpy's own Horner scheme judges."""
+    cells, t = random_cells(0), np.random.default_rng(1).random(7)
+    expected = [polynomial.polyval(ti, row) for ti, row in zip(t, cells, strict=True)]
+    assert _cells.evaluated(cells, t) == pytest.approx(expected, rel=4 * EPS, abs=4 * EPS)
+
+
+def test_reexpanded_is_exact_where_doubles_are():
+    """(1 + 2 s + 3 s^2 + 4 s^3) at s = 1/2 + t/4, by binomials in rational numbers.
+
+    All intermediate values are dyadic, so a single wrong product would show as a whole number.
+    """
+    given = [1, 2, 3, 4]
+    expected = [
+        sum(
+            Fraction(given[k]) * math.comb(k, j) * Fraction(1, 2) ** (k - j) * Fraction(1, 4) ** j
+            for k in range(j, 4)
+        )
+        for j in range(4)
+    ]
+    found = _cells.reexpanded(np.array([given]), 0.5, 0.25)[0]
+    assert [Fraction(c) for c in found] == expected
+
+
+def test_reexpanded_keeps_the_function_cell_by_cell():
+    """Each cell has its own offset and ratio; mixing them up would mix cells up."""
+    cells = random_cells(2)
+    offset, ratio = np.random.default_rng(3).uniform(-1, 1, size=(2, 7))
+    found = table(_cells.reexpanded(cells, offset, ratio))
+    expected = [
+        polynomial.polyval(o + r * T, row) for o, r, row in zip(offset, ratio, cells, strict=True)
+    ]
+    assert found == pytest.approx(np.array(expected), abs=1e-13)
+
+
+def test_reexpanded_leaves_its_argument_alone():
+    """Profiles share their arrays; one changed in place would change another profile."""
+    cells = random_cells(4)
+    before = cells.copy()
+    _cells.reexpanded(cells, 0.3, 0.5)
+    _cells.mirrored(cells)
+    np.testing.assert_array_equal(cells, before)
+
+
+def test_mirrored_reverses_cells_and_what_is_in_them():
+    """A profile and its image have the same levels only if both reversals happen."""
+    cells = random_cells(5)
+    np.testing.assert_allclose(table(_cells.mirrored(cells)), table(cells)[::-1, ::-1], atol=1e-13)
+    np.testing.assert_allclose(_cells.mirrored(_cells.mirrored(cells)), cells, atol=1e-12)
+    assert not np.allclose(_cells.mirrored(cells), cells[::-1])
+
+
+# --- the least value -----------------------------------------------------------------------------
+
+
+@pytest.mark.parametrize(
+    ("cells", "least"),
+    [
+        ([[3.0], [2.0], [4.0]], 2.0),
+        ([[1.0, 2.0], [3.0, -2.5]], 0.5),  # at the right end of the second
+        ([[1.0, -4.0, 4.0]], 0.0),  # (1 - 2 t)^2, inside
+        ([[1.0, 1.0, 1.0]], 1.0),  # the parabola's own minimum lies outside the cell
+        ([[1.0, 4.0, -4.0]], 1.0),  # a maximum inside is not a minimum
+        ([[1 / 81, -4 / 27, 2 / 3, -4 / 3, 1.0]], 0.0),  # (t - 1/3)^4: triple zero of the slope
+        ([[0.0, 0.0, 0.0, 0.0], [1.0, -4.0, 4.0, 0.0]], 0.0),
+        ([[5.0, -4.0, 4.0, 0.0, 0.0], [6.0, -8.0, 0.0, 0.0, 8.0]], 6 - 6 * 0.25 ** (1 / 3)),
+    ],
+)
+def test_minimum(cells, least):
+    """No level lies below it: every search starts there, so a value too high loses levels.
+
+    Closed forms; the last is 6 - 8 t + 8 t^4, least where t^3 = 1/4.
+    """
+    assert _cells.minimum(np.array(cells)) == pytest.approx(least, abs=4 * EPS)
+
+
+def test_minimum_against_dense_samples():
+    """Random quintics: never above any of 20001 samples, and as low as the lowest but for h^2."""
+    t = np.linspace(0, 1, 20001)
+    for seed in range(20):
+        cells = random_cells(seed, cells=9)
+        sampled = table(cells, t).min()
+        assert sampled - 1e-6 < _cells.minimum(cells) <= sampled + 1e-14
+
+
+@pytest.mark.parametrize("noise", [0.0, 1e-17, -3e-16, 1e-13])
+def test_minimum_is_not_misled_by_rounding_in_the_leading_coefficient(noise):
+    """(t - 0.3)^2 with a seventh power of rounding size, as a fit to a parabola leaves it."""
+    cells = np.array([[0.09, -0.6, 1.0, 0.0, 0.0, 0.0, 0.0, noise]])
+    assert _cells.minimum(cells) == pytest.approx(noise * 0.3**7, abs=2e-17)
+
+
+# --- joining cells ----------------------------------------------------------------------------
+
+
+def test_equal_neighbours_are_joined():
+    """A thousand rows of three flat layers are three cells: cost follows structure, not rows."""
+    x = np.linspace(0.0, 30.0, 1001)
+    V = np.where(x[:-1] < 9.99, 0.3, np.where(x[:-1] < 20.01, 0.0, 0.2))[:, None]
+    mass = np.broadcast_to([[0.067]], V.shape)
+    ends, (V_joined, mass_joined) = _cells.merged(x, [V, mass])
+    assert V_joined.tolist() == [[0.3], [0.0], [0.2]]
+    assert mass_joined.tolist() == [[0.067]] * 3
+    assert ends[[0, -1]].tolist() == [0.0, 30.0] and ends.size == 4
+
+
+@pytest.mark.parametrize("degree", [1, 2, 3])
+def test_a_cut_polynomial_is_joined_again(degree):
+    """Cutting a cell changes nothing about the function, so joining must undo it."""
+    whole = random_cells(degree, cells=1, degree=degree)
+    x = np.sort(np.concatenate([[-2.0, 5.0], np.random.default_rng(8).uniform(-2, 5, 12)]))
+    offset, ratio = (x[:-1] + 2) / 7, np.diff(x) / 7
+    parts = _cells.reexpanded(np.repeat(whole, 13, axis=0), offset, ratio)
+    ends, (joined,) = _cells.merged(x, [parts])
+    assert ends.tolist() == [-2.0, 5.0]
+    np.testing.assert_allclose(joined, whole, rtol=0, atol=1e-13)
+
+
+@pytest.mark.parametrize("rows", [10**3, 10**5])
+def test_small_bends_do_not_add_up(rows):
+    """A finely sampled parabola looks straight from row to row; joining it would flatten a well.
+
+    With 10^5 rows each bend is 2e-10 of the depth, and with 10^7 below rounding: hence the chord
+    over the whole run is what decides, and V must survive at every row.
+    """
+    x = np.linspace(-1.0, 1.0, rows)
+    V = x**2
+    cells = np.column_stack([V[:-1], np.diff(V)])
+    ends, (joined,) = _cells.merged(x, [cells])
+    cell = np.clip(np.searchsorted(ends, x, side="right") - 1, 0, ends.size - 2)
+    t = (x - ends[cell]) / np.diff(ends)[cell]
+    assert np.abs(_cells.evaluated(joined[cell], t) - V).max() < 16 * EPS
+    assert ends.size - 1 > 0.9 * rows
+
+
+def test_bends_below_rounding_do_not_add_up_either():
+    """Bends of an eighth of an ulp from cell to cell: every neighbour agrees, the run does not."""
+    count, bend = 4000, EPS / 8
+    slope = 1.0 + bend * np.arange(count)
+    start = np.concatenate([[0.0], np.cumsum(slope)[:-1]])
+    x = np.arange(count + 1.0)
+    ends, (joined,) = _cells.merged(x, [np.column_stack([start / count, slope / count])])
+    cell = np.clip(np.searchsorted(ends, x[:-1], side="right") - 1, 0, ends.size - 2)
+    t = (x[:-1] - ends[cell]) / np.diff(ends)[cell]
+    assert np.abs(_cells.evaluated(joined[cell], t) - start / count).max() < 32 * EPS
+
+
+@pytest.mark.parametrize(
+    ("V", "mass", "cells"),
+    [
+        ([[1.0], [1.0], [1.0]], [[1.0], [1.0], [1.0]], 1),
+        ([[1.0], [1.0], [2.0]], [[1.0], [1.0], [1.0]], 2),
+        ([[1.0], [1.0], [1.0]], [[1.0], [2.0], [2.0]], 2),  # a jump of the mass alone
+        ([[1.0, 1.0], [2.0, 1.0], [3.0, 1.0]], [[1.0], [1.0], [1.0]], 1),
+        ([[1.0, 1.0], [2.0, 1.0], [3.1, 1.0]], [[1.0], [1.0], [1.0]], 2),  # a jump of 0.1
+        ([[1.0, 1.0], [2.0, 1.5], [3.5, 1.0]], [[1.0], [1.0], [1.0]], 3),  # kinks
+        ([[1.0, 1.0], [2.0, 1.0], [3.0, 1.0]], [[1.0, 0.0], [1.0, 0.0], [1.0, 0.1]], 2),
+    ],
+)
+def test_cells_join_only_where_all_fields_go_on(V, mass, cells):
+    """A cell is one polynomial of V and one of the mass: a jump in either ends it."""
+    x = np.arange(4.0)
+    ends, fields = _cells.merged(x, [np.array(V), np.array(mass)])
+    assert ends.size - 1 == cells
+    assert {f.shape[0] for f in fields} == {cells}
+
+
+def test_a_cell_that_is_alone_keeps_its_digits():
+    """Joining must not round what it does not join."""
+    x = np.array([0.0, 1.0, 2.0, 3.0])
+    cells = np.array([[0.1, 0.2, 0.7], [0.3, 0.0, 0.0], [0.3, 0.0, 0.0]])
+    _, (joined,) = _cells.merged(x, [cells])
+    assert joined.tolist() == [[0.1, 0.2, 0.7], [0.3, 0.0, 0.0]]
+
+
+# --- small tools ---------------------------------------------------------------------------------
+
+
+def test_padded_adds_zero_columns_only():
+    a, b = _cells.padded([np.ones((2, 1)), np.ones((2, 3))])
+    assert a.tolist() == [[1, 0, 0]] * 2
+    assert b.tolist() == [[1, 1, 1]] * 2
+
+
+def test_scaled_keeps_one_number_one_number():
+    """A mass that is the same everywhere must not take the memory of ten million rows."""
+    one = np.broadcast_to([[0.067]], (10**7, 1))
+    scaled = _cells.scaled(one, 2.0)
+    assert scaled.strides[0] == 0 and scaled[-1, 0] == 0.134
+    assert _cells.scaled(np.array([[1.0, 2.0]]), 3.0).tolist() == [[3.0, 6.0]]
+
+
+def test_product_is_the_product():
+    """The nonparabolic mass m (1 + alpha (E - V)) is made of products; numpy's polymul judges."""
+    a, b = random_cells(6, degree=3), random_cells(7, degree=2)
+    expected = [polynomial.polymul(p, q) for p, q in zip(a, b, strict=True)]
+    np.testing.assert_allclose(_cells.product(a, b), expected, atol=1e-14)
+    assert _cells.product(a, np.full((7, 1), 2.0)).tolist() == (2 * a).tolist()
+
+
+def test_graded_is_straight_between_both_ends():
+    start, end = np.array([1.0, 2.0]), np.array([3.0, 2.0])
+    assert _cells.graded(start, end).tolist() == [[1.0, 2.0], [2.0, 0.0]]
+    assert _cells.graded(start, start).tolist() == [[1.0], [2.0]]  # constant cells stay cheap
+
+
+def test_from_ppoly_on_its_own_cells_and_on_finer_ones():
+    """The mass may have breakpoints of its own: V is then seen from cells that it does not know."""
+    own = np.array([-1.0, 0.5, 2.0, 2.5])
+    V = PPoly(np.random.default_rng(9).normal(size=(4, 3)), own)
+    for x in (own, np.union1d(own, [-0.3, 0.7, 0.71, 2.4])):
+        cells = _cells.from_ppoly(V, x)
+        assert cells.shape == (x.size - 1, 4)
+        inside = T[1:-1]  # at its breakpoints a PPoly takes the value on the right
+        at = x[:-1, None] + inside * np.diff(x)[:, None]
+        np.testing.assert_allclose(table(cells, inside), V(at), atol=1e-13)
+
+
+# --- functions -----------------------------------------------------------------------------------
+
+
+def deviation(function, x, cells, points=41):
+    """Largest error of the cells, relative to each cell's own height above the least value.
+
+    What the function itself rounds is no error of the cells: its value, and its x.
+    """
+    t = np.linspace(0.001, 0.999, points)
+    at = x[:-1, None] + t * np.diff(x)[:, None]
+    exact = function(at)
+    slope = np.ptp(exact, axis=1) / np.diff(x)
+    rounding = 8 * EPS * (np.abs(exact).max(axis=1) + slope * np.abs(at).max(axis=1))
+    error = np.abs(table(cells, t) - exact).max(axis=1)
+    return (np.maximum(error - rounding, 0) / (exact.max(axis=1) - exact.min())).max()
+
+
+FUNCTIONS = {
+    "parabola": (lambda x: 0.5 * x**2, (-12.0, 12.0)),
+    "off-centre": (lambda x: 0.5 * (x - 0.3) ** 2, (-9.0, 11.0)),
+    "sextic wall": (lambda x: x**6 - 3 * x**2, (-4.0, 4.0)),
+    "sech": (lambda x: -6 / np.cosh(x) ** 2, (-20.0, 20.0)),
+    "morse": (lambda x: (1 - np.exp(-x)) ** 2, (-1.5, 25.0)),
+    "lattice": (lambda x: np.cos(x), (0.0, 60.0)),
+    "narrow": (lambda x: -np.exp(-(((x - 3.1) / 1e-3) ** 2)), (3.09, 3.11)),
+}
+
+
+@pytest.mark.parametrize("name", FUNCTIONS)
+def test_functions_are_followed_to_the_tolerance(name):
+    """The promise of from_function, cell by cell: that is what bounds every level's own error."""
+    function, span = FUNCTIONS[name]
+    x, (V, mass) = _cells.from_callable(function, lambda x: 1.0, np.array(span), 1e-13)
+    assert deviation(function, x, V) <= 1e-13
+    assert (x[0], x[-1]) == span and (np.diff(x) > 0).all()
+    assert V.shape[1] <= _cells.DEGREE + 1
+    assert mass.tolist() == [[1.0]] * (x.size - 1)
+
+
+def test_a_looser_tolerance_takes_fewer_cells():
+    """The tolerance is the user's dial, so it must turn something, and be kept."""
+    function, span = FUNCTIONS["morse"]
+    sizes = []
+    for tolerance in (1e-13, 1e-9, 1e-5):
+        x, (V, _) = _cells.from_callable(function, lambda x: 1.0, np.array(span), tolerance)
+        assert deviation(function, x, V) <= tolerance
+        sizes.append(x.size)
+    assert sizes[0] > sizes[1] > sizes[2]
+
+
+def test_the_height_of_a_wall_is_no_excuse_at_the_bottom_of_the_well():
+    """V = x^12 is 10^9 at x = 6 and its lowest levels lie near 1: the cells there must know it.
+
+    One polynomial follows V over the whole span to 1e-13 of 10^9; it would be wrong by 1e-4 where
+    the ground state lives.
+    """
+    x, (V, _) = _cells.from_callable(lambda x: x**12, lambda x: 1.0, np.array([-6.0, 6.0]), 1e-13)
+    assert deviation(lambda x: x**12, x, V) <= 1e-13
+    near = (x[:-1] < 1) & (x[1:] > -1)
+    assert np.diff(x)[near].max() < 3
+
+
+def test_a_polynomial_keeps_its_degree():
+    """Trailing coefficients of rounding size are dropped: a parabola costs what parabolas cost."""
+    _, (V, mass) = _cells.from_callable(
+        lambda x: 3 - x + 2 * x**2, lambda x: 1 + x / 10, np.array([0.0, 1.0]), 1e-13
+    )
+    assert V.shape[1] == 3 and mass.shape[1] == 2
+    np.testing.assert_allclose(V[0], [3, -1, 2], atol=1e-14)
+
+
+def test_the_mass_has_its_own_tolerance():
+    """A mass that varies where V is flat must still cut cells."""
+    mass = lambda x: 1 + 0.5 * np.tanh(20 * x)  # noqa: E731
+    x, (_, cells) = _cells.from_callable(lambda x: 0.0, mass, np.array([-1.0, 1.0]), 1e-13)
+    at = x[:-1, None] + T * np.diff(x)[:, None]
+    np.testing.assert_allclose(table(cells), mass(at), rtol=1e-13)
+    assert x.size > 4
+
+
+def test_breaks_are_approached_from_both_sides():
+    """At a jump each side has its own value; a function asked at the break itself has one only."""
+    asked = []
+
+    def step(x):
+        asked.append(np.array(x))
+        return np.where(x < 1.0, 2.0, 5.0)
+
+    breaks = np.array([0.0, 1.0, 3.0])
+    x, (V, _) = _cells.from_callable(step, lambda x: 1.0, breaks, 1e-13)
+    assert x.tolist() == [0.0, 1.0, 3.0]
+    assert V.tolist() == [[2.0], [5.0]]
+    asked = np.concatenate([a.ravel() for a in asked])
+    assert not (asked == 1.0).any()
+    assert np.abs(asked - 1.0).min() <= EPS  # but as close as doubles go
+    assert {0.0, 3.0} <= set(asked)  # the span's own ends are asked
+
+
+@pytest.mark.parametrize("place", [0.0, 0.3, -1.7, 1000.3])
+@pytest.mark.parametrize(
+    "rough", [np.abs, np.sign, lambda d: np.sqrt(np.abs(d))], ids=["kink", "jump", "root"]
+)
+def test_a_rough_place_is_named_in_bounded_work(rough, place):
+    """Halving towards a kink never ends by itself, and away from x = 0 it spreads: where V is tiny
+    next to x, the rounding of x alone fails all cells near, twice as many in each round.
+    """
+    asked = 0
+
+    def V(x):
+        nonlocal asked
+        asked += x.size
+        return rough(x - place)
+
+    ends = place + np.array([-1.1, 1.4])
+    with pytest.raises(_cells.TooRough, match=f"near x = {place:g}; .* breaks=\\[{place:g}\\]$"):
+        _cells.from_callable(V, lambda x: 1.0, ends, 1e-13)
+    assert asked < 10**5
+    if rough in (np.abs, np.sign):  # and the advice works
+        x, _ = _cells.from_callable(V, lambda x: 1.0, np.insert(ends, 1, place), 1e-13)
+        assert place in x
+
+
+def test_noise_is_refused_in_bounded_memory(monkeypatch):
+    """Measured values wrapped in a function are rough everywhere; memory must not decide."""
+    monkeypatch.setattr(_cells, "_MOST_CELLS", 1000)
+    noise = np.random.default_rng(10)
+    span = np.array([2.0, 3.0])
+    with pytest.raises(_cells.TooRough, match="asks for more than 1000 cells, at x = 2 and elsewh"):
+        _cells.from_callable(lambda x: noise.random(x.shape), lambda x: 1.0, span, 1e-13)
