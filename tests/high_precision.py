@@ -1,8 +1,9 @@
 """An independent judge: levels counted in 50-digit arithmetic from the definition of a profile.
 
 It takes the exact rational meaning of the doubles in a profile's cells, carries psi and phi across
-each cell by power series in mpmath, and counts zeros. It shares no code with any solver; where the
-count below E is n or less and the count below E' is n + 1 or more, level n lies between E and E'.
+each cell in mpmath, by power series or, if flat, in closed form, and counts zeros. It shares no
+code with any solver; where the count below E is n or less and the count below E' is n + 1 or
+more, level n lies between E and E'.
 """
 
 import mpmath
@@ -55,32 +56,51 @@ def _times(a, b):
 
 
 def _cross(V, m, h, E, psi, phi):
-    """Carry psi, phi over a cell in steps so short that each holds at most one zero."""
-    reach = abs(V[0] - E) + sum(abs(c) for c in V[1:])
-    steps = int(mpmath.ceil(mpmath.sqrt(2 * sum(abs(c) for c in m) * reach) * h)) or 1
+    """Carry psi, phi over a cell, halved until each part holds at most one zero."""
+    w = [V[0] - E] + V[1:]
+    if not any(V[1:]) and not any(m[1:]):
+        return _cross_flat(2 * w[0], m[0], h, psi, phi)
+    if 2 * sum(abs(c) for c in m) * sum(abs(c) for c in w) * h**2 > 4:  # < pi^2
+        zeros, half = 0, mpmath.mpf(1) / 2
+        for t in (mpmath.mpf(0), half):
+            part = _shifted(V, t, half), _shifted(m, t, half), h / 2
+            psi, phi, crossed = _cross(*part, E, psi, phi)
+            zeros += crossed
+        return psi, phi, zeros
+    a, b = [psi], [phi]
+    far_psi, far_phi = psi, phi
+    for n in range(1, 400):
+        a.append(sum(m[j] * b[n - 1 - j] for j in range(min(n, len(m)))) * h / n)
+        b.append(sum(2 * w[j] * a[n - 1 - j] for j in range(min(n, len(w)))) * h / n)
+        far_psi += a[n]
+        far_phi += b[n]
+        if (
+            n > 5
+            and max(abs(c) for c in a[-4:]) <= TERMS_BELOW * abs(far_psi)
+            and max(abs(c) for c in b[-4:]) <= TERMS_BELOW * abs(far_phi)
+        ):
+            break
+    return _counted(psi, phi, far_psi, far_phi)
+
+
+def _cross_flat(pull, m, h, psi, phi):
+    """The same where m and V - E = pull / 2 are constant: steps of cos and sin, or one of cosh."""
+    k = mpmath.sqrt(abs(m * pull))
+    steps = 1 if pull >= 0 else int(mpmath.ceil(k * h / 2)) or 1
+    c, s = (mpmath.cosh, mpmath.sinh) if pull > 0 else (mpmath.cos, mpmath.sin)
+    c, s = c(k * h / steps), s(k * h / steps) / k if k else h
     zeros = 0
-    for k in range(steps):
-        t, r = mpmath.mpf(k) / steps, mpmath.mpf(1) / steps
-        w = _shifted([V[0] - E] + V[1:], t, r)
-        mass = _shifted(m, t, r)
-        a, b = [psi], [phi]
-        step = h / steps
-        while len(a) < 6 or max(abs(x) for x in a[-4:]) > TERMS_BELOW * abs(sum(a)) or max(
-            abs(x) for x in b[-4:]
-        ) > TERMS_BELOW * abs(sum(b)):
-            n = len(a)
-            a_next = sum(mass[j] * b[n - 1 - j] for j in range(min(n, len(mass)))) * step / n
-            b_next = sum(2 * w[j] * a[n - 1 - j] for j in range(min(n, len(w)))) * step / n
-            a.append(a_next)
-            b.append(b_next)
-            if n > 400:
-                break
-        before = _sign(psi, phi)
-        psi, phi = sum(a), sum(b)
-        zeros += int(_sign(psi, phi) != before)
-        size = abs(psi) + abs(phi)
-        psi, phi = psi / size, phi / size
+    for _ in range(steps):
+        psi, phi, crossed = _counted(psi, phi, c * psi + s * m * phi, c * phi + s * pull * psi)
+        zeros += crossed
     return psi, phi, zeros
+
+
+def _counted(psi, phi, far_psi, far_phi):
+    """The far state, brought to size 1, and whether psi has changed its sign on the way."""
+    size = abs(far_psi) + abs(far_phi)
+    crossed = int(_sign(far_psi, far_phi) != _sign(psi, phi))
+    return far_psi / size, far_phi / size, crossed
 
 
 def _shifted(c, t, r):
