@@ -21,7 +21,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _cells, _kernels, _search
+from . import _kernels, _search
 from .errors import InputError
 from .levels import Budget, Levels
 
@@ -80,12 +80,12 @@ class Search:
         self.floor = profile.V_min
         self.edge = profile.open_edge
         _check_alpha(profile)
-        self.x, fields = _split(profile.x, natural, self.floor, self.edge)
-        self.cells = (np.diff(self.x), *fields)
+        self.x, self.cells = _split(profile.x, natural, self.floor)
         self.left, self.right = _edge(natural.left), _edge(natural.right)
         # The deepest cell: where all levels of a single well live.
-        self.home = int(np.argmin(fields[0][:, 0] + fields[0].sum(axis=1)))
-        self.home_mass = float(fields[1][self.home, 0])
+        self.home = int(np.argmin(self.cells[1][:, 0] + self.cells[1].sum(axis=1)))
+        per_energy = self.cells[3][self.home, :1].sum()
+        self.home_mass = float(self.cells[2][self.home, 0] + self.floor * per_energy)
         self.resolution = (ROUNDING + profile.tolerance, float(self.floor))
 
     # Counting -----------------------------------------------------------------------------------
@@ -189,7 +189,7 @@ class Search:
             step *= 2
 
     def _refine(self, n, energy, bracket, todo):
-        """Close the brackets of the levels `todo`, choosing meeting nodes anew where that stalls."""
+        """Close the brackets of the levels `todo`; choose meeting nodes anew where that stalls."""
         stop = np.full(todo.size, self.home)
         rounds = _FIRST_ROUNDS
         while todo.size:
@@ -218,7 +218,7 @@ class Search:
         return out
 
     def _size(self, energies, backward, stride):
-        """Logarithm of the amplitude of one solution at every `stride`-th node: (samples, lanes)."""
+        """Log of the amplitude of one solution at every `stride`-th node: (samples, lanes)."""
         trail = self.trail(energies, backward, stride)
         sigma = self._sigma(energies)
         return np.log(np.hypot(sigma * trail[:, 0], trail[:, 1])) + trail[:, 2]
@@ -263,7 +263,7 @@ class States:
 
     @cached_property
     def _nodes(self):
-        """psi and phi at all nodes, (count, nodes) each, and the node where both sides were joined."""
+        """psi and phi at all nodes, (count, nodes) each, and the node where both sides join."""
         search, count = self.search, self.energy.size
         nodes = search.x.size
         psi, phi = np.empty((count, nodes)), np.empty((count, nodes))
@@ -346,19 +346,45 @@ def _check_alpha(profile):
         )
 
 
-def _split(x, natural, floor, edge):
-    """Cut long cells with curved solutions, so that there are nodes where states can be joined."""
+def _split(x, natural, floor):
+    """Cut long cells with curved solutions, so that there are nodes where states can be joined.
+
+    Returns the nodes, and widths and polynomials of the cells. Cells are halved and halved again:
+    then widths and the places of the cuts in a cell are exact. From differences of the nodes the
+    widths of a profile far from x = 0 would lose digits (test_shooting.py, "far-away-curved").
+    """
     fields = [natural.V, natural.mass, natural.mass_per_energy]
     flat = (natural.V.shape[1] == 1) | (natural.V[:, 1:] == 0).all(axis=1)
     reach = np.abs(natural.V - np.eye(1, natural.V.shape[1]) * floor).sum(axis=1)
     phase = np.sqrt(2 * np.abs(natural.mass).sum(axis=1) * reach) * natural.width
-    parts = np.where(flat, 1, np.clip(np.ceil(phase / 3), 1, 4096)).astype(int)
+    parts = np.where(flat, 1, 2 ** np.ceil(np.log2(np.clip(phase / 4, 1, 4096)))).astype(int)
     if (parts == 1).all():
-        return x, fields
+        return x, (natural.width, *fields)
     owner = np.repeat(np.arange(parts.size), parts)
     index = np.arange(owner.size) - np.repeat(np.cumsum(parts) - parts, parts)
     offset, ratio = index / parts[owner], 1 / parts[owner]
     new_x = np.append(x[owner] + offset * natural.width[owner], x[-1])
-    return new_x, [
-        _cells.reexpanded(f[owner], offset, ratio) if f.shape[1] else f[owner] for f in fields
-    ]
+    fields = [_part(f[owner], offset, ratio) for f in fields]
+    return new_x, (natural.width[owner] * ratio, *fields)
+
+
+def _part(coefficients, offset, ratio):
+    """Coefficients of p(offset + ratio t), offset and ratio being multiples of 1/4096.
+
+    `_cells.reexpanded` with sums in pairs of doubles. Where power coefficients are large and V is
+    small, as at the bottoms of a double well in one cell, plain ones round by more than a bracket
+    is wide (test_shooting.py, "sextic-corner").
+    """
+    high, low = np.array(coefficients), np.zeros(coefficients.shape)
+    degree = high.shape[1] - 1
+    for k in range(degree):
+        for j in range(degree - 1, k - 1, -1):
+            # Half of the digits of a coefficient, times the 12 bits of an offset, is exact.
+            upper = high[:, j + 1] * (2.0**27 + 1)
+            upper -= upper - high[:, j + 1]
+            product = offset * upper
+            before, high[:, j] = high[:, j].copy(), high[:, j] + product
+            part = high[:, j] - before
+            low[:, j] += (before - (high[:, j] - part)) + (product - part)
+            low[:, j] += offset * ((high[:, j + 1] - upper) + low[:, j + 1])
+    return (high + low) * ratio[:, None] ** np.arange(degree + 1)

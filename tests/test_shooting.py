@@ -2,8 +2,11 @@
 
 from decimal import Decimal
 
+import mpmath
 import numpy as np
 import pytest
+from hard_problems import HARD
+from high_precision import count_below
 from problems import NOT_A_PROFILE, REFERENCE, SOLVABLE
 
 from eigen1d import solve
@@ -123,3 +126,52 @@ def test_reference_splittings(case, lower, upper, splitting, solved):
     depth = levels.profile.open_edge - levels.profile.V_min
     found = levels.energy[upper] - levels.energy[lower]
     assert abs(difference(found, splitting)) <= 4 * EPS * depth
+
+
+# --- hard problems, judged in 50 digits -------------------------------------------------------
+
+
+@pytest.mark.parametrize("case", SOLVABLE[25:], ids=lambda case: case.id)
+def test_the_judge_agrees_with_the_reference(case):
+    """The judge counts n and n + 1 levels within 1e-24 on both sides of reference level n.
+
+    Only then may it judge. Jumps, linear and quadratic V and linear mass are among these cases.
+    """
+    profile = case.profile()
+    for n, energy in zip(case.n[:3], case.energy, strict=False):
+        with mpmath.workdps(50):
+            energy = mpmath.mpf(str(energy))
+            away = abs(energy) * mpmath.mpf(10) ** -24
+            assert count_below(profile, energy - away) == n
+            assert count_below(profile, energy + away) == n + 1
+
+
+@pytest.mark.parametrize("problem", HARD, ids=lambda problem: problem.name)
+def test_hard_problem(problem):
+    """None missed, none invented, and every bracket holds its level, says 50-digit arithmetic.
+
+    The judge counts at both ends of every bracket and at the open edge. That this is no matter of
+    luck is why each problem is here for a reason of its own.
+    """
+    profile = problem.make()
+    levels = solve(profile, count=problem.count)
+    np.testing.assert_array_equal(levels.n, np.arange(len(levels)))
+    if problem.bound is not None:
+        assert len(levels) == problem.bound
+    if problem.count is None:
+        assert len(levels) == count_below(profile, profile.open_edge)
+    else:
+        assert len(levels) == problem.count
+    for n, energy, (low, high) in zip(levels.n, levels.energy, levels.bracket, strict=True):
+        assert low <= energy <= high
+        assert count_below(profile, low) <= n < count_below(profile, high)
+    # Narrow as well: a few roundings of the height, or of the offset where that is larger.
+    half = 0.5 * np.diff(levels.bracket, axis=1)[:, 0]
+    height = levels.energy - profile.V_min
+    assert (half <= 32 * EPS * height + 8 * np.spacing(np.abs(levels.energy))).all()
+
+
+def test_hard_problems_have_names_of_their_own():
+    """A name used twice would hide one of the two in a list of failures."""
+    assert len({problem.name for problem in HARD}) == len(HARD)
+    assert all(problem.why for problem in HARD)
