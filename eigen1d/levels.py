@@ -12,6 +12,7 @@ from functools import cached_property
 
 import numpy as np
 
+from ._checks import numbers, sampler
 from ._files import write_whole
 from ._interpolation import gradient
 from ._quadrature import Tail, pieces
@@ -154,8 +155,13 @@ class Levels:
         ndarray, shape (count, points)
             Real, the integral of psi^2 dx over all x is 1, the leftmost lobe is positive. Zero
             beyond a wall.
+
+        Raises
+        ------
+        InputError
+            x not one row of finite numbers.
         """
-        x = np.atleast_1d(np.asarray(x, dtype=float))
+        x = numbers("x", x)
         psi = self.states.sample(np.clip(x, self.profile.x[0], self.profile.x[-1]))[0]
         for tail in self._tails:
             beyond = tail.depth(x) > 0
@@ -211,10 +217,16 @@ class Levels:
         Returns
         -------
         ndarray, shape (count,)
+
+        Raises
+        ------
+        InputError
+            f not a function, or its values not finite real numbers, one for each x.
         """
+        f = sampler("f", f)
         total = np.zeros(len(self))
         for x, weight, psi, _ in self._chunks():
-            total += psi**2 @ (weight * _values(f, x))
+            total += psi**2 @ (weight * f(x))
         total += sum(tail.expect(f) for tail in self._tails)
         return total / self._norm**2
 
@@ -229,10 +241,16 @@ class Levels:
         Returns
         -------
         ndarray, shape (count, count)
+
+        Raises
+        ------
+        InputError
+            As for `expect`.
         """
+        f = sampler("f", f)
         total = np.zeros((len(self), len(self)))
         for x, weight, psi, _ in self._chunks():
-            total += (psi * (weight * _values(f, x))) @ psi.T
+            total += (psi * (weight * f(x))) @ psi.T
         total += sum(tail.matrix(f) for tail in self._tails)
         return total / np.outer(self._norm, self._norm)
 
@@ -376,16 +394,11 @@ class Levels:
 
     def states_to_csv(self, path, x, inputs=()):
         """Write V and every psi at the points x to `path`, one row a point, whole or not at all."""
-        x = np.asarray(x, dtype=float)
+        x = numbers("x", x)
         energy, length = self.profile.units.energy, self.profile.units.length
         header = [f"x [{length}]", f"V [{energy}]"]
         header += [f"psi_{n} [{length}^-1/2]" for n in self.n]
         write_whole(path, _csv(header, [x, self.profile.V(x), *self.psi(x)]), inputs)
-
-
-def _values(f, x):
-    values = np.asarray(f(x), dtype=float)
-    return np.broadcast_to(values, x.shape)
 
 
 def _csv(header, columns):

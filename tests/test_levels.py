@@ -39,9 +39,9 @@ def oscillator():
 
 @pytest.fixture(scope="module")
 def step():
-    """A wall, 1.5 bohr of V = 0 and m = 0.5, then V = 6 and m = 0.9 for ever: two levels or so."""
+    """A wall, 1.5 bohr of V = 0 and m = 0.5, then V = 40 and m = 0.9 for ever: three levels."""
     profile = Profile.from_layers(
-        [1.5, 0.5], [0.0, 6.0], [0.5, 0.9], left="wall", right="open", units=ATOMIC
+        [1.5, 0.5], [0.0, 40.0], [0.5, 0.9], left="wall", right="open", units=ATOMIC
     )
     return solve(profile)
 
@@ -171,10 +171,10 @@ def test_probability_in_a_tail(step):
     since psi is continuous. The tail runs through a cell and on beyond the edge.
     """
     a, k = 1.5, np.sqrt(2 * 0.5 * step.energy)
-    kappa = np.sqrt(2 * 0.9 * (6.0 - step.energy))
+    kappa = np.sqrt(2 * 0.9 * (40.0 - step.energy))
     inside = a / 2 - np.sin(2 * k * a) / (4 * k)
     outside = np.sin(k * a) ** 2 / (2 * kappa)
-    assert len(step) >= 1
+    assert len(step) == 3
     assert step.probability(a, np.inf) == pytest.approx(outside / (inside + outside), rel=1e-12)
     far = np.exp(-2 * kappa * 2.0) * outside / (inside + outside)
     assert step.probability(3.5, np.inf) == pytest.approx(far, rel=1e-11)
@@ -182,7 +182,7 @@ def test_probability_in_a_tail(step):
 
 def test_psi_in_a_tail_decays_and_joins(step):
     """Anywhere means anywhere: the picture and the CSV go beyond the last row."""
-    kappa = np.sqrt(2 * 0.9 * (6.0 - step.energy))
+    kappa = np.sqrt(2 * 0.9 * (40.0 - step.energy))
     psi = step.psi([2.0 - 1e-9, 2.0 + 1e-9, 3.0, 300.0])
     np.testing.assert_allclose(psi[:, 1], psi[:, 0] * np.exp(-2e-9 * kappa), rtol=1e-11)
     np.testing.assert_allclose(psi[:, 2], psi[:, 1] * np.exp(-kappa * (1 - 1e-9)), rtol=1e-11)
@@ -310,6 +310,42 @@ def test_probability_of_nothing_is_refused(box):
         assert str(caught.value) == f"a must lie below b; found {a:g}, {b:g}"
 
 
+@pytest.mark.parametrize("ask", ["expect", "matrix"])
+@pytest.mark.parametrize(
+    ("f", "message"),
+    [
+        (3.0, "f must be a function of x; found 3.0"),
+        (lambda x: 1 / (x - x), "f must be finite on the span; it is not at x = "),
+        (lambda x: x[:2], "f must return one number for each x; for "),
+        (lambda x: 1j * x, "f must return one number for each x; for "),
+        (math.sin, "f failed on an array of positions: "),
+    ],
+)
+def test_functions_that_cannot_be_averaged(box, ask, f, message):
+    """A complex f would lose its imaginary part and a nan spread to all levels, in silence."""
+    with pytest.raises(InputError) as caught:
+        getattr(box, ask)(f)
+    assert str(caught.value).startswith(message)
+
+
+@pytest.mark.parametrize(
+    ("x", "message"),
+    [
+        ([[0.0, 1.0]], "x must be one row of numbers; found shape (1, 2)"),
+        ([0.0, np.nan], "x must be finite; row 1 has nan"),
+        ("here", "x must be numbers; found 'here'"),
+    ],
+)
+def test_places_that_are_none(box, x, message, tmp_path):
+    with pytest.raises(InputError) as caught:
+        box.psi(x)
+    assert str(caught.value) == message
+    with pytest.raises(InputError) as caught:
+        box.states_to_csv(tmp_path / "states.csv", x)
+    assert str(caught.value) == message
+    assert list(tmp_path.iterdir()) == []
+
+
 # --- budget and request --------------------------------------------------------------------------
 
 
@@ -388,7 +424,7 @@ def test_to_dict_is_the_published_object(step):
     assert found["profile"] == {
         "title": "", "source": "", "sha256": "", "kind": "layers", "rows": 2, "cells": 2,
         "length_unit": "bohr", "energy_unit": "hartree", "left": "wall", "right": "open",
-        "open_edge": 6.0,
+        "open_edge": 40.0,
     }  # fmt: skip
     assert list(found["profile"]) == [
         "title", "source", "sha256", "kind", "rows", "cells", "length_unit", "energy_unit",
