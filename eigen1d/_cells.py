@@ -4,6 +4,8 @@ A cell polynomial is a row of power coefficients c[0], c[1], ... in t, where t r
 cell's left end to 1 at its right end. All functions work on many cells at once.
 """
 
+import math
+
 import numpy as np
 from numpy.polynomial import chebyshev, polynomial
 
@@ -304,9 +306,10 @@ def from_callable(V, mass, breaks, tolerance, unit=1.0):
         left, right = left[~good], right[~good]
         short = right - left < _SHORTEST * np.maximum(span, np.minimum(np.abs(left), np.abs(right)))
         if short.any() or left.size > _MOST_CELLS:
-            # The middle one of many on both sides; 11 digits hide by how much cells miss it.
-            place = np.sort(left[short] if short.any() else left)[np.count_nonzero(short) // 2]
-            place = f"{breaks[0] + span * round((place - breaks[0]) / span, 11):.11g}"
+            # The middle one of many on both sides, rounded to hide by how little it misses.
+            place = float(np.sort(left[short] if short.any() else left)[np.sum(short) // 2])
+            place = round(place, 11 - math.ceil(math.log10(max(span, abs(place))))) + 0.0
+            place = f"{place:.12g}"
             raise TooRough(
                 f"no polynomial follows the function near x = {place}; if it jumps or has a kink "
                 f"there, write breaks=[{place}]"
