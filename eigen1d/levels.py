@@ -31,7 +31,7 @@ class Request:
 
     @classmethod
     def checked(cls, profile, count=None, window=None):
-        """Return the request, or raise `InputError` saying what to write instead."""
+        """Return the request for `profile`; `InputError` if `count` or `window` makes no sense."""
         if count is not None and window is not None:
             raise InputError("give count or window, not both: a window returns all levels in it")
         if count is not None:
@@ -393,7 +393,7 @@ class Levels:
         write_whole(path, _csv(header, columns), inputs)
 
     def states_to_csv(self, path, x, inputs=()):
-        """Write V and every psi at the points x to `path`, one row a point, whole or not at all."""
+        """Write V and every psi at the points x to `path`, one row a point; else as `to_csv`."""
         x = numbers("x", x)
         energy, length = self.profile.units.energy, self.profile.units.length
         header = [f"x [{length}]", f"V [{energy}]"]

@@ -445,7 +445,7 @@ class Profile:
         )
 
     def stretched(self, factor):
-        """Return the profile with every position multiplied by `factor`, which must be positive."""
+        """Return the profile with positions times `factor`; `InputError` if it is not positive."""
         if not _checks.number("factor", factor) > 0:
             raise InputError(f"factor must be positive; found {factor}; use mirrored() to reflect")
         rows = self.rows and replace(self.rows, x=frozen(self.rows.x * factor))
@@ -490,7 +490,7 @@ class Profile:
         )
 
     def with_source(self, source, sha256):
-        """Return the profile with the name and digest of the file that it was read from."""
+        """Return the profile as read from the file `source`, whose digest is `sha256`."""
         return replace(self, source=source, sha256=sha256)
 
 
