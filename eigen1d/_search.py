@@ -165,7 +165,11 @@ def _between(one, other, share, edge):
     both = u_one + u_other
     step = share * (one - other) / both if both != 0.0 else 0.0
     # E is moved, not recomputed from u: edge - u^2 would round to the depth of the edge.
-    return one - step * (2.0 * u_one + step)
+    point = one - step * (2.0 * u_one + step)
+    if min(one, other) < point < max(one, other):
+        return point
+    # Beside the edge u has digits that E has not: the step may round to nothing, for ever.
+    return 0.5 * (one + other)
 
 
 @kernel
