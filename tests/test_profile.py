@@ -67,6 +67,23 @@ def test_a_jump_has_a_value_on_each_side(interpolation):
     assert profile.m(just_right) == pytest.approx(0.06)
 
 
+@pytest.mark.parametrize("interpolation", CURVES)
+def test_jumps_at_both_ends_set_the_edges(interpolation):
+    """The shortest table of a square well: each end row stands alone, outside all cells."""
+    profile = Profile.from_rows([0, 0, 1, 1], [5.0, 0.0, 0.0, 4.0], interpolation=interpolation)
+    assert profile.V([-1.0, 0.0, 0.5, 1.5]).tolist() == [5.0, 0.0, 0.0, 4.0]
+    assert profile.cells == 1 and profile.open_edge == 4.0
+    assert profile.rows.stretches() == [slice(1, 3)]
+
+
+def test_cell_of_finds_the_cell_and_the_place_in_it():
+    """At a breakpoint the cell on its right; beyond the ends, the ends."""
+    profile = Profile.from_layers([1.0, 2.0], [0.0, 1.0])
+    cell, t = profile.cell_of([-9.0, 0.0, 0.25, 1.0, 2.0, 3.0, 9.0])
+    assert cell.tolist() == [0, 0, 0, 1, 1, 1, 1]
+    assert t.tolist() == [0.0, 0.0, 0.25, 0.0, 0.5, 1.0, 1.0]
+
+
 def test_open_edges_keep_the_last_values_and_walls_end_the_world():
     profile = table(alpha=ALPHA, left="wall")
     assert profile.V(-0.1) == np.inf and np.isnan(profile.m(-0.1)) and np.isnan(profile.alpha(-0.1))
@@ -239,6 +256,13 @@ def test_mass_as_a_ppoly_with_breakpoints_of_its_own():
     np.testing.assert_allclose(profile.m(at), mass(at), atol=1e-14)
     assert profile.right.mass == pytest.approx(float(mass(3.0)))
     assert profile.row_count == 2
+
+
+def test_a_mass_of_one_piece_beyond_both_ends_adds_no_breakpoint():
+    V = PPoly(np.array([[1.0, 2.0]]), [0.0, 1.0, 3.0])
+    profile = Profile.from_ppoly(V, PPoly(np.array([[0.1], [0.5]]), [-1.0, 4.0]))
+    assert profile.x.tolist() == [0.0, 1.0, 3.0]
+    assert profile.m([0.0, 3.0]) == pytest.approx([0.6, 0.9], rel=1e-15)
 
 
 def test_degrees_of_V_and_mass_need_not_agree():

@@ -5,6 +5,7 @@ import math
 import numpy as np
 import pytest
 from scipy.integrate import quad
+from scipy.special import airy
 
 from eigen1d import Profile, Units, _quadrature
 from eigen1d._quadrature import Tail, pieces
@@ -63,6 +64,29 @@ def test_decay_inside_a_barrier_is_integrated():
     inside = (x > 1) & (x < 2)
     found = weight[inside] @ np.exp(-2 * kappa * (x[inside] - 1))
     assert found == pytest.approx(-math.expm1(-2 * kappa) / (2 * kappa), rel=1e-13)
+
+
+def test_a_ramp_is_integrated_to_its_far_end():
+    """Within a cell V may run far from its left value: psi = Ai(c x) on V = E + F x.
+
+    V equals E at the end where a bound that looked at the wrong end would see nothing to resolve.
+    The integral of Ai^2 is z Ai^2 - Ai'^2: NIST Digital Library of Mathematical Functions, 9.11.
+    """
+    F = 1e5
+    c = (2 * F) ** (1 / 3)
+    for V, end in (([F], [2 * F]), ([2 * F], [F])):
+        ramp = box(V=V, V_end=end)
+        x, weight = gathered(ramp, np.array([F]))
+        z = (lambda x: c * x) if V < end else (lambda x: c * (1 - x))
+        slope = airy(0.0)[1]
+        far, far_slope = airy(c)[:2]
+        exact = ((c * far**2 - far_slope**2) + slope**2) / c
+        assert weight @ airy(z(x))[0] ** 2 == pytest.approx(exact, rel=1e-13)
+
+
+def test_one_break_is_enough():
+    x, weight = gathered(box(), np.array([0.5]), breaks=[0.3])
+    assert weight @ np.abs(x - 0.3) == pytest.approx((0.3**2 + 0.7**2) / 2, rel=1e-14)
 
 
 def test_the_highest_level_sets_the_pieces():
