@@ -249,16 +249,8 @@ class Profile:
         V_cells = _cells.from_ppoly(V, x)
         if not (np.isfinite(V_cells).all() and np.isfinite(weight).all()):
             raise InputError("V and mass must be finite")
-        return cls._from_fields(
-            x,
-            [V_cells, weight],
-            left,
-            right,
-            units=units,
-            kind="polynomial",
-            title=title,
-            row_count=V.x.size - 1,
-        )
+        keywords = {"units": units, "title": title, "row_count": V.x.size - 1}
+        return cls._from_fields(x, [V_cells, weight], left, right, kind="polynomial", **keywords)
 
     @classmethod
     def from_function(
@@ -385,7 +377,9 @@ class Profile:
         cell, t = self.cell_of(x)
         value = _cells.evaluated(coefficients[cell.ravel()], t.ravel()).reshape(x.shape)
         value = np.where(x < self.x[0], left if self.left.kind == "open" else beyond_wall, value)
-        value = np.where(x > self.x[-1], right if self.right.kind == "open" else beyond_wall, value)
+        is_open = self.right.kind == "open"
+        beyond = x >= self.x[-1] if is_open else x > self.x[-1]  # there may be a jump to the edge
+        value = np.where(beyond, right if is_open else beyond_wall, value)
         return value if x.ndim else float(value)
 
     @cached_property

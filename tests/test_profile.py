@@ -71,7 +71,8 @@ def test_a_jump_has_a_value_on_each_side(interpolation):
 def test_jumps_at_both_ends_set_the_edges(interpolation):
     """The shortest table of a square well: each end row stands alone, outside all cells."""
     profile = Profile.from_rows([0, 0, 1, 1], [5.0, 0.0, 0.0, 4.0], interpolation=interpolation)
-    assert profile.V([-1.0, 0.0, 0.5, 1.5]).tolist() == [5.0, 0.0, 0.0, 4.0]
+    # At a jump V is the value on its right, and the last one is no exception.
+    assert profile.V([-1.0, 0.0, 0.5, 1.0, 1.5]).tolist() == [5.0, 0.0, 0.0, 4.0, 4.0]
     assert profile.cells == 1 and profile.open_edge == 4.0
     assert profile.rows.stretches() == [slice(1, 3)]
 
@@ -90,6 +91,8 @@ def test_open_edges_keep_the_last_values_and_walls_end_the_world():
     assert (profile.V(1e9), profile.m(1e9), profile.alpha(1e9)) == (0.3, 0.1, 0.0)
     assert profile.left.kind == "wall" and profile.right.kind == "open"
     assert profile.open_edge == 0.3
+    walls = Profile.from_layers([1.0], [0.2], left="wall", right="wall")
+    assert walls.V([0.0, 1.0]).tolist() == [0.2, 0.2]  # a wall begins beyond the last point
 
 
 def test_open_edge_is_the_lower_one():
@@ -103,7 +106,7 @@ def test_open_edge_is_the_lower_one():
 def test_a_step_table_has_its_last_row_at_the_edge():
     """The last row of a step table holds from there on: that is the open edge."""
     profile = Profile.from_rows([0, 1, 2], [0.5, 0.0, 0.7], interpolation="step")
-    assert profile.V([0.5, 1.5, 2.5]).tolist() == [0.5, 0.0, 0.7]
+    assert profile.V([0.5, 1.5, 2.0, 2.5]).tolist() == [0.5, 0.0, 0.7, 0.7]
     assert profile.open_edge == 0.5
 
 
