@@ -91,6 +91,22 @@ def test_probability_in_the_infinite_well(box, share):
     assert box.probability(-np.inf, START + share * WIDTH) == pytest.approx(exact, abs=1e-14)
 
 
+def test_digits_survive_far_from_the_origin(box):
+    """A device may stand at x = 10^6: <x^2> - <x>^2 taken there would be noise of 10^-4.
+
+    x itself is rounded to 10^-10 there, which bounds what can be kept.
+    """
+    far = solve(
+        Profile.from_layers([WIDTH], [0.0], 0.8, start=1e6, left="wall", right="wall",
+                            units=ATOMIC),
+        count=5,
+    )  # fmt: skip
+    assert far.spread_x == pytest.approx(box.spread_x, rel=1e-9)
+    assert far.mean_x == pytest.approx(box.mean_x - START + 1e6, abs=1e-9)
+    apart = ~np.eye(5, dtype=bool)
+    np.testing.assert_allclose(far.position[apart], box.position[apart], atol=1e-9)
+
+
 def test_probability_adds_up(box, step):
     """Parts that touch must share no point and leave none out; outside walls there is nothing."""
     for levels in (box, step):
