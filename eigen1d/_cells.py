@@ -306,17 +306,7 @@ def from_callable(V, mass, breaks, tolerance, unit=1.0):
         left, right = left[~good], right[~good]
         short = right - left < _SHORTEST * np.maximum(span, np.minimum(np.abs(left), np.abs(right)))
         if short.any() or left.size > _MOST_CELLS:
-            # The middle one of many on both sides, rounded to hide by how little it misses.
-            place = float(np.sort(left[short] if short.any() else left)[np.sum(short) // 2])
-            place = round(place, 11 - math.ceil(math.log10(max(span, abs(place))))) + 0.0
-            place = f"{place:.12g}"
-            raise TooRough(
-                f"no polynomial follows the function near x = {place}; if it jumps or has a kink "
-                f"there, write breaks=[{place}]"
-                if short.any()
-                else f"the function asks for more than {_MOST_CELLS} cells, at x = {place} and "
-                "elsewhere; if its values are noisy, give a larger tolerance, or rows to from_rows"
-            )
+            raise TooRough(_roughness(np.sort(left), np.sort(left[short]), breaks))
         middle = 0.5 * (left + right)
         left, right = np.concatenate([left, middle]), np.concatenate([middle, right])
     start = np.concatenate([d[0] for d in done])
@@ -324,6 +314,28 @@ def from_callable(V, mass, breaks, tolerance, unit=1.0):
     x = np.append(start[order], breaks[-1])
     fields = [np.concatenate([d[1][k] for d in done])[order] for k in (0, 1)]
     return x, [_power(spectrum) for spectrum in fields]
+
+
+def _roughness(left, short, breaks):
+    """What is wrong with a function: left ends of the cells that fail, and of the short ones."""
+    if not short.size:
+        return (
+            f"the function asks for more than {_MOST_CELLS} cells, at x = {left[0]:.12g} and "
+            "elsewhere; if its values are noisy, give a larger tolerance, or rows to from_rows"
+        )
+    # The middle one of many on both sides, rounded to hide by how little it misses.
+    place = float(short[short.size // 2])
+    digits = 11 - math.ceil(math.log10(max(breaks[-1] - breaks[0], abs(place))))
+    place = round(place, digits) + 0.0
+    if np.abs(breaks - place).min() <= 10.0**-digits:
+        return (
+            f"no polynomial follows the function up to x = {place:.12g}, as where it has a root or "
+            "a pole; end the span some way off, or give rows to from_rows"
+        )
+    return (
+        f"no polynomial follows the function near x = {place:.12g}; if it jumps or has a kink "
+        f"there, write breaks=[{place:.12g}]"
+    )
 
 
 def _fitted(at, values):

@@ -122,6 +122,9 @@ UNITS = 'units must be Units("nm", "eV") or the like; found '
         (lambda: from_function(lambda x: abs(x - 0.3), (-1, 2)),
          "no polynomial follows the function near x = 0.3; if it jumps or has a kink there, write "
          "breaks=[0.3]"),
+        (lambda: from_function(lambda x: abs(x) ** 0.5, (-1, 2), breaks=[0]),
+         "no polynomial follows the function up to x = 0, as where it has a root or a pole; end "
+         "the span some way off, or give rows to from_rows"),
         (lambda: from_function(np.cos, (0, 1), units="nm"), UNITS + "'nm'"),
         # changes
         (lambda: WALL.tilted(np.nan), "field must be finite; found nan"),
