@@ -73,7 +73,7 @@ def test_the_same_well_in_every_pair_of_units(length, energy):
 
 
 def test_atomic_units_convert_nothing():
-    """In bohr and hartree every factor is 1, not 1 to rounding: dimensionless problems stay exact."""
+    """In bohr and hartree every factor is 1, not 1 to rounding: pure numbers stay exact."""
     units = Units("bohr", "hartree")
     assert (units.bohr, units.hartree, units.electron_mass) == (1.0, 1.0, 1.0)
 
