@@ -11,7 +11,8 @@ from eigen1d import InputError, Profile, Units, solve
 from eigen1d.units import ENERGY_UNITS, LENGTH_UNITS, energy_in_hartree, length_in_bohr
 
 PAIRS = list(itertools.product(LENGTH_UNITS, ENERGY_UNITS))
-METRE = {"nm": 1e-9, "angstrom": 1e-10, "um": 1e-6, "m": 1.0, "bohr": constants.value("Bohr radius")}
+METRE = {"nm": 1e-9, "angstrom": 1e-10, "um": 1e-6, "m": 1.0}
+METRE["bohr"] = constants.value("Bohr radius")
 JOULE = {
     "eV": constants.e,
     "meV": constants.e / 1000,
