@@ -14,7 +14,7 @@ FLOORS = [
     {"units", "_files", "_checks", "_straight", "_table_faults"},
     {"_parts", "_kernels", "_table_text", "_table_header"},
     {"profile", "_search"},
-    {"_quadrature", "tables", "square_well", "closed_forms"},
+    {"_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
     {"levels"},
     {"shooting", "finite_difference"},
     {"solve"},
