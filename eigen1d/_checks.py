@@ -2,6 +2,7 @@
 
 import numpy as np
 
+from . import _cells
 from .errors import InputError
 
 
@@ -116,6 +117,26 @@ def check_mass(mass, alpha):
             f"alpha must not be negative; row {bad} has {alpha[bad]:g}. Levels are counted by "
             "nodes, which needs a mass that does not fall with energy"
         )
+
+
+def check_alpha(profile):
+    """Refuse an alpha that makes m (1 + alpha (E - V)) vanish at an energy above the least V."""
+    height = profile.V_cells.copy()
+    height[:, 0] -= profile.V_min
+    drop = _cells.product(profile.alpha_cells, height)
+    edges = [edge.alpha * (edge.V - profile.V_min) for edge in (profile.left, profile.right)]
+    if max(-_cells.minimum(-drop), *edges) < 1:
+        return
+    tried = [_cells.evaluated(drop, np.full(drop.shape[0], t)) for t in (0.0, 0.5, 1.0)]
+    k, cell = np.unravel_index(np.argmax(tried), (3, drop.shape[0]))
+    at = profile.x[cell] + 0.5 * k * (profile.x[cell + 1] - profile.x[cell])
+    rise = _cells.evaluated(height[cell : cell + 1], np.array([0.5 * k]))[0]
+    length, energy = profile.units.length, profile.units.energy
+    raise InputError(
+        f"alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at x = "
+        f"{at:g} {length} for E near the least V; V rises {rise:g} {energy} there and alpha must "
+        f"stay below {1 / rise:g} 1/{energy}"
+    )
 
 
 def sampler(name, function, positive=False):

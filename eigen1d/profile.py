@@ -67,6 +67,8 @@ class Profile:
         _check_units(self.units)
         if not (np.isfinite(self.V_cells).all() and (np.diff(self.x) > 0).all()):
             raise InputError("positions or energies leave the range of double precision")
+        if self.alpha_cells is not None:
+            _checks.check_alpha(self)
 
     # Making one ---------------------------------------------------------------------------------
 

@@ -22,7 +22,6 @@ from functools import cached_property
 import numpy as np
 
 from . import _kernels, _search
-from .errors import InputError
 from .levels import Budget, Levels
 
 EPS = np.finfo(float).eps
@@ -47,11 +46,6 @@ def find(profile, request):
     Returns
     -------
     Levels
-
-    Raises
-    ------
-    InputError
-        A nonparabolicity so large that the mass is not positive at energies where levels may lie.
     """
     search = Search(profile)
     first, last, notes = search.range(request)
@@ -79,7 +73,6 @@ class Search:
         natural = profile.natural()
         self.floor = profile.V_min
         self.edge = profile.open_edge
-        _check_alpha(profile)
         self.x, self.cells = _split(profile.x, natural, self.floor)
         self.left, self.right = _edge(natural.left), _edge(natural.right)
         # The deepest cell: where all levels of a single well live.
@@ -327,23 +320,6 @@ def _edge(edge):
     """An Edge as the kernels read it: is open, V, and the mass as mass + E * mass_per_energy."""
     per_energy = edge.mass * edge.alpha
     return np.array([edge.kind == "open", edge.V, edge.mass - per_energy * edge.V, per_energy])
-
-
-def _check_alpha(profile):
-    """Refuse an alpha that would turn the mass negative at some energy above the least V."""
-    if profile.alpha_cells is None:
-        return
-    x = np.concatenate([profile.x[:-1], 0.5 * (profile.x[:-1] + profile.x[1:]), profile.x[-1:]])
-    worst = np.argmin(1 + profile.alpha(x) * (profile.V_min - profile.V(x)))
-    drop = profile.alpha(x)[worst] * (profile.V(x)[worst] - profile.V_min)
-    if drop >= 1:
-        unit = profile.units.energy
-        raise InputError(
-            f"alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at "
-            f"x = {x[worst]:g} {profile.units.length} for E near the least V; V rises "
-            f"{profile.V(x)[worst] - profile.V_min:g} {unit} there and alpha must stay below "
-            f"{1 / (profile.V(x)[worst] - profile.V_min):g} 1/{unit}"
-        )
 
 
 def _split(x, natural, floor):

@@ -153,3 +153,35 @@ def test_a_function_that_fails_by_itself_keeps_its_own_error():
 
     with pytest.raises(ZeroDivisionError, match="mine"):
         from_function(broken, (0, 1))
+
+
+ALPHA_LIMIT = (
+    "alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at x = {x} nm for E "
+    "near the least V; V rises {rise} eV there and alpha must stay below {limit} 1/eV"
+)
+
+
+def test_an_alpha_that_turns_the_mass_negative_is_refused():
+    """No solver can count levels with such a mass; the limit named is the true one.
+
+    m (1 + alpha (E - V)) > 0 for every E above min V: alpha < 1 / (max V - min V), by hand.
+    """
+    x, V = [0, 1, 2, 3], [0, -1, -0.3, 0]
+    with pytest.raises(InputError) as caught:
+        from_rows(x, V, alpha=1.0)
+    assert str(caught.value) == ALPHA_LIMIT.format(x=0, rise=1, limit=1)
+    allowed = from_rows(x, V, alpha=0.999)
+    with pytest.raises(InputError) as caught:
+        allowed.scaled(2)
+    assert str(caught.value) == ALPHA_LIMIT.format(x=0, rise=2, limit=0.5)
+
+
+def test_the_alpha_limit_looks_inside_cells():
+    """A curved cell may be highest between its rows: the check must not sample rows only."""
+    x, V = [0, 1, 2, 3, 4], [0, 1, -1, 1, 0]
+    curved = from_rows(x, V, interpolation="smooth")
+    rise = max(curved.V(np.linspace(0, 4, 4001))) - curved.V_min
+    assert rise > max(V) - curved.V_min + 0.01  # what sampling the rows would see
+    from_rows(x, V, alpha=0.999 / rise, interpolation="smooth")
+    with pytest.raises(InputError, match="alpha is too large"):
+        from_rows(x, V, alpha=1.001 / rise, interpolation="smooth")
