@@ -31,7 +31,12 @@ class Request:
 
     @classmethod
     def checked(cls, profile, count=None, window=None):
-        """Return the request for `profile`; `InputError` if `count` or `window` makes no sense."""
+        """Return the request for `profile`; `InputError` if any of the three makes no sense."""
+        if not isinstance(profile, Profile):
+            raise InputError(
+                f"levels are those of a Profile; found {profile!r:.60}. Profile.from_rows, "
+                "Profile.from_layers or read_profile makes one"
+            )
         if count is not None and window is not None:
             raise InputError("give count or window, not both: a window returns all levels in it")
         if count is not None:

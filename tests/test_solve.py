@@ -126,6 +126,12 @@ def test_wrong_calls_say_what_to_write(well, keywords, message):
     assert str(caught.value) == message
 
 
+def test_something_else_than_a_profile_is_refused():
+    """The first mistake of a newcomer is to pass a path; the message says what makes a profile."""
+    with pytest.raises(InputError, match="levels are those of a Profile; found 'well.csv'"):
+        solve("well.csv")
+
+
 def test_default_is_every_bound_level(well):
     """A 10 nm well of 0.3 eV and mass 0.067: z0 = 3.64, so ceil(2 z0 / pi) = 3 levels.
 
