@@ -243,7 +243,7 @@ def test_morse_with_two_hundred_levels():
     a, mass = 1.0, 1.0
     depth = (210.51 * a) ** 2 / (2 * mass)
     curve = Profile.from_function(
-        lambda x: morse_potential(x, depth, a), (-1.0, 180.0), mass, units=ATOMIC
+        lambda x: morse_potential(x, depth, a), (-1.0, 45.0), mass, units=ATOMIC
     )
     exact = morse(depth, a, mass)
     assert len(exact) == 211
