@@ -31,7 +31,7 @@ class Request:
 
     @classmethod
     def checked(cls, profile, count=None, window=None):
-        """Return the request for `profile`; `InputError` if any of the three makes no sense."""
+        """Return the request for `profile`; `InputError` if it, `count` or `window` is none."""
         if not isinstance(profile, Profile):
             raise InputError(
                 f"levels are those of a Profile; found {profile!r:.60}. Profile.from_rows, "
