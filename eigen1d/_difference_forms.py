@@ -22,6 +22,7 @@ from functools import cached_property
 import numpy as np
 from numpy.polynomial.legendre import leggauss
 from scipy.linalg import eigh_tridiagonal
+from scipy.optimize import brentq
 
 from .errors import InputError
 
@@ -90,20 +91,13 @@ class FluxForm:
         height = energy - self.profile.V_min
         if not height > 0:
             return 0
-        diagonal, off = self.matrix(energy)
-        # A tolerance wider than the interval: LAPACK counts and refines nothing.
-        return eigh_tridiagonal(
-            diagonal, off, True, "v", (-height, height), False, tol=4 * height,
-            lapack_driver="stebz",
-        ).size  # fmt: skip
+        return _below(*self.matrix(energy), height)
 
-    def energies(self, first, last, guess=None):
-        """Energies of the levels first <= n < last; `guess` helps with an energy-dependent mass."""
+    def energies(self, first, last):
+        """Energies of the levels first <= n < last."""
         if self.mass_per_energy is None:
-            return self.profile.V_min + self._eigenvalues(first, last, 0.0)
-        if guess is None:
-            guess = np.full(last - first, self.profile.V_min)
-        return np.array([self._own_energy(first + i, E) for i, E in enumerate(guess)])
+            return self.profile.V_min + self._eigenvalues(first, last, self.profile.V_min)
+        return self.profile.V_min + np.array([self._own_height(n) for n in range(first, last)])
 
     def _eigenvalues(self, first, last, energy):
         """Eigenvalues first <= n < last, from min V, with the mass at one energy."""
@@ -115,20 +109,16 @@ class FluxForm:
             lapack_driver="stebz",
         )  # fmt: skip
 
-    def _own_energy(self, n, guess):
-        """The energy of level n with the mass taken at that same energy, by the secant rule."""
+    def _own_height(self, n):
+        """The height of level n above min V, with the mass taken at that same energy."""
 
-        def excess(energy):
-            return self.profile.V_min + self._eigenvalues(n, n + 1, energy)[0] - energy
+        def excess(height):
+            return self._eigenvalues(n, n + 1, self.profile.V_min + height)[0] - height
 
-        old, f_old = guess, excess(guess)
-        new = old + f_old
-        while new != old:
-            f_new = excess(new)
-            if abs(f_new) >= abs(f_old):  # rounding is reached
-                break
-            old, new, f_old = new, new - f_new * (new - old) / (f_new - f_old), f_new
-        return new
+        # The mass grows with the energy and makes the eigenvalue fall: that with the least mass is
+        # an upper limit, and the root is the only one. A little above, rounding has no say in that.
+        limit = excess(0.0) * (1 + 1e-6)
+        return brentq(excess, 0.0, limit, xtol=np.finfo(float).tiny, rtol=4 * EPS)
 
     def curvature(self, first, last):
         """Sum of stiffness times psi^2 for each level: what rounding of the matrix multiplies.
@@ -144,30 +134,58 @@ class FluxForm:
         return np.concatenate(out)
 
     def states(self, n):
-        """psi and phi = psi'/m at all nodes, each (count, nodes), for an array n of levels."""
+        """Wave functions of an array n of consecutive levels, positive in the leftmost lobe.
+
+        Returns
+        -------
+        psi, phi : ndarray, shape (count, nodes)
+            phi = psi'/m, which has no jumps.
+        mass : ndarray, shape (count, nodes - 1)
+            Integral of m over each interval, at the energy of each level.
+        """
         psi = np.zeros((n.size, self.x.size))
-        phi = np.zeros_like(psi)
-        for group in [n] if self.mass_per_energy is None else n[:, None]:
-            own = self.energies(group[0], group[-1] + 1)
-            diagonal, off = self.matrix(own[0])
+        own = self.energies(n[0], n[-1] + 1)
+        # Energies that share a matrix go to LAPACK together: it makes their vectors orthogonal.
+        groups = [slice(0, n.size)]
+        if self.mass_per_energy is not None:
+            groups = [slice(i, i + 1) for i in range(n.size)]
+        for rows in groups:
+            diagonal, off = self.matrix(own[rows][0])
             vectors = eigh_tridiagonal(
-                diagonal, off, False, "i", (group[0], group[-1]), False, lapack_driver="stebz"
+                diagonal, off, False, "i", (n[rows][0], n[rows][-1]), False, lapack_driver="stebz"
             )[1]
-            rows = slice(group[0] - n[0], group[-1] + 1 - n[0])
+            for vector, height in zip(vectors.T, own[rows] - self.profile.V_min, strict=True):
+                # Where psi is largest its sign tells how many zeros lie on the left.
+                top = np.abs(vector).argmax()
+                zeros = _below(diagonal[:top], off[: max(top - 1, 0)], height)
+                if (vector[top] > 0) == zeros % 2:
+                    vector *= -1
             psi[rows, 1:-1] = vectors.T / np.sqrt(self.width)
-            # The equation of half a dual cell: phi at a node from phi in the middle before it.
-            height = (own - self.profile.V_min)[:, None]
-            flux = np.diff(psi[rows]) / self._mass(own[0])
-            change = 2 * (self.V[1] - 0.5 * height * np.diff(self.x)) * psi[rows, 1:]
-            phi[rows, 1:] = flux + change
-            phi[rows, 0] = flux[:, 0]
-        return psi, phi
+        own = own[:, None]
+        mass = np.broadcast_to(self._mass(own), (n.size, self.mass.size))
+        # The equation of half a dual cell: phi at a node from phi in the middle before it.
+        phi = np.empty_like(psi)
+        flux = np.diff(psi) / mass
+        height = own - self.profile.V_min
+        phi[:, 1:] = flux + 2 * (self.V[1] - 0.5 * height * np.diff(self.x)) * psi[:, 1:]
+        phi[:, 0] = flux[:, 0]
+        return psi, phi, mass
 
     def halved(self):
         """Return the same on the grid with every interval halved."""
         x = np.empty(2 * self.x.size - 1)
         x[::2], x[1::2] = self.x, 0.5 * (self.x[:-1] + self.x[1:])
         return FluxForm.on(self.profile, x)
+
+
+def _below(diagonal, off, height):
+    """Number of eigenvalues below `height`, none of them being below -`height`."""
+    if not diagonal.size:
+        return 0
+    # A tolerance wider than the interval: LAPACK counts and refines nothing.
+    return eigh_tridiagonal(
+        diagonal, off, True, "v", (-height, height), False, tol=4 * height, lapack_driver="stebz"
+    ).size
 
 
 def _integrals(profile, x):
@@ -213,20 +231,8 @@ def numerov(profile, x, first, last):
     InputError
         Steps that differ, a mass that varies, a jump of V, or steps too long where V is high.
     """
-    step = np.diff(x)
-    h = (x[-1] - x[0]) / step.size
-    if np.abs(step - h).max() > 1e-9 * h:
-        raise InputError("the Numerov form needs equal steps; use the flux form")
-    if np.ptp(profile.mass_cells[:, 0]) or profile.mass_cells[:, 1:].any() or (
-        profile.alpha_cells is not None
-    ):
-        raise InputError("the Numerov form needs one constant mass; use the flux form")
-    jump = np.abs(profile.V_cells[1:, 0] - profile.V_cells[:-1].sum(axis=1))
-    if (jump > 1e-10 * np.ptp(profile.V(profile.x))).any():
-        raise InputError(
-            f"the Numerov form needs a V without jumps; it jumps at x = "
-            f"{profile.x[1 + jump.argmax()]:.12g}; use the flux form"
-        )
+    _check_numerov(profile, x)
+    h = (x[-1] - x[0]) / (x.size - 1)
     mass = profile.units.electron_mass * profile.mass_cells[0, 0]
     V = profile.V(x[1:-1])
 
@@ -254,3 +260,26 @@ def numerov(profile, x, first, last):
                 break
         out[i] = energy
     return out
+
+
+def _check_numerov(profile, x):
+    """Refuse what the Numerov form cannot do to order 4."""
+    step = np.diff(x)
+    if np.ptp(step) > 1e-9 * step.mean():
+        raise InputError("the Numerov form needs equal steps; use the flux form")
+    open_mass = [edge.mass for edge in (profile.left, profile.right) if edge.kind == "open"]
+    if (
+        np.ptp(np.append(profile.mass_cells[:, 0], open_mass))
+        or profile.mass_cells[:, 1:].any()
+        or (profile.alpha_cells is not None and profile.alpha_cells.any())
+    ):
+        raise InputError("the Numerov form needs one constant mass; use the flux form")
+    V = profile.V_cells
+    before = np.append(profile.left.V, V.sum(axis=1))
+    jump = np.abs(np.append(V[:, 0], profile.right.V) - before)
+    jump[(profile.x <= x[0]) | (profile.x >= x[-1])] = 0.0  # not on the grid
+    if jump.max() > 1e-10 * max(np.ptp(before), np.abs(V[:, 1:]).max(initial=0.0)):
+        raise InputError(
+            f"the Numerov form needs a V without jumps; it jumps at x = "
+            f"{profile.x[jump.argmax()]:.12g}; use the flux form"
+        )

@@ -15,6 +15,7 @@ from functools import cached_property
 
 import numpy as np
 
+from ._checks import choice, numbers
 from ._difference_forms import FluxForm, numerov
 from .errors import InputError
 from .levels import Budget, Levels
@@ -23,6 +24,7 @@ EPS = np.finfo(float).eps
 # The base grid: steps up to _STEP / k, or up to _SPREAD of the distance d from the nearest place
 # where the highest level moves: a tail exp(-kappa d) is resolved by steps that grow with d.
 _STEP, _SPREAD = 0.7, 0.35
+_LEAST_NODES = 17
 _BASE_INTERVALS = 1 << 14  # tables with more rows than this share intervals
 _FINEST = 1 << 18
 _RUNGS = 7  # grids in a ladder, at most
@@ -30,6 +32,7 @@ _WORK = 1 << 24  # levels times intervals on the finest grid, at most
 _STATE_RUNGS, _STATE_VALUES = 5, 1 << 24  # for wave functions: grids; values of psi, at most
 _TARGET = 1e-9  # of a level's height: the ladder ends where its estimate is below
 _LEAST_BINDING = 1e-14  # of the depth: the box holds the tails of levels bound by more
+_LEAST_WORTH_A_NOTE = 1e-12  # of the depth: errors below are mere rounding
 _TAIL = 20.0  # kappa times the length of the box: exp(-2 * 20) is far below rounding
 
 
@@ -45,13 +48,14 @@ def find(profile, request):
     -------
     Levels
         `bracket` is the energy plus and minus the error estimate. Levels bound by less than the
-        estimate are left out, which a note says; `complete` is False where a level lies so close to
-        an end of the window that it may be on the other side.
+        estimate are left out, which a note says if that is more than 1e-12 of the depth; `complete`
+        is False where a level lies so close to an end of the window that it may be on the other
+        side.
     """
     edge, count = profile.open_edge, request.count
     low, high = request.window or (-np.inf, np.inf)
     high = min(high, edge)
-    if high <= profile.V_min:
+    if high <= max(low, profile.V_min):
         return _levels(profile, np.arange(0), np.empty(0), np.empty(0), None)
     if np.isinf(high):
         ladder = _Ladder.up_to_level(profile, count)
@@ -59,15 +63,15 @@ def find(profile, request):
     ladder = _Ladder(profile, high)
     n, energy, error = ladder.between(low, high, count)
     listed, notes = (low < energy) & (energy < high), []
-    if count is not None:
-        listed &= n < count
     if high == edge:
-        unseen = listed & (edge - energy <= error)
+        # Also one that came out above the edge, as states of the box do to within rounding.
+        unseen = np.abs(edge - energy) <= error
         listed &= ~unseen
-        notes += [
-            f"a level bound by less than {least:.2g} {profile.units.energy} would not be seen"
-            for least in error[unseen][:1]
-        ]
+        least = error[unseen].max(initial=0.0)
+        if least > _LEAST_WORTH_A_NOTE * (edge - profile.V_min):
+            notes.append(
+                f"a level bound by less than {least:.2g} {profile.units.energy} would not be seen"
+            )
     ends = np.array([end for end in (low, high) if np.isfinite(end) and end != edge])
     complete = not (np.abs(energy[:, None] - ends) <= error[:, None]).any()
     if not complete:
@@ -104,8 +108,19 @@ def estimates(profile, first, last):
     -------
     energy, error : ndarray, shape (last - first,)
         In `profile.units.energy`.
+
+    Raises
+    ------
+    InputError
+        Numbers of levels that do not ascend, or far beyond what the profile binds.
     """
-    return _Ladder.up_to_level(profile, last).estimates(first, last)
+    if not 0 <= first < last:
+        raise InputError(f"first and last must be 0 <= first < last; found {first}, {last}")
+    ladder = _Ladder.up_to_level(profile, last)
+    room = ladder.rung(0).x.size - 2
+    if last > room:
+        raise InputError(f"no more than {room} states of the box can be told; found last = {last}")
+    return ladder.estimates(first, last)
 
 
 def on_grid(profile, x, first, last, form="flux"):
@@ -128,8 +143,9 @@ def on_grid(profile, x, first, last, form="flux"):
     Raises
     ------
     InputError
-        A grid with too few nodes, or one that the Numerov form cannot use, or a profile whose mass
-        varies or that jumps, for which the Numerov form is not of order 4.
+        A grid that has too few nodes, does not ascend or reaches beyond a wall, or one that the
+        Numerov form cannot use, or a profile whose mass varies or that jumps, for which the Numerov
+        form is not of order 4.
 
     Examples
     --------
@@ -140,12 +156,23 @@ def on_grid(profile, x, first, last, form="flux"):
     >>> on_grid(box, np.linspace(0, 1, 101), 0, 2).round(4)     # pi^2 (n + 1)^2 / 2 = 4.9348, ...
     array([ 4.9344, 19.7327])
     """
-    x = np.asarray(x, dtype=float)
-    if x.ndim != 1 or x.size < last + 2 or not (np.diff(x) > 0).all():
+    x = numbers("x", x)
+    choice("form", form, ("flux", "numerov"))
+    if not 0 <= first < last:
+        raise InputError(f"first and last must be 0 <= first < last; found {first}, {last}")
+    if x.size < last + 2 or not (np.diff(x) > 0).all():
         raise InputError(
             f"a grid needs ascending nodes, two more than the levels wanted ({last}); "
             f"found {x.size}"
         )
+    for edge, end, beyond in (
+        (profile.left, profile.x[0], x[0] < profile.x[0]),
+        (profile.right, profile.x[-1], x[-1] > profile.x[-1]),
+    ):
+        if edge.kind == "wall" and beyond:
+            raise InputError(
+                f"the grid, {x[0]:.12g} to {x[-1]:.12g}, reaches beyond the wall at x = {end:.12g}"
+            )
     if form == "numerov":
         return numerov(profile, x, first, last)
     return FluxForm.on(profile, x).energies(first, last)
@@ -215,7 +242,7 @@ class _Ladder:
         rounding = 4 * EPS * (self.rung(0).curvature(first, last) + height)
         for k in range(1, _RUNGS):
             form = self.rung(k)
-            row = [form.energies(first + todo[0], first + todo[-1] + 1, energy[todo])]
+            row = [form.energies(first + todo[0], first + todo[-1] + 1)]
             for j, before in enumerate(previous[:columns], start=1):
                 row.append(row[-1] + (row[-1] - before) / (4**j - 1))
             value, width = _least_spread(row, previous)
@@ -236,7 +263,9 @@ class _Ladder:
                 keep = slice(unfinished[0], unfinished[-1] + 1)
                 todo, row = todo[keep], [entry[keep] for entry in row]
             previous = row
-        return energy, error
+        # Where errors exceed what parts two levels their energies may come out in either order.
+        ascending = np.sort(energy)
+        return ascending, error + np.abs(ascending - energy)
 
     def _box_error(self, energy):
         """What the walls of the box can do to an energy, by the square of the tail cut off."""
@@ -293,6 +322,8 @@ def _base_grid(profile, top, box):
         next_open = np.minimum.accumulate(np.where(forbidden, np.inf, x[:-1])[::-1])[::-1]
         distance = np.minimum(x[:-1] - last_open, next_open - x[1:])
         long = width > np.maximum(_STEP / k, np.where(forbidden, _SPREAD * distance, 0.0))
+        if x.size < _LEAST_NODES:
+            long[:] = True
         if not long.any():
             break
         x = np.sort(np.concatenate([x, x[:-1][long] + 0.5 * width[long]]))
@@ -301,14 +332,23 @@ def _base_grid(profile, top, box):
 
 def _wave_numbers(profile, x, top):
     """The largest k or kappa at energies from min V to `top` in each interval; whether V >= top."""
-    samples = x[:-1] + np.array([[0.01], [0.5], [0.99]]) * np.diff(x)
-    V = profile.V(samples)
-    mass = profile.m(samples).max(axis=0) * profile.units.electron_mass
-    low, high = V.min(axis=0), V.max(axis=0)
+    ends = np.union1d(x, profile.x)  # more than x where intervals hold several rows
+    width = np.diff(ends)
+    cell, _ = profile.cell_of(ends[:-1] + 0.5 * width)
+    at = np.array([ends[:-1], ends[:-1] + 0.5 * width, np.nextafter(ends[1:], -np.inf)])
+    V, mass = profile.V(at), profile.m(at).max(axis=0) * profile.units.electron_mass
+    # Between its ends V bends away from the chord by no more than (width)^2 max |V''| / 8.
+    order = np.arange(profile.V_cells.shape[1])
+    bend = (np.abs(profile.V_cells) @ (order * (order - 1)))[cell] / 8
+    bend *= (width / np.diff(profile.x)[cell]) ** 2
+    bend[(ends[1:] <= profile.x[0]) | (ends[:-1] >= profile.x[-1])] = 0.0
+    low, high = V.min(axis=0) - bend, V.max(axis=0) + bend
     reach = np.maximum(top - low, high - profile.V_min)
     if profile.alpha_cells is not None:
-        mass = mass * (1 + profile.alpha(samples).max(axis=0) * np.maximum(top - low, 0))
-    return np.sqrt(2 * mass * reach), low >= top
+        mass = mass * (1 + profile.alpha(at).max(axis=0) * np.maximum(top - low, 0))
+    first = np.searchsorted(ends, x[:-1])
+    k = np.maximum.reduceat(np.sqrt(2 * mass * reach), first)
+    return k, np.logical_and.reduceat(low >= top, first)
 
 
 def _thinned(profile, top):
@@ -329,23 +369,24 @@ class States:
 
     @cached_property
     def _nodes(self):
-        """The grid, and psi and phi at its nodes."""
+        """Nodes of the grid, psi and phi at them, and the mass of the intervals."""
         form = self.ladder.rung(0)
         for k in range(1, _STATE_RUNGS):
             finer = self.ladder.rung(k)
             if finer.x.size * self.n.size > _STATE_VALUES:
                 break
             form = finer
-        return form, *form.states(self.n)
+        return form.x, *form.states(self.n)
 
     def sample(self, x):
         """psi and phi at x inside the cells, each of shape (count, points); not normalised."""
-        form, psi, phi = self._nodes
-        i = np.clip(np.searchsorted(form.x, x, side="right") - 1, 0, form.x.size - 2)
-        t = (x - form.x[i]) / np.diff(form.x)[i]
+        if not self.n.size:
+            return np.empty((0, x.size)), np.empty((0, x.size))
+        nodes, psi, phi, mass = self._nodes
+        i = np.clip(np.searchsorted(nodes, x, side="right") - 1, 0, nodes.size - 2)
+        t = (x - nodes[i]) / np.diff(nodes)[i]
         # Cubic through psi and psi' at both ends; psi' = m phi.
-        mass = form.mass[i] if form.mass_per_energy is None else form.mass[i]
         a, b = psi[:, i], psi[:, i + 1]
-        slope_a, slope_b = phi[:, i] * mass, phi[:, i + 1] * mass
+        slope_a, slope_b = phi[:, i] * mass[:, i], phi[:, i + 1] * mass[:, i]
         cubic = (1 - t) * (slope_a - b + a) - t * (slope_b - b + a)
         return (1 - t) * a + t * b + t * (1 - t) * cubic, (1 - t) * phi[:, i] + t * phi[:, i + 1]
