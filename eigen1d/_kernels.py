@@ -17,6 +17,7 @@ import numpy as np
 from numba import types
 
 from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, LARGEST, kernel
+from ._straight import graded as _graded
 from ._straight import straight as _straight
 
 _TERMS = 96  # most terms of a series; a cell that asks for more is cut further
@@ -313,25 +314,42 @@ def _cross(
 
 
 @kernel
-def _is_plain(V, mass, per_energy):
-    """Whether all cells have straight V and constant mass."""
-    return V.shape[1] <= 2 and mass.shape[1] == 1 and per_energy.shape[1] == 0
+def _shape(V, mass, per_energy):
+    """0: all cells have straight V and constant mass; 1: V and mass are straight; 2: neither."""
+    if V.shape[1] > 2 or mass.shape[1] > 2 or per_energy.shape[1] > 2:
+        return 2
+    return 0 if mass.shape[1] == 1 and per_energy.shape[1] == 0 else 1
+
+
+@kernel
+def _line(coefficients, cell, backward, fraction):
+    """Value and slope of a straight line over the first `fraction` of a cell."""
+    size = coefficients.shape[1]
+    value = coefficients[cell, 0] if size > 0 else 0.0
+    slope = coefficients[cell, 1] if size > 1 else 0.0
+    if backward:
+        value, slope = value + slope, -slope
+    return value, slope * fraction
 
 
 @kernel
 def _advance(
-    V, mass, per_energy, plain, cell, h, backward, fraction, state, lanes, low, high, log, scratch
+    V, mass, per_energy, shape, cell, h, backward, fraction, state, lanes, low, high, log, scratch
 ):
     """Carry `state` (see `_straight`) across part of a cell in the cheapest way that is exact.
 
     Returns about how many steps amplitudes may have grown by.
     """
-    if plain:
-        v, slope = V[cell, 0], V[cell, 1] if V.shape[1] == 2 else 0.0
-        if backward:
-            v, slope = v + slope, -slope
-        if _straight(state, v, slope * fraction, mass[cell, 0], h * fraction, low, high):
-            return 1
+    if shape < 2:
+        v, slope = _line(V, cell, backward, fraction)
+        m, m_slope = _line(mass, cell, backward, fraction)
+        if shape == 0:
+            if _straight(state, v, slope, m, h * fraction, low, high):
+                return 1
+        else:
+            q, q_slope = _line(per_energy, cell, backward, fraction)
+            if _graded(state, v, slope, m, m_slope, q, q_slope, h * fraction, low, high):
+                return 1
     energies = state[5 * LANES : 5 * LANES + lanes]
     return _cross(
         V, mass, per_energy, cell, h, backward, fraction, energies, low, high,
@@ -387,7 +405,7 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     p_carry, f_carry = state[2 * LANES : 2 * LANES + lanes], state[3 * LANES : 3 * LANES + lanes]
     count, log = state[4 * LANES : 4 * LANES + lanes], np.zeros(lanes)
     scratch = _scratch()
-    plain = _is_plain(V, mass, per_energy)
+    shape = _shape(V, mass, per_energy)
     low, high = energies.min(), energies.max()
     for lane in range(lanes):
         p[lane], f[lane] = _start(edge, energies[lane])
@@ -407,7 +425,7 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
             return
         cell = node - 1 if backward else node
         age += _advance(
-            V, mass, per_energy, plain, cell, width[cell], backward, 1.0,
+            V, mass, per_energy, shape, cell, width[cell], backward, 1.0,
             state, lanes, low, high, log, scratch,
         )  # fmt: skip
         if age >= _AGE:
@@ -448,7 +466,7 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
     if energies.size == 0:
         return
     width, V, mass, per_energy = cells
-    plain = _is_plain(V, mass, per_energy)
+    shape = _shape(V, mass, per_energy)
     scratch = _scratch()
     low, high = energies.min(), energies.max()
     state, log, level_of = np.zeros(6 * LANES), np.zeros(LANES), np.empty(LANES, np.int64)
@@ -472,7 +490,7 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
                     continue
                 state[2 * LANES : 4 * LANES] = 0.0
                 _advance(
-                    V, mass, per_energy, plain, c, width[c], side == 1, part,
+                    V, mass, per_energy, shape, c, width[c], side == 1, part,
                     state, lanes, low, high, log, scratch,
                 )  # fmt: skip
                 for lane in range(lanes):

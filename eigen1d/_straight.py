@@ -1,7 +1,9 @@
-"""Cells of straight V and constant mass in vector lanes: what tables of many rows consist of.
+"""Cells of straight V and straight mass in vector lanes: what tables of many rows consist of.
 
-With t in [0, 1] across the cell and h psi' = m h phi, psi'' = (z + s t) psi gives the power series
-a_(k+2) = (z a_k + s a_(k-1)) / ((k+1) (k+2)), and nothing else.
+With t in [0, 1] across the cell, psi = sum a_k t^k and phi = sum b_k t^k. Of constant mass,
+psi'' = (z + s t) psi gives a_(k+2) = (z a_k + s a_(k-1)) / ((k+1) (k+2)), and nothing else. With a
+mass that is a straight line (in t, and at each energy), psi' = (m_0 + m_1 t) phi and
+phi' = (w_0 + w_1 t) psi give both series side by side.
 """
 
 import numpy as np
@@ -89,4 +91,90 @@ def straight(state, v, slope, mass, h, low, high):
         _straight_12(state, v, scale, s, mass * h)
     else:
         _straight_22(state, v, scale, s, mass * h)
+    return True
+
+
+def _graded_step(terms):
+    """Make the kernel that crosses a short cell of straight V and mass with `terms` terms."""
+
+    @kernel
+    def step(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h):
+        for lane in range(LANES):
+            p, f = state[lane], state[LANES + lane]
+            energy = state[5 * LANES + lane]
+            w = 2.0 * h * (v - energy)
+            w_slope = 2.0 * h * slope
+            m = h * (mass + energy * per_energy)
+            m_slope = h * (mass_slope + energy * per_energy_slope)
+            a, b, a_before, b_before = p, f, 0.0, 0.0
+            gain_p, gain_f = 0.0, 0.0
+            for k in range(terms):
+                a_next = (m * b + m_slope * b_before) * (1.0 / (k + 1.0))
+                b_next = (w * a + w_slope * a_before) * (1.0 / (k + 1.0))
+                gain_p += a_next
+                gain_f += b_next
+                a_before, b_before, a, b = a, b, a_next, b_next
+            gain_p += state[2 * LANES + lane]
+            new_p = p + gain_p
+            part = new_p - p
+            state[2 * LANES + lane] = (p - (new_p - part)) + (gain_p - part)
+            state[lane] = new_p
+            gain_f += state[3 * LANES + lane]
+            new_f = f + gain_f
+            part = new_f - f
+            state[3 * LANES + lane] = (f - (new_f - part)) + (gain_f - part)
+            state[LANES + lane] = new_f
+            was = (p > 0.0) | ((p == 0.0) & (f > 0.0))
+            now = (new_p > 0.0) | ((new_p == 0.0) & (new_f > 0.0))
+            state[4 * LANES + lane] += 1.0 if was != now else 0.0
+
+    return step
+
+
+_graded_6, _graded_10, _graded_24 = _graded_step(6), _graded_step(10), _graded_step(24)
+
+
+@kernel
+def _mass_size(mass, per_energy, far, h):
+    """Largest size of h (mass + E per_energy) for |E| up to `far`."""
+    return h * (abs(mass) + abs(per_energy) * far)
+
+
+@kernel
+def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, low, high):
+    """Cross a cell of straight V and mass; False, and nothing done, if it is too long.
+
+    As `straight`; the majorant starts from (1, eta) with eta such that both series have the rate
+    zeta = sqrt(2 m |V - E|) h.
+    """
+    far = max(abs(low), abs(high))
+    m = _mass_size(mass, per_energy, far, h)
+    m_slope = _mass_size(mass_slope, per_energy_slope, far, h)
+    w, w_slope = 2.0 * h * max(abs(v - low), abs(v - high)), 2.0 * h * abs(slope)
+    size = (m + m_slope) * (w + w_slope)
+    if size > LARGEST:
+        return False
+    zeta = np.sqrt(size)
+    eta = zeta / (m + m_slope)
+    m, m_slope = m * eta, m_slope * eta
+    w, w_slope = w / eta, w_slope / eta
+    target = 0.03 * EPS * zeta
+    a, b, a_before, b_before = 1.0, 1.0, 0.0, 0.0
+    terms, quiet = 0, 0
+    while quiet < 3 and terms < 27:
+        inverse = 1.0 / (terms + 1.0)
+        a, b, a_before, b_before = (
+            (m * b + m_slope * b_before) * inverse, (w * a + w_slope * a_before) * inverse, a, b
+        )  # fmt: skip
+        terms += 1
+        quiet = quiet + 1 if max(a, b) <= target else 0
+    terms -= quiet
+    if quiet < 3 or terms > 24:
+        return False
+    if terms <= 6:
+        _graded_6(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+    elif terms <= 10:
+        _graded_10(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+    else:
+        _graded_24(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
     return True

@@ -156,8 +156,8 @@ def test_a_function_that_fails_by_itself_keeps_its_own_error():
 
 
 ALPHA_LIMIT = (
-    "alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at x = {x} nm for E "
-    "near the least V; V rises {rise} eV there and alpha must stay below {limit} 1/eV"
+    "alpha is too large for this profile: m (1 + alpha (E - V)) is not positive at x = {x} nm for "
+    "E near the least V; V rises {rise} eV there and alpha must stay below {limit} 1/eV"
 )
 
 
