@@ -32,7 +32,7 @@ _GROUP = 16  # wave functions found at a time, where they need not be orthogonal
 
 @dataclass(frozen=True, eq=False)
 class FluxForm:
-    """The finite-difference equations on one grid, psi = 0 at its ends.
+    """The finite-difference equations on one grid, psi = 0 or phi = 0 at its ends.
 
     Attributes
     ----------
@@ -42,6 +42,8 @@ class FluxForm:
         Integral of V - min V over the left and right half of each interval.
     mass, mass_per_energy : ndarray, shape (nodes - 1,)
         Integral of m over each interval at energy E: mass + E * mass_per_energy.
+    free : (bool, bool)
+        Whether phi = 0, instead of psi = 0, at the left and the right end.
     """
 
     profile: object
@@ -49,9 +51,10 @@ class FluxForm:
     V: np.ndarray
     mass: np.ndarray
     mass_per_energy: np.ndarray | None
+    free: tuple[bool, bool] = (False, False)
 
     @classmethod
-    def on(cls, profile, x):
+    def on(cls, profile, x, free=(False, False)):
         """Integrate V and m of a profile over the intervals of a grid."""
         halves = np.empty(2 * x.size - 1)
         halves[::2], halves[1::2] = x, 0.5 * (x[:-1] + x[1:])
@@ -62,12 +65,19 @@ class FluxForm:
             V.reshape(-1, 2).T,
             mass.reshape(-1, 2).sum(axis=1),
             None if per_energy is None else per_energy.reshape(-1, 2).sum(axis=1),
+            free,
         )
+
+    @property
+    def unknown(self):
+        """slice: the nodes where psi is unknown, all but the ends where it is 0."""
+        left, right = self.free
+        return slice(0 if left else 1, self.x.size if right else self.x.size - 1)
 
     @cached_property
     def width(self):
-        """ndarray, shape (nodes - 2,): widths of the dual cells."""
-        return 0.5 * (self.x[2:] - self.x[:-2])
+        """ndarray, shape (unknowns,): widths of the dual cells."""
+        return _sums_at_nodes(0.5 * np.diff(self.x))[self.unknown]
 
     def _mass(self, energy):
         if self.mass_per_energy is None:
@@ -77,10 +87,11 @@ class FluxForm:
     def matrix(self, energy):
         """Diagonal and off-diagonal, symmetrised: energies from min V, the mass at `energy`."""
         stiffness = 0.5 / self._mass(energy)
-        V = self.V[1, :-1] + self.V[0, 1:]
-        diagonal = (stiffness[:-1] + stiffness[1:] + V) / self.width
+        own = _sums_at_nodes(stiffness) + _sums_at_nodes(self.V[1], self.V[0])
         root = np.sqrt(self.width)
-        return diagonal, -stiffness[1:-1] / (root[:-1] * root[1:])
+        left, right = self.free
+        between = stiffness[0 if left else 1 : stiffness.size - (not right)]
+        return own[self.unknown] / self.width, -between / (root[:-1] * root[1:])
 
     def count(self, energy):
         """Number of levels of this grid below an energy.
@@ -160,7 +171,7 @@ class FluxForm:
                 zeros = _below(diagonal[:top], off[: max(top - 1, 0)], height)
                 if (vector[top] > 0) == zeros % 2:
                     vector *= -1
-            psi[rows, 1:-1] = vectors.T / np.sqrt(self.width)
+            psi[rows, self.unknown] = vectors.T / np.sqrt(self.width)
         own = own[:, None]
         mass = np.broadcast_to(self._mass(own), (n.size, self.mass.size))
         # The equation of half a dual cell: phi at a node from phi in the middle before it.
@@ -175,7 +186,15 @@ class FluxForm:
         """Return the same on the grid with every interval halved."""
         x = np.empty(2 * self.x.size - 1)
         x[::2], x[1::2] = self.x, 0.5 * (self.x[:-1] + self.x[1:])
-        return FluxForm.on(self.profile, x)
+        return FluxForm.on(self.profile, x, self.free)
+
+
+def _sums_at_nodes(before, after=None):
+    """What the intervals before and after each node add up to, shape (nodes,)."""
+    total = np.zeros(before.size + 1)
+    total[1:] += before
+    total[:-1] += before if after is None else after
+    return total
 
 
 def _below(diagonal, off, height):

@@ -27,7 +27,7 @@ _STEP, _SPREAD = 0.7, 0.35
 _LEAST_NODES = 17
 _BASE_INTERVALS = 1 << 14  # tables with more rows than this share intervals
 _FINEST = 1 << 18
-_RUNGS = 7  # grids in a ladder, at most
+_RUNGS = 9  # grids in a ladder, at most
 _WORK = 1 << 24  # levels times intervals on the finest grid, at most
 _STATE_RUNGS, _STATE_VALUES = 5, 1 << 24  # for wave functions: grids; values of psi, at most
 _TARGET = 1e-9  # of a level's height: the ladder ends where its estimate is below
@@ -184,10 +184,10 @@ def on_grid(profile, x, first, last, form="flux"):
 class _Ladder:
     """Grids of a profile, each with half the steps of the one before, for energies up to `top`."""
 
-    def __init__(self, profile, top):
+    def __init__(self, profile, top, free=(False, False)):
         self.profile, self.top = profile, top
-        self._box = _box(profile, top)
-        self._rungs = [FluxForm.on(profile, _base_grid(profile, top, self._box))]
+        self._box = _box(profile, top, free)
+        self._rungs = [FluxForm.on(profile, _base_grid(profile, top, self._box), free)]
 
     @classmethod
     def up_to_level(cls, profile, last):
@@ -226,12 +226,28 @@ class _Ladder:
             first, last = first - more_below, last + more_above
 
     def estimates(self, first, last):
-        """Extrapolated energies of the levels first <= n < last, and estimates of their errors.
+        """Energies of the levels first <= n < last, and estimates of their errors."""
+        # With a neighbour on each side, whose distance tells whether extrapolation can be trusted.
+        low, high = max(first - 1, 0), min(last + 1, self.rung(0).width.size)
+        energy, error, blind = self._extrapolated(low, high)
+        if blind.any():
+            told, doubt = self._at_edge(np.flatnonzero(blind) + low, energy[blind])
+            error[blind] += np.abs(told - energy[blind]) + doubt
+            energy[blind] = told
+        # Where errors exceed what parts two levels their energies may come out in either order.
+        ascending = np.sort(energy)
+        error += np.abs(ascending - energy)
+        return ascending[first - low : last - low], error[first - low : last - low]
+
+    def _extrapolated(self, first, last):
+        """Energies, estimates of their errors, and whether they rest on a grid that is blind.
 
         Of the last row of Richardson's table the entry is taken that differs least from its
         neighbours; the difference, which is nearer to the error of the worse of the two, is its
         estimate. No estimate may fall faster from rung k - 1 to rung k than by 4^(k + 1), as in the
         smoothest of profiles: a coincidence must not pass for convergence.
+
+        A grid is blind to a level that it does not bind: the energy there is that of the box.
         """
         # Intervals that hold several rows each have errors without an expansion to rely on.
         columns = 1 if self.profile.cells > _BASE_INTERVALS else _RUNGS
@@ -240,20 +256,25 @@ class _Ladder:
         todo, spread = np.arange(last - first), np.zeros(last - first)
         height = energy - self.profile.V_min
         rounding = 4 * EPS * (self.rung(0).curvature(first, last) + height)
+        edge = np.inf if any(self.rung(0).free) else self.profile.open_edge
+        last_blind = np.where(energy >= edge - rounding, 0, -1)
+        blind = last_blind == 0
         for k in range(1, _RUNGS):
             form = self.rung(k)
             row = [form.energies(first + todo[0], first + todo[-1] + 1)]
             for j, before in enumerate(previous[:columns], start=1):
                 row.append(row[-1] + (row[-1] - before) / (4**j - 1))
-            value, width = _least_spread(row, previous)
+            value, width, column = _least_spread(row, previous)
             spread[todo] = width = np.maximum(width, spread[todo] / 4.0 ** (k + 1))
             rounding *= 4  # the stiffness of half an interval is twice as large, on both sides
-            total = 2 * width + rounding[todo] + self._box_error(value)
+            last_blind[todo[row[0] >= edge - rounding[todo]]] = k
+            total = 2 * width + rounding[todo] + self._box_error(value) + _mixing(row[0], value)
             moved = np.abs(value - energy[todo])
             refuted = moved > error[todo]
             total[refuted] = np.maximum(total, moved)[refuted]
             taken = refuted | (total < error[todo])
             energy[todo[taken]], error[todo[taken]] = value[taken], total[taken]
+            blind[todo[taken]] = (last_blind[todo] >= k - column)[taken]
             if k > 1:
                 target = _TARGET * (energy[todo] - self.profile.V_min)
                 unfinished = np.flatnonzero(error[todo] > np.maximum(target, 4 * rounding[todo]))
@@ -263,15 +284,44 @@ class _Ladder:
                 keep = slice(unfinished[0], unfinished[-1] + 1)
                 todo, row = todo[keep], [entry[keep] for entry in row]
             previous = row
-        # Where errors exceed what parts two levels their energies may come out in either order.
-        ascending = np.sort(energy)
-        return ascending, error + np.abs(ascending - energy)
+        return energy, error, blind
+
+    def _at_edge(self, n, energy):
+        """Energies of levels next to the open edge, to first order in kappa; their doubt.
+
+        With phi = 0 instead of tails a level stays smooth where it ceases to be bound, and is never
+        above its true place (minimax). It is bound if then below the edge, by what the tails of
+        kappa = sqrt(2 m B) make up for: the sum of kappa psi^2 / (2 m) over the ends at that edge.
+        """
+        profile, edge = self.profile, self.profile.open_edge
+        edges = profile.left, profile.right
+        near = edge + _LEAST_BINDING * (edge - profile.V_min)
+        free = _Ladder(profile, edge, tuple(e.kind == "open" and e.V <= near for e in edges))
+        form = free.rung(2)
+        told, doubt = np.maximum(energy, edge), np.zeros(n.size)
+        chosen = n <= form.count(edge)
+        if chosen.any():
+            first, last = n[chosen][0], n[chosen][-1] + 1
+            part = n[chosen] - first
+            level, error = (values[part] for values in free.estimates(first, last))
+            psi = form.states(np.arange(first, last))[0][part]
+            tails = sum(
+                psi[:, end] ** 2 / np.sqrt(e.mass * profile.units.electron_mass)
+                for e, end, is_free in zip(edges, (0, -1), form.free, strict=True)
+                if is_free
+            )
+            least, most = (
+                np.minimum(2 * (below / tails) ** 2, below)
+                for below in (np.maximum(edge - level, 0), np.maximum(edge - level + error, 0))
+            )
+            told[chosen], doubt[chosen] = edge - least, most - least
+        return told, doubt
 
     def _box_error(self, energy):
         """What the walls of the box can do to an energy, by the square of the tail cut off."""
         total = np.zeros_like(energy)
         for edge, length in zip((self.profile.left, self.profile.right), self._box, strict=True):
-            if edge.kind == "open":
+            if length > 0:
                 mass = edge.mass * (1 + edge.alpha * (self.top - edge.V))
                 mass *= self.profile.units.electron_mass
                 kappa = np.sqrt(2 * mass * np.maximum(edge.V - energy, 0))
@@ -280,7 +330,7 @@ class _Ladder:
 
 
 def _least_spread(row, previous):
-    """Of a row of Richardson's table, the entry nearest to its neighbours; and how near it is."""
+    """Of a row of Richardson's table, the entry nearest to its neighbours; how near; its column."""
     spread = np.array(
         [
             np.maximum(abs(row[j] - row[j - 1]), abs(row[j] - previous[min(j, len(previous) - 1)]))
@@ -289,14 +339,26 @@ def _least_spread(row, previous):
     )
     best = spread.argmin(axis=0)
     level = np.arange(best.size)
-    return np.array(row)[1 + best, level], spread[best, level]
+    return np.array(row)[1 + best, level], spread[best, level], 1 + best
 
 
-def _box(profile, top):
+def _mixing(raw, value):
+    """What levels may be off by that lie as close together on a grid as its errors are large.
+
+    Where wells differ more by the errors of the grid than by what couples them, levels follow those
+    errors, smoothly, and the coupling shows only on finer grids: extrapolation sees none of it.
+    """
+    shift = np.abs(np.diff(value - raw))
+    mixed = shift > 0.25 * np.diff(raw)
+    run = np.concatenate([[0], np.cumsum(~mixed)])
+    return np.bincount(run[1:], np.where(mixed, shift, 0.0), minlength=run[-1] + 1)[run]
+
+
+def _box(profile, top, free):
     """How far the box reaches beyond each end of the cells: (left, right), 0 at a wall."""
     lengths = []
-    for edge in (profile.left, profile.right):
-        if edge.kind == "wall":
+    for edge, is_free in zip((profile.left, profile.right), free, strict=True):
+        if edge.kind == "wall" or is_free:
             lengths.append(0.0)
             continue
         binding = max(edge.V - top, _LEAST_BINDING * (edge.V - profile.V_min))
