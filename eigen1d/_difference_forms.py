@@ -258,9 +258,11 @@ def numerov(profile, x, first, last):
     def linearised(energy):
         g = 2 * mass * (V - energy)
         if (g >= 12 / h**2).any():
+            # At the very ends V may be higher still, and the nodes of a finer grid come close.
+            highest = 2 * mass * (profile.V(x).max() - energy)
             raise InputError(
                 "the Numerov form turns negative where V is high; use steps below "
-                f"{np.sqrt(12 / g.max()):.3g}, found {h:.3g}"
+                f"{np.sqrt(12 / highest):.3g}, found {h:.3g}"
             )
         G = g / (1 - h**2 * g / 12)
         slope = 2 * mass / (1 - h**2 * g / 12) ** 2
