@@ -258,8 +258,8 @@ def numerov(profile, x, first, last):
     def linearised(energy):
         g = 2 * mass * (V - energy)
         if (g >= 12 / h**2).any():
-            # At the very ends V may be higher still, and the nodes of a finer grid come close.
-            highest = 2 * mass * (profile.V(x).max() - energy)
+            # A finer grid also meets V that lies between the nodes of this one and its ends.
+            highest = 2 * mass * (profile.V(x).max() - profile.V_min)
             raise InputError(
                 "the Numerov form turns negative where V is high; use steps below "
                 f"{np.sqrt(12 / highest):.3g}, found {h:.3g}"
