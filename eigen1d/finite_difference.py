@@ -376,7 +376,13 @@ def _base_grid(profile, top, box):
     x = profile.x
     if profile.cells > _BASE_INTERVALS:
         x = _thinned(profile, top)
-    x = np.unique(np.concatenate([[x[0] - box[0]], x, [x[-1] + box[1]]]))
+    # Halvings that a tail needs in any case, down to the length of the cells.
+    span = x[-1] - x[0]
+    left, right = (
+        length * 0.5 ** np.arange(1 + max(0, np.log2(length / span))) if length else np.empty(0)
+        for length in box
+    )
+    x = np.unique(np.concatenate([x[0] - left, x, x[-1] + right]))
     while x.size <= 4 * _BASE_INTERVALS:
         width = np.diff(x)
         k, forbidden = _wave_numbers(profile, x, top)
