@@ -11,6 +11,10 @@ from numba import types
 LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
 LARGEST = 2.25  # of 2 m |V - E| h^2 in a series step; < pi^2: at most one zero of psi in it
 EPS = np.finfo(np.float64).eps
+# Most terms of a series: in the two kinds of vector lanes, and in general. FLAT and TOO_LONG stand
+# in their place for a cell that is crossed in closed form, and for one that must be cut first.
+STRAIGHT_TERMS, GRADED_TERMS, SERIES_TERMS = 22, 24, 96
+FLAT, TOO_LONG = 0, 255
 
 
 def kernel(function=None, signature=None):
@@ -26,12 +30,13 @@ def kernel(function=None, signature=None):
     )
 
 
-def _given(dimensions, contiguous=False):
+def given(dimensions, contiguous=False):
     """Type of an array that a kernel only reads."""
     layout = "C" if contiguous else "A"
     return types.Array(types.float64, dimensions, layout, readonly=True)
 
 
-CELLS = types.Tuple((_given(1), _given(2), _given(2), _given(2)))
-EDGE = _given(1)
-FLOATS, INTEGERS = types.float64[::1], types.int64[::1]
+# Of cells: width; V, mass, mass_per_energy as seen from the left; the same from the right; terms.
+CELLS = types.Tuple((given(1), *[given(2)] * 6, types.Array(types.uint8, 1, "A", readonly=True)))
+EDGE = given(1)
+FLOATS, INTEGERS, COUNTS = types.float64[::1], types.int64[::1], types.uint8[::1]

@@ -2,10 +2,9 @@
 
 On a cell of width h, with t in [0, 1]:  psi' = m phi,  phi' = 2 (V - E) psi.  phi = psi'/m is what
 stays continuous where the mass jumps. V and m are polynomials in t, the mass also linear in E:
-m = mass + E * mass_per_energy. A cell is crossed in one of two ways:
+m = mass + E * mass_per_energy. How a cell is crossed was decided beforehand, see `_plan`:
 
-series    Power series of the solution by a two-term recurrence. Cells are cut so that
-          2 m |V - E| h^2 <= LARGEST: some 20 terms reach rounding, and psi has at most one zero.
+series    Power series of the solution by a two-term recurrence, in short cells.
 constant  cos/sin or tanh, for cells of constant V and m of any width, which no table of layers
           should pay for by subdivision.
 
@@ -16,117 +15,79 @@ Sweeping to the left is sweeping to the right through the mirror image, where ph
 import numpy as np
 from numba import types
 
-from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, LARGEST, kernel
-from ._straight import graded as _graded
-from ._straight import straight as _straight
+from ._compiled import CELLS, EDGE, FLAT, FLOATS, INTEGERS, LANES, SERIES_TERMS, kernel
+from ._plan import shape
+from ._straight import graded, straight
 
-_TERMS = 96  # most terms of a series; a cell that asks for more is cut further
-_DEGREE = 32  # most coefficients of a polynomial
 _BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
 _LOG_BIG = 300 * np.log(2.0)
 _AGE = 16  # steps between two looks at amplitudes: far from enough to leave the range of doubles
-_MOST_PARTS = 1 << 20  # of a cell
+# Rows of LANES numbers in the scratch of a series, see `_series`.
+_A = 2
+_B = _A + SERIES_TERMS + 1
+_M = _B + SERIES_TERMS + 1
 
 
 @kernel
-def _polynomial(coefficients, cell, backward, start, ratio, out):
-    """Write the coefficients of p(start + ratio t) into `out` and return how many there are.
-
-    With `backward` t counts from the cell's right end to its left. Horner's scheme, shifted.
-    """
-    size = coefficients.shape[1]
-    while size > 1 and coefficients[cell, size - 1] == 0.0:
-        size -= 1
-    for j in range(size):
-        out[j] = coefficients[cell, j]
-    if size == 1:
-        return size
-    offset, scale = (1.0 - start, -ratio) if backward else (start, ratio)
-    if offset != 0.0:
-        for k in range(size - 1):
-            for j in range(size - 2, k - 1, -1):
-                out[j] += offset * out[j + 1]
-    power = 1.0
-    for j in range(1, size):
-        power *= scale
-        out[j] *= power
-    return size
-
-
-@kernel
-def _sum_abs(c, first, size):
-    total = 0.0
-    for j in range(first, size):
-        total += abs(c[j])
-    return total
-
-
-@kernel
-def _terms(w, mass, zeta, w_size, m_size, majorant):
-    """How many terms of the series are needed, from a majorant of its coefficients.
-
-    `w` and `mass` hold absolute values, already multiplied by h. The state starts as (1, eta) with
-    eta such that both equations have the same rate zeta = sqrt(2 m |V - E|) h. Terms are dropped
-    when they are below rounding relative to the first one, so that what is lost in a million small
-    cells stays below rounding too. Returns _TERMS if that many do not suffice.
-    """
-    m_total, w_total = _sum_abs(mass, 0, m_size), _sum_abs(w, 0, w_size)
-    eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
-    majorant[0, 0] = 1.0
-    majorant[1, 0] = eta
-    target = 0.03 * EPS * zeta
-    quiet = 0
-    for k in range(_TERMS - 1):
-        psi = 0.0
-        for j in range(min(k + 1, m_size)):
-            psi += mass[j] * majorant[1, k - j]
-        phi = 0.0
-        for j in range(min(k + 1, w_size)):
-            phi += w[j] * majorant[0, k - j]
-        majorant[0, k + 1] = psi / (k + 1)
-        majorant[1, k + 1] = phi / (k + 1)
-        small = majorant[0, k + 1] <= target and majorant[1, k + 1] <= target * eta
-        quiet = quiet + 1 if small else 0
-        if quiet > max(m_size, w_size):
-            return max(k + 1 - quiet + 1, 1)
-    return _TERMS
-
-
-@kernel
-def _add(value, carry, lane, increment):
-    """Compensated sum (two-sum of D. E. Knuth, TAOCP 2, sec. 4.2.2): value + carry gain increment.
-
-    A cell of a fine table changes psi by little; adding that plainly would cost half an ulp of psi
-    a cell, which a table of 10^7 rows turns into 1e-13 of the energy or worse.
-    """
-    before = value[lane]
-    increment += carry[lane]
-    after = before + increment
-    part = after - before
-    carry[lane] = (before - (after - part)) + (increment - part)
-    value[lane] = after
-
-
-@kernel
-def _series(a, b, w, mass, lanes, terms, w_size, m_size):
+def _series(work, w, terms, w_size, m_size):
     """Fill the power series psi = sum a_k t^k, phi = sum b_k t^k for all lanes.
 
-    Shapes: a, b (terms + 1, LANES) with row 0 given; w, mass (size, LANES), multiplied by h.
+    Rows of LANES numbers in `work`: a from _A and b from _B on, row 0 of each given; the mass from
+    _M on and, behind it, the first coefficient of w, multiplied by h; the further ones, in `w`, are
+    the same for all lanes. Rows 0 and 1 hold sums. One array and loops of fixed length are what the
+    vector unit takes.
     """
+    first_w = (_M + m_size) * LANES
     for k in range(terms):
-        inverse = 1.0 / (k + 1)
-        for lane in range(lanes):
-            a[k + 1, lane] = mass[0, lane] * b[k, lane]
-            b[k + 1, lane] = w[0, lane] * a[k, lane]
+        a, b = (_A + k) * LANES, (_B + k) * LANES
+        for lane in range(LANES):
+            work[lane] = work[_M * LANES + lane] * work[b + lane]
+            work[LANES + lane] = work[first_w + lane] * work[a + lane]
         for j in range(1, min(k + 1, m_size)):
-            for lane in range(lanes):
-                a[k + 1, lane] += mass[j, lane] * b[k - j, lane]
+            m, b = (_M + j) * LANES, (_B + k - j) * LANES
+            for lane in range(LANES):
+                work[lane] += work[m + lane] * work[b + lane]
         for j in range(1, min(k + 1, w_size)):
-            for lane in range(lanes):
-                b[k + 1, lane] += w[j, lane] * a[k - j, lane]
-        for lane in range(lanes):
-            a[k + 1, lane] *= inverse
-            b[k + 1, lane] *= inverse
+            c, a = w[j], (_A + k - j) * LANES
+            for lane in range(LANES):
+                work[LANES + lane] += c * work[a + lane]
+        a, b, inverse = (_A + k + 1) * LANES, (_B + k + 1) * LANES, 1.0 / (k + 1)
+        for lane in range(LANES):
+            work[a + lane] = work[lane] * inverse
+            work[b + lane] = work[LANES + lane] * inverse
+
+
+@kernel
+def _add(state, work, terms):
+    """Add the series to psi and phi in `state`, and count zeros.
+
+    Compensated (two-sum of D. E. Knuth, TAOCP 2, sec. 4.2.2): a cell of a fine table changes psi by
+    little; adding that plainly would cost half an ulp of psi a cell, which a table of 10^7 rows
+    turns into 1e-13 of the energy or worse.
+    """
+    for lane in range(LANES):
+        work[lane] = work[(_A + terms) * LANES + lane]
+        work[LANES + lane] = work[(_B + terms) * LANES + lane]
+    for k in range(terms - 1, 0, -1):
+        a, b = (_A + k) * LANES, (_B + k) * LANES
+        for lane in range(LANES):
+            work[lane] += work[a + lane]
+            work[LANES + lane] += work[b + lane]
+    for lane in range(LANES):
+        p, f = state[lane], state[LANES + lane]
+        gain = work[lane] + state[2 * LANES + lane]
+        new_p = p + gain
+        part = new_p - p
+        state[2 * LANES + lane] = (p - (new_p - part)) + (gain - part)
+        state[lane] = new_p
+        gain = work[LANES + lane] + state[3 * LANES + lane]
+        new_f = f + gain
+        part = new_f - f
+        state[3 * LANES + lane] = (f - (new_f - part)) + (gain - part)
+        state[LANES + lane] = new_f
+        was = (p > 0.0) | ((p == 0.0) & (f > 0.0))
+        now = (new_p > 0.0) | ((new_p == 0.0) & (new_f > 0.0))
+        state[4 * LANES + lane] += 1.0 if was != now else 0.0
 
 
 @kernel
@@ -189,9 +150,10 @@ def _start(edge, energy):
 
 
 @kernel
-def _rescale(p, f, p_carry, f_carry, log, lanes):
-    for lane in range(lanes):
-        size = abs(p[lane]) + abs(f[lane])
+def _rescale(state, log):
+    """Bring amplitudes back into range; `log` keeps the logarithm of what was divided out."""
+    for lane in range(LANES):
+        size = abs(state[lane]) + abs(state[LANES + lane])
         factor = 1.0
         if size > _BIG:
             factor = _SMALL
@@ -200,125 +162,61 @@ def _rescale(p, f, p_carry, f_carry, log, lanes):
             factor = _BIG
             log[lane] -= _LOG_BIG
         if factor != 1.0:
-            p[lane] *= factor
-            f[lane] *= factor
-            p_carry[lane] *= factor
-            f_carry[lane] *= factor
+            for row in range(4):  # psi, phi and their carries
+                state[row * LANES + lane] *= factor
 
 
 @kernel
-def _load(w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h, w, m, majorant):
-    """Spread a cell's polynomials over the lanes, multiplied by h; return the terms needed."""
-    lanes = energies.size
-    sizes = max(m_size, q_size)
-    for j in range(sizes):
-        shared = m_cell[j] * h if j < m_size else 0.0
-        own = q_cell[j] * h if j < q_size else 0.0
-        for lane in range(lanes):
-            m[j, lane] = shared + own * energies[lane]
-        m_cell[j] = abs(shared) + abs(own) * max(abs(low), abs(high))
-    for lane in range(lanes):
-        w[0, lane] = 2.0 * h * (w_cell[0] - energies[lane])
-    w_cell[0] = 2.0 * h * max(abs(w_cell[0] - low), abs(w_cell[0] - high))
+def _scratch(V, mass, per_energy):
+    m_size = max(mass.shape[1], per_energy.shape[1])
+    return np.zeros((_M + m_size + 1) * LANES), np.empty(V.shape[1])
+
+
+@kernel
+def _used(coefficients, cell):
+    """How many coefficients a cell has up to the last that is not zero."""
+    size = coefficients.shape[1]
+    while size > 1 and coefficients[cell, size - 1] == 0.0:
+        size -= 1
+    return size
+
+
+@kernel
+def _curved(V, mass, per_energy, cell, h, fraction, terms, state, scratch):
+    """Cross the first `fraction` of a cell of any polynomials by the general series."""
+    work, w = scratch
+    w_size, m_size = _used(V, cell), max(_used(mass, cell), _used(per_energy, cell))
+    power = h * fraction
+    for j in range(m_size):
+        shared = power * mass[cell, j] if j < mass.shape[1] else 0.0
+        own = power * per_energy[cell, j] if j < per_energy.shape[1] else 0.0
+        for lane in range(LANES):
+            work[(_M + j) * LANES + lane] = shared + own * state[5 * LANES + lane]
+        power *= fraction
+    power = 2.0 * h * fraction
+    for lane in range(LANES):
+        work[(_M + m_size) * LANES + lane] = power * (V[cell, 0] - state[5 * LANES + lane])
+        work[_A * LANES + lane] = state[lane]
+        work[_B * LANES + lane] = state[LANES + lane]
     for j in range(1, w_size):
-        shared = 2.0 * h * w_cell[j]
-        for lane in range(lanes):
-            w[j, lane] = shared
-        w_cell[j] = abs(shared)
-    zeta = np.sqrt(_sum_abs(m_cell, 0, sizes) * _sum_abs(w_cell, 0, w_size))
-    return _terms(w_cell, m_cell, zeta, w_size, sizes, majorant)
+        power *= fraction
+        w[j] = power * V[cell, j]
+    _series(work, w, terms, w_size, m_size)
+    _add(state, work, terms)
 
 
 @kernel
-def _scratch():
-    return (
-        np.empty((_TERMS + 1, LANES)),
-        np.empty((_TERMS + 1, LANES)),
-        np.empty((_DEGREE, LANES)),
-        np.empty((_DEGREE, LANES)),
-        np.empty(_DEGREE),
-        np.empty(_DEGREE),
-        np.empty(_DEGREE),
-        np.empty((2, _TERMS + 1)),
-    )
-
-
-@kernel
-def _cross(
-    V, mass, per_energy, cell, h, backward, fraction, energies, low, high,
-    p, f, p_carry, f_carry, log, count, scratch,
-):  # fmt: skip
-    """Carry the state of all lanes across the first `fraction` of a cell of width h.
-
-    Shapes: p, f (psi and phi), p_carry, f_carry, log, count and energies (lanes,); low and high are
-    the ends of the energies. Returns about how many powers of 10 amplitudes may have grown by.
-    """
-    a, b, w, m, w_cell, m_cell, q_cell, majorant = scratch
-    lanes = energies.size
-    w_size = _polynomial(V, cell, backward, 0.0, fraction, w_cell)
-    m_size = _polynomial(mass, cell, backward, 0.0, fraction, m_cell)
-    q_size = 0
-    if per_energy.shape[1] > 0:
-        q_size = _polynomial(per_energy, cell, backward, 0.0, fraction, q_cell)
-    h *= fraction
-    reach = max(abs(w_cell[0] - low), abs(w_cell[0] - high)) + _sum_abs(w_cell, 1, w_size)
-    weight = _sum_abs(m_cell, 0, m_size)
-    if q_size > 0:
-        weight += max(abs(low), abs(high)) * _sum_abs(q_cell, 0, q_size)
-    size = 2.0 * weight * reach * h * h
-    if size > LARGEST and w_size == 1 and m_size == 1 and q_size <= 1:
-        for lane in range(lanes):
-            m_lane = m_cell[0] + (energies[lane] * q_cell[0] if q_size else 0.0)
-            p[lane], f[lane], crossed, grown = _constant(
-                w_cell[0] - energies[lane], m_lane, h, p[lane], f[lane]
-            )
-            p_carry[lane], f_carry[lane] = 0.0, 0.0
-            count[lane] += crossed
-            log[lane] += grown
-        return 8
-    parts = max(int(np.ceil(np.sqrt(size / LARGEST))), 1)
-    part, age = 0, 0
-    while part < parts:
-        if parts > 1:
-            start, ratio = fraction * part / parts, fraction / parts
-            w_size = _polynomial(V, cell, backward, start, ratio, w_cell)
-            m_size = _polynomial(mass, cell, backward, start, ratio, m_cell)
-            if q_size > 0:
-                q_size = _polynomial(per_energy, cell, backward, start, ratio, q_cell)
-        terms = _load(
-            w_cell, m_cell, q_cell, w_size, m_size, q_size, energies, low, high, h / parts,
-            w, m, majorant,
-        )  # fmt: skip
-        if terms >= _TERMS and parts < _MOST_PARTS:
-            parts, part = 2 * parts, 2 * part  # a wilder polynomial than `size` could tell
-            continue
-        for lane in range(lanes):
-            a[0, lane], b[0, lane] = p[lane], f[lane]
-        _series(a, b, w, m, lanes, terms, w_size, max(m_size, q_size))
-        for lane in range(lanes):
-            before = is_positive(p[lane], f[lane])
-            gain_p, gain_f = a[terms, lane], b[terms, lane]
-            for k in range(terms - 1, 0, -1):
-                gain_p += a[k, lane]
-                gain_f += b[k, lane]
-            _add(p, p_carry, lane, gain_p)
-            _add(f, f_carry, lane, gain_f)
-            if is_positive(p[lane], f[lane]) != before:
-                count[lane] += 1
-        part += 1
-        age += 1
-        if age >= _AGE:
-            _rescale(p, f, p_carry, f_carry, log, lanes)
-            age = 0
-    return age
-
-
-@kernel
-def _shape(V, mass, per_energy):
-    """0: all cells have straight V and constant mass; 1: V and mass are straight; 2: neither."""
-    if V.shape[1] > 2 or mass.shape[1] > 2 or per_energy.shape[1] > 2:
-        return 2
-    return 0 if mass.shape[1] == 1 and per_energy.shape[1] == 0 else 1
+def _flat(v, mass, per_energy, h, state, lanes, log):
+    """Cross a cell of constant V and mass in closed form, in the lanes in use: it is not cheap."""
+    for lane in range(lanes):
+        energy = state[5 * LANES + lane]
+        psi, phi, crossed, grown = _constant(
+            v - energy, mass + energy * per_energy, h, state[lane], state[LANES + lane]
+        )
+        state[lane], state[LANES + lane] = psi, phi
+        state[2 * LANES + lane], state[3 * LANES + lane] = 0.0, 0.0
+        state[4 * LANES + lane] += crossed
+        log[lane] += grown
 
 
 @kernel
@@ -333,30 +231,34 @@ def _line(coefficients, cell, backward, fraction):
 
 
 @kernel
-def _advance(
-    V, mass, per_energy, shape, cell, h, backward, fraction, state, lanes, low, high, log, scratch
-):
-    """Carry `state` (see `_straight`) across part of a cell in the cheapest way that is exact.
+def _advance(cells, kind, cell, backward, fraction, state, lanes, log, scratch):
+    """Carry `state` (see `straight`) across part of a cell, from its left or its right end.
 
     Returns about how many steps amplitudes may have grown by.
     """
-    if shape < 2:
+    width, V, mass, per_energy, V_right, mass_right, per_energy_right, terms = cells
+    h, count = width[cell], int(terms[cell])
+    if count == FLAT:
+        q = per_energy[cell, 0] if per_energy.shape[1] > 0 else 0.0
+        _flat(V[cell, 0], mass[cell, 0], q, h * fraction, state, lanes, log)
+        return _AGE
+    if kind < 2:
         v, slope = _line(V, cell, backward, fraction)
         m, m_slope = _line(mass, cell, backward, fraction)
-        if shape == 0:
-            if _straight(state, v, slope, m, h * fraction, low, high):
-                return 1
+        if kind == 0:
+            straight(state, v, slope, m, h * fraction, count)
         else:
             q, q_slope = _line(per_energy, cell, backward, fraction)
-            if _graded(state, v, slope, m, m_slope, q, q_slope, h * fraction, low, high):
-                return 1
-    energies = state[5 * LANES : 5 * LANES + lanes]
-    return _cross(
-        V, mass, per_energy, cell, h, backward, fraction, energies, low, high,
-        state[:lanes], state[LANES : LANES + lanes], state[2 * LANES : 2 * LANES + lanes],
-        state[3 * LANES : 3 * LANES + lanes], log[:lanes], state[4 * LANES : 4 * LANES + lanes],
-        scratch,
-    )  # fmt: skip
+            graded(state, v, slope, m, m_slope, q, q_slope, h * fraction, count)
+        return 1
+    count = min(count, SERIES_TERMS)
+    if backward:
+        _curved(
+            V_right, mass_right, per_energy_right, cell, h, fraction, count, state, scratch
+        )
+    else:
+        _curved(V, mass, per_energy, cell, h, fraction, count, state, scratch)
+    return 1
 
 
 @kernel(
@@ -378,8 +280,9 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
 
     Parameters
     ----------
-    cells : (width, V, mass, mass_per_energy)
-        Shapes (cells,) and (cells, degree + 1).
+    cells : (width, V, mass, mass_per_energy, V, mass, mass_per_energy, terms)
+        Shapes (cells,) and (cells, degree + 1); polynomials as seen from the left end of each cell,
+        then from its right end (which straight ones do without: anything of the same shape).
     edge : ndarray, shape (4,)
         Where the sweep starts, see `_start`.
     backward : bool
@@ -395,41 +298,35 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         Result: psi, phi and the logarithm of their common factor at the nodes 0, stride, 2 stride,
         ... that the sweep reaches; no samples, no record.
     """
-    width, V, mass, per_energy = cells
-    lanes = energies.size
-    # Full lanes for `_straight`, whose loops have a fixed length; the used ones for the rest.
-    state = np.zeros(6 * LANES)
-    state[5 * LANES :] = energies[0]
-    state[5 * LANES : 5 * LANES + lanes] = energies
-    p, f = state[:lanes], state[LANES : LANES + lanes]
-    p_carry, f_carry = state[2 * LANES : 2 * LANES + lanes], state[3 * LANES : 3 * LANES + lanes]
-    count, log = state[4 * LANES : 4 * LANES + lanes], np.zeros(lanes)
-    scratch = _scratch()
-    shape = _shape(V, mass, per_energy)
-    low, high = energies.min(), energies.max()
-    for lane in range(lanes):
-        p[lane], f[lane] = _start(edge, energies[lane])
-    node = width.size if backward else 0
-    last = stop.min() if backward else stop.max()
+    lanes, count = energies.size, cells[0].size
+    # All lanes are carried along, also unused ones: loops of a fixed length are vectors.
+    state, log = np.zeros(6 * LANES), np.zeros(LANES)
+    kind, scratch = shape(cells[1], cells[2], cells[3]), _scratch(cells[1], cells[2], cells[3])
+    node = count if backward else 0
+    last = stop[0]
+    for lane in range(LANES):
+        energy = energies[lane] if lane < lanes else energies[0]
+        state[5 * LANES + lane] = energy
+        state[lane], state[LANES + lane] = _start(edge, energy)
+        if lane < lanes:
+            last = min(last, stop[lane]) if backward else max(last, stop[lane])
     age = 0  # steps since amplitudes were last brought into range
     while True:
         if trail.shape[0] > 0 and node % stride == 0:
             for lane in range(lanes):
-                trail[node // stride, 0, lane] = p[lane]
-                trail[node // stride, 1, lane] = f[lane]
+                trail[node // stride, 0, lane] = state[lane]
+                trail[node // stride, 1, lane] = state[LANES + lane]
                 trail[node // stride, 2, lane] = log[lane]
         for lane in range(lanes):
             if stop[lane] == node:
-                psi[lane], phi[lane], zeros[lane] = p[lane], f[lane], int(count[lane])
+                psi[lane], phi[lane] = state[lane], state[LANES + lane]
+                zeros[lane] = int(state[4 * LANES + lane])
         if node == last:
             return
         cell = node - 1 if backward else node
-        age += _advance(
-            V, mass, per_energy, shape, cell, width[cell], backward, 1.0,
-            state, lanes, low, high, log, scratch,
-        )  # fmt: skip
+        age += _advance(cells, kind, cell, backward, 1.0, state, lanes, log, scratch)
         if age >= _AGE:
-            _rescale(p, f, p_carry, f_carry, log, lanes)
+            _rescale(state, log)
             age = 0
         node += -1 if backward else 1
 
@@ -465,10 +362,7 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
     """
     if energies.size == 0:
         return
-    width, V, mass, per_energy = cells
-    shape = _shape(V, mass, per_energy)
-    scratch = _scratch()
-    low, high = energies.min(), energies.max()
+    kind, scratch = shape(cells[1], cells[2], cells[3]), _scratch(cells[1], cells[2], cells[3])
     state, log, level_of = np.zeros(6 * LANES), np.zeros(LANES), np.empty(LANES, np.int64)
     for point in range(cell.size):
         c = cell[point]
@@ -489,10 +383,7 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
                 if lanes == 0:
                     continue
                 state[2 * LANES : 4 * LANES] = 0.0
-                _advance(
-                    V, mass, per_energy, shape, c, width[c], side == 1, part,
-                    state, lanes, low, high, log, scratch,
-                )  # fmt: skip
+                _advance(cells, kind, c, side == 1, part, state, lanes, log, scratch)
                 for lane in range(lanes):
                     grown = 1.0
                     if log[lane] != 0.0:

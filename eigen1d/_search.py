@@ -6,7 +6,8 @@ Like `_kernels`, these know arrays only, in units with hbar = 1.
 import numpy as np
 from numba import types
 
-from ._kernels import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, is_positive, kernel, sweep
+from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, kernel
+from ._kernels import is_positive, sweep
 
 _PAIR = types.UniTuple(types.float64, 2)
 _START = types.Tuple((types.float64, types.float64, types.int64, types.int64))

@@ -6,12 +6,7 @@ mass that is a straight line (in t, and at each energy), psi' = (m_0 + m_1 t) ph
 phi' = (w_0 + w_1 t) psi give both series side by side.
 """
 
-import numpy as np
-
-from ._compiled import EPS, LANES, LARGEST, kernel
-
-_MOST = 22  # most terms; a cell that asks for more is left to the general series
-_INVERSE = 1.0 / ((np.arange(_MOST) + 1.0) * (np.arange(_MOST) + 2.0))
+from ._compiled import GRADED_TERMS, LANES, STRAIGHT_TERMS, kernel
 
 
 def _straight_step(terms):
@@ -54,33 +49,17 @@ def _straight_step(terms):
 
 
 _straight_3, _straight_5, _straight_8 = _straight_step(3), _straight_step(5), _straight_step(8)
-_straight_12, _straight_22 = _straight_step(12), _straight_step(22)
+_straight_12, _straight_22 = _straight_step(12), _straight_step(STRAIGHT_TERMS)
 
 
 @kernel
-def straight(state, v, slope, mass, h, low, high):
-    """Cross a cell of straight V and constant mass; False, and nothing done, if it is too long.
+def straight(state, v, slope, mass, h, terms):
+    """Cross a cell of straight V and constant mass.
 
-    `state` holds, LANES numbers each: psi, phi, their carries, zeros, energies. A majorant of the
-    series decides how many terms, as in `_kernels._terms`: it starts from (1, zeta) and stops when
-    three in a row (the reach of the recurrence) are below rounding of the first change.
+    `state` holds, LANES numbers each: psi, phi, their carries, zeros, energies.
     """
     scale = 2.0 * mass * h * h
-    most = scale * max(abs(v - low), abs(v - high))
     s = scale * slope
-    size = most + abs(s)
-    if size > LARGEST:
-        return False
-    target = 0.03 * EPS * np.sqrt(size)
-    before, a, b = 0.0, 1.0, np.sqrt(size)
-    terms, quiet = 0, 0
-    while quiet < 3 and terms < _MOST:
-        before, a, b = a, b, (most * a + abs(s) * before) * _INVERSE[terms]
-        terms += 1
-        quiet = quiet + 1 if (terms + 1.0) * b <= target else 0
-    if quiet < 3:
-        return False
-    terms -= quiet
     if terms <= 3:
         _straight_3(state, v, scale, s, mass * h)
     elif terms <= 5:
@@ -91,7 +70,6 @@ def straight(state, v, slope, mass, h, low, high):
         _straight_12(state, v, scale, s, mass * h)
     else:
         _straight_22(state, v, scale, s, mass * h)
-    return True
 
 
 def _graded_step(terms):
@@ -131,50 +109,15 @@ def _graded_step(terms):
     return step
 
 
-_graded_6, _graded_10, _graded_24 = _graded_step(6), _graded_step(10), _graded_step(24)
+_graded_6, _graded_10, _graded_24 = _graded_step(6), _graded_step(10), _graded_step(GRADED_TERMS)
 
 
 @kernel
-def _mass_size(mass, per_energy, far, h):
-    """Largest size of h (mass + E per_energy) for |E| up to `far`."""
-    return h * (abs(mass) + abs(per_energy) * far)
-
-
-@kernel
-def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, low, high):
-    """Cross a cell of straight V and mass; False, and nothing done, if it is too long.
-
-    As `straight`; the majorant starts from (1, eta) with eta such that both series have the rate
-    zeta = sqrt(2 m |V - E|) h.
-    """
-    far = max(abs(low), abs(high))
-    m = _mass_size(mass, per_energy, far, h)
-    m_slope = _mass_size(mass_slope, per_energy_slope, far, h)
-    w, w_slope = 2.0 * h * max(abs(v - low), abs(v - high)), 2.0 * h * abs(slope)
-    size = (m + m_slope) * (w + w_slope)
-    if size > LARGEST:
-        return False
-    zeta = np.sqrt(size)
-    eta = zeta / (m + m_slope)
-    m, m_slope = m * eta, m_slope * eta
-    w, w_slope = w / eta, w_slope / eta
-    target = 0.03 * EPS * zeta
-    a, b, a_before, b_before = 1.0, 1.0, 0.0, 0.0
-    terms, quiet = 0, 0
-    while quiet < 3 and terms < 27:
-        inverse = 1.0 / (terms + 1.0)
-        a, b, a_before, b_before = (
-            (m * b + m_slope * b_before) * inverse, (w * a + w_slope * a_before) * inverse, a, b
-        )  # fmt: skip
-        terms += 1
-        quiet = quiet + 1 if max(a, b) <= target else 0
-    terms -= quiet
-    if quiet < 3 or terms > 24:
-        return False
+def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, terms):
+    """Cross a cell of straight V and mass; `state` as for `straight`."""
     if terms <= 6:
         _graded_6(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
     elif terms <= 10:
         _graded_10(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
     else:
         _graded_24(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
-    return True

@@ -21,7 +21,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _kernels, _search
+from . import _kernels, _plan, _search
 from .levels import Budget, Levels
 
 EPS = np.finfo(float).eps
@@ -70,22 +70,40 @@ class Search:
 
     def __init__(self, profile):
         self.profile = profile
-        natural = profile.natural()
-        self.floor = profile.V_min
+        self.natural = profile.natural()
+        self.left, self.right = _edge(self.natural.left), _edge(self.natural.right)
+        self.floor = float(profile.V_min)
         self.edge = profile.open_edge
-        self.x, self.cells = _split(profile.x, natural, self.floor)
-        self.left, self.right = _edge(natural.left), _edge(natural.right)
+        self.resolution = (ROUNDING + profile.tolerance, self.floor)
+        self.top = -np.inf
+        if self.edge < np.inf:
+            self._reach(self.edge)
+        else:
+            self._reach(self.floor + self._box_height(1))
+
+    def _reach(self, top):
+        """Make the cells ready for energies up to `top`."""
+        self.top = top
+        self.x, self.cells = _prepared(self.profile.x, self.natural, self.floor, top)
         # The deepest cell: where all levels of a single well live.
-        self.home = int(np.argmin(self.cells[1][:, 0] + self.cells[1].sum(axis=1)))
-        per_energy = self.cells[3][self.home, :1].sum()
-        self.home_mass = float(self.cells[2][self.home, 0] + self.floor * per_energy)
-        self.resolution = (ROUNDING + profile.tolerance, float(self.floor))
+        V, mass, per_energy = self.cells[1:4]
+        self.home = int(np.argmin(V[:, 0] + V.sum(axis=1)))
+        self.home_mass = float(mass[self.home, 0] + self.floor * per_energy[self.home, :1].sum())
+
+    def _box_height(self, count):
+        """Height of the energy that so many levels would reach if V were flat, between the ends."""
+        per_energy = self.natural.mass_per_energy[:, :1].sum(axis=1)
+        mass = (self.natural.mass[:, 0] + self.floor * per_energy).max()
+        span = self.profile.x[-1] - self.profile.x[0]
+        return (np.pi * count / span) ** 2 / (2 * mass)
 
     # Counting -----------------------------------------------------------------------------------
 
     def count(self, energies):
         """Number of levels below each energy; energies at or above the open edge are cut to it."""
-        energies = np.minimum(np.atleast_1d(np.asarray(energies, dtype=float)), self.edge)
+        energies = np.clip(np.atleast_1d(energies).astype(float), self.floor, self.edge)
+        if energies.max() > self.top:
+            self._reach(self.floor + 1.01 * (energies.max() - self.floor))
         stop = np.full(energies.size, self.home)
         turn, angle = self._angles(energies, stop, self._sigma(energies))
         count = turn - (angle < 0)
@@ -173,8 +191,7 @@ class Search:
         """An energy interval (low, high) with no level below it, and the count `below` high."""
         if self.edge < np.inf:
             return self.floor, self.edge, self.threshold[0]
-        span = self.x[-1] - self.x[0]
-        step = (np.pi * (last + 1) / span) ** 2 / (2 * self.home_mass)
+        step = self._box_height(last + 1)
         while True:
             below = int(self.count(self.floor + step)[0])
             if below >= last:
@@ -322,45 +339,19 @@ def _edge(edge):
     return np.array([edge.kind == "open", edge.V, edge.mass - per_energy * edge.V, per_energy])
 
 
-def _split(x, natural, floor):
-    """Cut long cells with curved solutions, so that there are nodes where states can be joined.
+def _prepared(x, natural, low, high):
+    """Cut cells until their series are short at energies from low to high.
 
-    Returns the nodes, and widths and polynomials of the cells. Cells are halved and halved again:
-    then widths and the places of the cuts in a cell are exact. From differences of the nodes the
-    widths of a profile far from x = 0 would lose digits (test_shooting.py, "far-away-curved").
+    Returns
+    -------
+    x : ndarray, shape (parts + 1,)
+    cells : tuple of ndarray
+        As the kernels want them, see `_kernels.sweep`.
     """
-    fields = [natural.V, natural.mass, natural.mass_per_energy]
-    flat = (natural.V.shape[1] == 1) | (natural.V[:, 1:] == 0).all(axis=1)
-    reach = np.abs(natural.V - np.eye(1, natural.V.shape[1]) * floor).sum(axis=1)
-    phase = np.sqrt(2 * np.abs(natural.mass).sum(axis=1) * reach) * natural.width
-    parts = np.where(flat, 1, 2 ** np.ceil(np.log2(np.clip(phase / 4, 1, 4096)))).astype(int)
-    if (parts == 1).all():
-        return x, (natural.width, *fields)
-    owner = np.repeat(np.arange(parts.size), parts)
-    index = np.arange(owner.size) - np.repeat(np.cumsum(parts) - parts, parts)
-    offset, ratio = index / parts[owner], 1 / parts[owner]
-    new_x = np.append(x[owner] + offset * natural.width[owner], x[-1])
-    fields = [_part(f[owner], offset, ratio) for f in fields]
-    return new_x, (natural.width[owner] * ratio, *fields)
-
-
-def _part(coefficients, offset, ratio):
-    """Coefficients of p(offset + ratio t), offset and ratio being multiples of 1/4096.
-
-    `_cells.reexpanded` with sums in pairs of doubles. Where power coefficients are large and V is
-    small, as at the bottoms of a double well in one cell, plain ones round by more than a bracket
-    is wide (test_shooting.py, "sextic-corner").
-    """
-    high, low = np.array(coefficients), np.zeros(coefficients.shape)
-    degree = high.shape[1] - 1
-    for k in range(degree):
-        for j in range(degree - 1, k - 1, -1):
-            # Half of the digits of a coefficient, times the 12 bits of an offset, is exact.
-            upper = high[:, j + 1] * (2.0**27 + 1)
-            upper -= upper - high[:, j + 1]
-            product = offset * upper
-            before, high[:, j] = high[:, j].copy(), high[:, j] + product
-            part = high[:, j] - before
-            low[:, j] += (before - (high[:, j] - part)) + (product - part)
-            low[:, j] += offset * ((high[:, j + 1] - upper) + low[:, j + 1])
-    return (high + low) * ratio[:, None] ** np.arange(degree + 1)
+    given = natural.width, natural.V, natural.mass, natural.mass_per_energy
+    terms = np.empty(natural.width.size, np.uint8)
+    straight = max(field.shape[1] for field in given[1:]) <= 2
+    if _plan.plan(*given, low, high, terms) and straight:
+        return x, (*given, *given[1:], terms)
+    owner, offset, terms, tables = _plan.cut(*given, low, high)
+    return np.append(x[owner] + offset * natural.width[owner], x[-1]), (*tables, terms)

@@ -12,9 +12,9 @@ PACKAGE = ROOT / "eigen1d"
 FLOORS = [
     {"errors", "_cells", "_interpolation", "_compiled"},
     {"units", "_files", "_checks", "_straight", "_table_faults"},
-    {"_parts", "_kernels", "_table_text", "_table_header"},
-    {"profile", "_search"},
-    {"_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
+    {"_parts", "_plan", "_table_text", "_table_header"},
+    {"profile", "_kernels"},
+    {"_search", "_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
     {"levels"},
     {"shooting", "finite_difference"},
     {"solve"},
