@@ -23,10 +23,14 @@ _HOME = {
     "read_profile": "tables",
     "solve": "solve",
 }
-__all__ = list(_HOME)
+# Modules that are public as a whole: levels in closed form.
+_MODULES = ("closed_forms", "square_well")
+__all__ = [*_HOME, *_MODULES]
 
 
 def __getattr__(name):
+    if name in _MODULES:
+        return importlib.import_module(f".{name}", __name__)  # which binds the name here
     if name not in _HOME:
         raise AttributeError(f"module {__name__!r} has no attribute {name!r}")
     value = getattr(importlib.import_module(f".{_HOME[name]}", __name__), name)

@@ -60,11 +60,11 @@ def second(monkeypatch):
 def test_public_names_are_these():
     """Other people's scripts import them; a name leaves or joins only on purpose."""
     assert sorted(eigen1d.__all__) == [
-        "CheckError", "InputError", "Levels", "Profile", "TableError", "Units", "read_profile",
-        "solve",
+        "CheckError", "InputError", "Levels", "Profile", "TableError", "Units", "closed_forms",
+        "read_profile", "solve", "square_well",
     ]  # fmt: skip
     for name in eigen1d.__all__:
-        assert getattr(eigen1d, name).__name__ == name
+        assert getattr(eigen1d, name).__name__.removeprefix("eigen1d.") == name
     assert set(eigen1d.__all__) < set(dir(eigen1d))
     with pytest.raises(AttributeError, match="no attribute 'solv'"):
         eigen1d.solv  # noqa: B018
@@ -77,6 +77,13 @@ def test_public_names_are_these():
 def test_solve_is_the_function_whoever_imports_the_module_first(imports):
     """The module of the same name must not take the function's place in the package."""
     code = f"{imports}\nimport eigen1d\nassert eigen1d.solve.__name__ == 'solve', eigen1d.solve"
+    subprocess.run([sys.executable, "-c", code], check=True)
+
+
+@pytest.mark.parametrize("name", ["closed_forms", "square_well"])
+def test_known_levels_are_reached_from_the_package(name):
+    """In a fresh process, where no test has imported the module yet."""
+    code = f"import eigen1d\nassert eigen1d.{name}.__name__ == 'eigen1d.{name}'"
     subprocess.run([sys.executable, "-c", code], check=True)
 
 
