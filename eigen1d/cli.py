@@ -8,6 +8,7 @@ Results go to stdout, messages to stderr. Exit status: 0 done; 2 the input or th
 """
 
 import argparse
+import dataclasses
 import json
 import math
 import os
@@ -259,14 +260,16 @@ def _table(levels):
     """Lines of the table of levels, with units in its header."""
     energy, length = levels.profile.units.energy, levels.profile.units.length
     budget = levels.budget
-    crossed = budget.method is not None
+    # Noise cuts no digits: it tells how far to trust the table, they tell what the table gives.
+    exact = dataclasses.replace(budget, noise=None)
     columns = [
         ("n", [str(n) for n in levels.n]),
-        (f"energy [{energy}]", _numbers(levels.energy, budget.total)),
+        (f"energy [{energy}]", _numbers(levels.energy, exact.total)),
         (f"bracket +- [{energy}]", [f"{half:.1e}" for half in budget.numeric]),
     ]
-    if crossed:
-        columns.append((f"cross-check [{energy}]", [f"{d:.1e}" for d in budget.method]))
+    for name, term in (("cross-check", budget.method), ("noise +-", budget.noise)):
+        if term is not None:
+            columns.append((f"{name} [{energy}]", [f"{size:.1e}" for size in term]))
     spread = levels.spread_x
     columns += [
         (f"<x> [{length}]", _numbers(levels.mean_x, spread * 1e-4, spread.max())),

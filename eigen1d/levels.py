@@ -71,8 +71,10 @@ class Budget:
         Half width of the bracket.
     method : ndarray or None
         Difference from the other method.
-    table, noise : ndarray or None
-        Worth of the interpolation; of the noise sigma_V.
+    table : ndarray or None
+        Worth of the interpolation.
+    noise : ndarray or None
+        Standard deviation of the energy that sigma_V brings about.
     """
 
     numeric: np.ndarray

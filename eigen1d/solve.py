@@ -1,4 +1,4 @@
-"""The front door: which method, the second opinion, the error budget. No numerics here."""
+"""The front door: which method, the second opinion, the error budget. No solver here."""
 
 import importlib
 from dataclasses import replace
@@ -34,7 +34,8 @@ def solve(profile, count=None, window=None, method="shooting", cross_check=False
     -------
     Levels
         `energy`, shape (k,), ascending, and `bracket`, shape (k, 2), in `profile.units.energy`.
-        A profile that binds nothing gives k = 0: an answer, not an error.
+        A profile that binds nothing gives k = 0: an answer, not an error. Rows with sigma_V fill
+        the budget's `noise` term.
 
     Raises
     ------
@@ -61,7 +62,7 @@ def solve(profile, count=None, window=None, method="shooting", cross_check=False
     if method not in METHODS:
         raise InputError(f"unknown method {method!r}; write one of: {', '.join(METHODS)}")
     request = Request.checked(profile, count, window)
-    levels = _module(method).find(profile, request)
+    levels = _with_noise(_module(method).find(profile, request))
     if not cross_check:
         return levels
     (second,) = set(METHODS) - {method}
@@ -70,6 +71,15 @@ def solve(profile, count=None, window=None, method="shooting", cross_check=False
 
 def _module(method):
     return importlib.import_module(f".{METHODS[method]}", __package__)
+
+
+def _with_noise(levels):
+    """Return `levels` with what sigma_V does to each energy: first order, rows independent."""
+    rows = levels.profile.rows
+    if rows is None or rows.sigma_V is None:
+        return levels
+    noise = np.sqrt(np.square(levels.slope_V * rows.sigma_V).sum(axis=1))
+    return replace(levels, budget=replace(levels.budget, noise=noise))
 
 
 def _cross_checked(levels, other, request):

@@ -79,6 +79,27 @@ def test_table_of_levels(run):
     )
 
 
+def test_noise_is_a_column_and_cuts_no_digits(run):
+    """The energies of one table stay comparable to the last digit; the noise stands beside them."""
+    lines = WELL.splitlines()
+    noisy = [lines[0] + ", sigma_V [meV]", *(line + ", 2.5" for line in lines[1:])]
+    Path("noisy.csv").write_text("\n".join(noisy))
+    plain = run("levels", "well.csv")[1].splitlines()[3:7]
+    status, out, _ = run("levels", "noisy.csv", "--json", "noisy.json")
+    head, *rows = out.splitlines()[3:7]
+    assert status == 0
+    assert head.split() == (
+        "n energy [eV] bracket +- [eV] cross-check [eV] noise +- [eV] <x> [nm] spread [nm]".split()
+    )
+    noise = solve(read_profile("noisy.csv")).budget.noise
+    found = json.loads(Path("noisy.json").read_text())["levels"]
+    for i, row in enumerate(rows):
+        cells = row.split()
+        assert cells.pop(4) == f"{noise[i]:.1e}" and 1e-4 < noise[i] < 2.5e-3
+        assert cells == plain[i + 1].split()
+        assert found[i]["budget"]["noise"] == noise[i]
+
+
 @pytest.mark.parametrize(
     ("value", "uncertainty", "shown"),
     [

@@ -170,6 +170,45 @@ def test_cross_check_fills_the_method_term(well, method):
     assert np.array_equal(levels.budget.method, abs(levels.energy - other.energy))
 
 
+@pytest.mark.parametrize("method", ["shooting", "finite-difference"])
+@pytest.mark.parametrize("interpolation", ["linear", "smooth"])
+def test_noise_is_what_moving_each_row_does(method, interpolation):
+    """Independent rows: the squares of what each alone moves add up, whichever method solves.
+
+    Propagation of uncertainty, common practice, no source. The moves are central differences, so
+    they are off by third order in sigma: 1e-3 of 1e-3 squared, and by the error of the method.
+    """
+    x, V = [0, 4, 4, 9, 13, 13, 17], np.array([0.3, 0.3, 0.02, 0.0, 0.05, 0.25, 0.25])
+    sigma = 1e-4 * np.array([9, 1, 4, 7, 3, 2, 5])
+
+    def solved(V, **keywords):
+        rows = {"mass": 0.067, "interpolation": interpolation, **keywords}
+        return solve(Profile.from_rows(x, V, **rows), method=method)
+
+    levels = solved(V, sigma_V=sigma)
+    moved = [(solved(V + step).energy - solved(V - step).energy) / 2 for step in np.diag(sigma)]
+    assert len(levels) == 2
+    assert levels.budget.noise == pytest.approx(np.linalg.norm(moved, axis=0), rel=1e-4)
+    assert levels.budget.total == pytest.approx(levels.budget.noise)  # 1e-12 of it is rounding
+    assert solved(V).budget.noise is None
+
+
+def test_noise_without_levels_or_rows(well):
+    """Nothing bound has no noise to tell; layers have no sigma_V, so the term does not apply."""
+    flat = Profile.from_rows([0, 5], [0.1, 0.1], sigma_V=0.01)
+    assert solve(flat).budget.noise.shape == (0,)
+    assert solve(well).budget.noise is None
+    assert solve(Profile.from_layers([5, 5, 5], [0.3, 0, 0.3])).budget.noise is None
+
+
+def test_noise_does_not_loosen_the_cross_check(second):
+    """Both methods solve the same rows, so an error of the rows excuses no difference."""
+    second(shift=2e-9, error=1e-9)
+    noisy = Profile.from_rows([0, 5, 5, 15, 15, 20], [0.3, 0.3, 0, 0, 0.3, 0.3], sigma_V=0.01)
+    with pytest.raises(CheckError):
+        solve(noisy, cross_check=True)
+
+
 def test_agreement_within_the_error_passes(well, second):
     """A difference that the second method announces is no contradiction."""
     second(shift=0.9e-9, error=1e-9)
