@@ -64,10 +64,9 @@ def find(profile, request):
     n, energy, error = ladder.between(low, high, count)
     listed, notes = (low < energy) & (energy < high), []
     if high == edge:
-        # Also one that came out above the edge, as states of the box do to within rounding.
-        unseen = np.abs(edge - energy) <= error
+        unseen = edge - energy <= error
         listed &= ~unseen
-        least = error[unseen].max(initial=0.0)
+        least = max(error[unseen].max(initial=0.0), ladder.bound[1] if count is None else 0.0)
         if least > _LEAST_WORTH_A_NOTE * (edge - profile.V_min):
             notes.append(
                 f"a level bound by less than {least:.2g} {profile.units.energy} would not be seen"
@@ -116,6 +115,8 @@ def estimates(profile, first, last):
     """
     if not 0 <= first < last:
         raise InputError(f"first and last must be 0 <= first < last; found {first}, {last}")
+    if profile.open_edge <= profile.V_min:
+        return np.full(last - first, profile.open_edge), np.zeros(last - first)
     ladder = _Ladder.up_to_level(profile, last)
     room = ladder.rung(0).x.size - 2
     if last > room:
@@ -186,6 +187,7 @@ class _Ladder:
 
     def __init__(self, profile, top, free=(False, False)):
         self.profile, self.top = profile, top
+        self._edge = np.inf if any(free) else profile.open_edge  # where levels cease to be bound
         self._box = _box(profile, top, free)
         self._rungs = [FluxForm.on(profile, _base_grid(profile, top, self._box), free)]
 
@@ -210,34 +212,49 @@ class _Ladder:
             self._rungs.append(self._rungs[-1].halved())
         return self._rungs[i]
 
-    def between(self, low, high, count):
-        """n, energy and error of all levels between two energies, and of one more on each side."""
+    def between(self, low, high, count=None):
+        """n, energy and error of all levels between two energies, and of one more on each side.
+
+        As far as there are such: no more than are bound, and no more than `count`.
+        """
         form = self.rung(2)
-        first = max(form.count(low) - 1, 0)
-        last = form.count(high) + 1
-        if count is not None:
-            last = min(last, count)
-        while True:
+        most = self.bound[0] if count is None else min(count, self.bound[0])
+        last = min(form.count(high) + 1, most)
+        first = min(max(form.count(low) - 1, 0), last)
+        while first < last:
             energy, error = self.estimates(first, last)
             more_below = first > 0 and energy[0] >= low
-            more_above = energy[-1] < high and (count is None or last < count)
+            more_above = last < most and energy[-1] < high
             if not (more_below or more_above):
                 return np.arange(first, last), energy, error
             first, last = first - more_below, last + more_above
+        return np.arange(0), np.empty(0), np.empty(0)
 
     def estimates(self, first, last):
         """Energies of the levels first <= n < last, and estimates of their errors."""
+        bound, doubt = self.bound
+        energy = np.full(last - first, self._edge)
+        error = np.where(np.arange(first, last) == bound, doubt, 0.0)
+        error += 4 * EPS * (self.top - self.profile.V_min)
         # With a neighbour on each side, whose distance tells whether extrapolation can be trusted.
-        low, high = max(first - 1, 0), min(last + 1, self.rung(0).width.size)
-        energy, error, blind = self._extrapolated(low, high)
+        low, high = max(first - 1, 0), min(last + 1, self.rung(0).width.size, bound)
+        if first < high:
+            found, own = self._ascending(low, high)
+            seen = min(last, high) - first
+            energy[:seen], error[:seen] = found[first - low :][:seen], own[first - low :][:seen]
+        return energy, error
+
+    def _ascending(self, first, last):
+        """The same for bound levels, with the edge taken into account, and in order."""
+        energy, error, blind = self._extrapolated(first, last)
         if blind.any():
-            told, doubt = self._at_edge(np.flatnonzero(blind) + low, energy[blind])
-            error[blind] += np.abs(told - energy[blind]) + doubt
+            least, most = self._binding(first, last)
+            told = self._edge - least[blind]
+            error[blind] += np.abs(told - energy[blind]) + (most - least)[blind]
             energy[blind] = told
         # Where errors exceed what parts two levels their energies may come out in either order.
         ascending = np.sort(energy)
-        error += np.abs(ascending - energy)
-        return ascending[first - low : last - low], error[first - low : last - low]
+        return ascending, error + np.abs(ascending - energy)
 
     def _extrapolated(self, first, last):
         """Energies, estimates of their errors, and whether they rest on a grid that is blind.
@@ -250,14 +267,13 @@ class _Ladder:
         A grid is blind to a level that it does not bind: the energy there is that of the box.
         """
         # Intervals that hold several rows each have errors without an expansion to rely on.
-        columns = 1 if self.profile.cells > _BASE_INTERVALS else _RUNGS
+        columns, safety = (1, 4) if self.profile.cells > _BASE_INTERVALS else (_RUNGS, 2)
         previous = [self.rung(0).energies(first, last)]
         energy, error = previous[0].copy(), np.full(last - first, np.inf)
         todo, spread = np.arange(last - first), np.zeros(last - first)
         height = energy - self.profile.V_min
         rounding = 4 * EPS * (self.rung(0).curvature(first, last) + height)
-        edge = np.inf if any(self.rung(0).free) else self.profile.open_edge
-        last_blind = np.where(energy >= edge - rounding, 0, -1)
+        last_blind = np.where(energy >= self._edge - rounding, 0, -1)
         blind = last_blind == 0
         for k in range(1, _RUNGS):
             form = self.rung(k)
@@ -267,8 +283,9 @@ class _Ladder:
             value, width, column = _least_spread(row, previous)
             spread[todo] = width = np.maximum(width, spread[todo] / 4.0 ** (k + 1))
             rounding *= 4  # the stiffness of half an interval is twice as large, on both sides
-            last_blind[todo[row[0] >= edge - rounding[todo]]] = k
-            total = 2 * width + rounding[todo] + self._box_error(value) + _mixing(row[0], value)
+            last_blind[todo[row[0] >= self._edge - rounding[todo]]] = k
+            total = safety * width + rounding[todo]
+            total += self._box_error(value) + _mixing(row[0], value)
             moved = np.abs(value - energy[todo])
             refuted = moved > error[todo]
             total[refuted] = np.maximum(total, moved)[refuted]
@@ -277,7 +294,8 @@ class _Ladder:
             blind[todo[taken]] = (last_blind[todo] >= k - column)[taken]
             if k > 1:
                 target = _TARGET * (energy[todo] - self.profile.V_min)
-                unfinished = np.flatnonzero(error[todo] > np.maximum(target, 4 * rounding[todo]))
+                target = np.maximum(target, 4 * rounding[todo])
+                unfinished = np.flatnonzero((error[todo] > target) | blind[todo])
                 nodes = 2 * form.x.size
                 if not unfinished.size or nodes > _FINEST or nodes * unfinished.size > _WORK:
                     break
@@ -286,36 +304,48 @@ class _Ladder:
             previous = row
         return energy, error, blind
 
-    def _at_edge(self, n, energy):
-        """Energies of levels next to the open edge, to first order in kappa; their doubt.
+    @cached_property
+    def _free(self):
+        """A ladder with phi = 0, instead of tails, at the open ends as high as the edge.
 
-        With phi = 0 instead of tails a level stays smooth where it ceases to be bound, and is never
-        above its true place (minimax). It is bound if then below the edge, by what the tails of
-        kappa = sqrt(2 m B) make up for: the sum of kappa psi^2 / (2 m) over the ends at that edge.
+        A level then stays smooth where it ceases to be bound, and it is bound if it lies below the
+        edge there. It is never above its true place (minimax).
         """
-        profile, edge = self.profile, self.profile.open_edge
-        edges = profile.left, profile.right
-        near = edge + _LEAST_BINDING * (edge - profile.V_min)
-        free = _Ladder(profile, edge, tuple(e.kind == "open" and e.V <= near for e in edges))
-        form = free.rung(2)
-        told, doubt = np.maximum(energy, edge), np.zeros(n.size)
-        chosen = n <= form.count(edge)
-        if chosen.any():
-            first, last = n[chosen][0], n[chosen][-1] + 1
-            part = n[chosen] - first
-            level, error = (values[part] for values in free.estimates(first, last))
-            psi = form.states(np.arange(first, last))[0][part]
-            tails = sum(
-                psi[:, end] ** 2 / np.sqrt(e.mass * profile.units.electron_mass)
-                for e, end, is_free in zip(edges, (0, -1), form.free, strict=True)
-                if is_free
+        edge = self.profile.open_edge
+        near = edge + _LEAST_BINDING * (edge - self.profile.V_min)
+        free = (e.kind == "open" and e.V <= near for e in (self.profile.left, self.profile.right))
+        return _Ladder(self.profile, edge, tuple(free))
+
+    @cached_property
+    def bound(self):
+        """How many levels are bound, and by how much one more might be, which errors hide."""
+        if np.isinf(self._edge):
+            return np.iinfo(int).max, 0.0
+        n, energy, error = self._free.between(self._edge, self._edge)
+        below = np.count_nonzero(energy < self._edge)
+        number = int(n[0] + below)
+        if energy[below] - error[below] >= self._edge:
+            return number, 0.0
+        return number, float(self._binding(number, number + 1)[1][0])
+
+    def _binding(self, first, last):
+        """Binding of levels next to the edge, to first order in kappa: (least, most).
+
+        What tails of kappa = sqrt(2 m B) take away from the distance of a free level to the edge is
+        the sum of kappa psi^2 / (2 m) over the free ends.
+        """
+        level, error = self._free.estimates(first, last)
+        form = self._free.rung(2)
+        psi = form.states(np.arange(first, last))[0]
+        tails = sum(
+            psi[:, end] ** 2 / np.sqrt(edge.mass * self.profile.units.electron_mass)
+            for edge, end, free in zip(
+                (self.profile.left, self.profile.right), (0, -1), form.free, strict=True
             )
-            least, most = (
-                np.minimum(2 * (below / tails) ** 2, below)
-                for below in (np.maximum(edge - level, 0), np.maximum(edge - level + error, 0))
-            )
-            told[chosen], doubt[chosen] = edge - least, most - least
-        return told, doubt
+            if free
+        )
+        distance = np.maximum(self._edge - level + np.array([[0.0], [1.0]]) * error, 0.0)
+        return np.minimum(2 * (distance / tails) ** 2, distance)
 
     def _box_error(self, energy):
         """What the walls of the box can do to an energy, by the square of the tail cut off."""

@@ -107,8 +107,8 @@ def test_no_level_is_further_off_than_the_estimate(block):
 
     The cross-check of every level rests on this estimate; one that is too small accuses shooting,
     one that is too large accepts anything. A level may be unseen only if it is bound by less than
-    the estimate. Worst ratio of difference to allowance measured: 0.20; median estimate over
-    height: 2e-10.
+    the estimate. Worst ratio of difference to allowance over 2300 profiles: 0.23; median
+    estimate over height: 2e-10.
     """
     relative = []
     for seed in range(SIZE * block, SIZE * (block + 1)):
@@ -182,30 +182,92 @@ def test_a_level_at_the_threshold(relative, mass):
         assert len(levels) == 1
 
 
-@pytest.mark.parametrize("distance", [1e-3, -1e-3, 1e-4, -1e-4, 1e-5, -1e-5, 1e-6, -1e-6])
-@pytest.mark.parametrize("k", [1, 2, 3])
-def test_a_level_that_just_appears(k, distance):
-    """Level k is bound from z0 = k pi / 2 on, by about distance^2 of the depth just above.
+def just_appears(k, distance):
+    """A symmetric well whose level k is bound from z0 = k pi / 2 on."""
+    return well(k * np.pi / 2 * (1 + distance))
 
-    Never one too many: the estimate says where it is only if grids agree that it is bound.
+
+def just_appears_beside(rim, distance):
+    """A lopsided one, rims `rim` and 1: bound from K L = arctan sqrt(rim - 1) on, K = sqrt 2."""
+    width = np.arctan(np.sqrt(rim - 1)) / np.sqrt(2) * (1 + distance)
+    return Profile.from_layers([1, width, 1], [rim, 0, 1], units=ATOMIC)
+
+
+DISTANCES = [sign * 10.0**-power for power in (2, 2.5, 3, 4, 5, 6) for sign in (1, -1)]
+
+
+@pytest.mark.parametrize("distance", DISTANCES)
+@pytest.mark.parametrize(
+    ("make", "value", "n"),
+    [(just_appears, k, k) for k in (1, 2, 3)] + [(just_appears_beside, r, 0) for r in (1.2, 2, 10)],
+)
+def test_a_level_that_just_appears(make, value, n, distance):
+    """A level bound by about distance^2 of the depth, or just not bound: never one too many.
+
+    On some grids of a ladder it is bound and on others not. Extrapolation over both once listed
+    levels that are none, and once lost others in silence.
     """
-    profile = well(k * np.pi / 2 * (1 + distance))
-    bound = k + (distance > 0)
-    levels = differences(profile)
-    assert len(levels) in (k, bound)
-    energy, error = finite_difference.estimates(profile, k, k + 1)
-    exact = solve(profile).energy[k] if distance > 0 else profile.open_edge
-    assert abs(energy[0] - exact) <= error[0]
-    assert error[0] <= 1e-8 * profile.open_edge
+    profile = make(value, distance)
+    bound = n + (distance > 0)
+    levels, exact = differences(profile), solve(profile)
+    assert len(exact) == bound
+    assert n <= len(levels) <= bound
+    energy, error = finite_difference.estimates(profile, n, n + 1)
+    binding = profile.open_edge - exact.energy[n] if distance > 0 else 0.0
+    assert (
+        abs(profile.open_edge - energy[0] - binding)
+        <= error[0] + exact.budget.numeric[n - 1 :].sum()
+    )
+    assert error[0] <= 1e-6 * profile.open_edge
     if len(levels) < bound:
-        assert "would not be seen" in levels.notes[0]
-    if distance == 1e-3:
-        assert len(levels) == bound and levels.notes == ()
+        assert binding < 2 * error[0]
+        assert binding < 1e-12 * profile.open_edge or "would not be seen" in levels.notes[0]
+    if abs(distance) >= 1e-3:
+        assert len(levels) == bound
+        assert levels.notes == ()
+
+
+def test_a_level_that_just_appears_in_random_layers():
+    """Two to six layers, masses 0.1 to 10, made deeper until a level appears; then a bit off that.
+
+    Measured over 600: no level too many or lost in silence, 0.99 of the estimate at worst.
+    """
+    tried = 0
+    for seed in range(40):
+        random = np.random.default_rng(seed)
+        count = int(random.integers(3, 7))
+        thickness = 10 ** random.uniform(-1, 0.5, count)
+        V, mass = random.uniform(0, 6, count), 10 ** random.uniform(-1, 1, count)
+        V[0], V[-1] = 6 + 10 ** random.uniform(0, 1) * (random.random() < 0.7), 6
+
+        def made(factor, layers=(thickness, V, mass)):
+            return Profile.from_layers(layers[0], layers[1] * factor, layers[2], units=ATOMIC)
+
+        low, high = 0.05, 3.0
+        n = len(solve(made(low)))
+        if len(solve(made(high))) == n:
+            continue
+        tried += 1
+        while high - low > 1e-13 * high:
+            middle = 0.5 * (low + high)
+            low, high = (middle, high) if len(solve(made(middle))) == n else (low, middle)
+        profile = made(high * (1 + random.choice([-1, 1]) * 10 ** random.uniform(-6, -1.5)))
+        levels, exact = differences(profile), solve(profile)
+        energy, error = finite_difference.estimates(profile, n, n + 1)
+        truth = exact.energy[n] if len(exact) > n else profile.open_edge
+        depth = profile.open_edge - profile.V_min
+        assert abs(energy[0] - truth) <= error[0] + 1e-14 * depth, seed
+        assert error[0] <= 1e-6 * depth
+        assert len(levels) <= len(exact), seed
+        if len(levels) < len(exact):
+            assert profile.open_edge - truth < 1e-12 * depth or levels.notes
+    assert tried > 20
 
 
 def test_estimates_beyond_the_last_bound_level():
     """States of the box lie at or above the edge within their error, and next to it."""
-    for profile in (well(5.0), well(1e-3), profile_of(WELLS["lopsided"])):
+    flat = Profile.from_layers([2], [0.7], units=ATOMIC)
+    for profile in (well(5.0), well(1e-3), profile_of(WELLS["lopsided"]), flat):
         bound = len(solve(profile))
         energy, error = finite_difference.estimates(profile, bound, bound + 5)
         assert (energy >= profile.open_edge - error).all()
@@ -234,19 +296,20 @@ def test_estimates_of_part_of_the_levels():
             assert (np.abs(part - whole[first:last]) <= own + error[first:last]).all()
 
 
-def test_a_dip_between_samples_is_not_overlooked():
-    """A well in one cell of degree 16, narrower than the cell by 10, far from its ends and middle.
+@pytest.mark.parametrize("place", [3, 12, 21])
+def test_a_dip_between_samples_is_not_overlooked(place):
+    """Cells at the edge at both ends and in the middle, one of which swings far below it between.
 
-    A grid that looks at some points of a cell only would take all of it for a barrier.
+    As a cubic spline may. A grid that looks at a few points of a cell takes all of it for a
+    barrier, and the level in it is lost.
     """
-    t = np.linspace(0, 1, 400)
-    dip = np.polynomial.Polynomial.fit(t, 80 * (1 - np.exp(-(((t - 0.27) / 0.08) ** 2))), 16)
-    coefficients = dip.convert(domain=[0, 1], window=[0, 1]).coef
-    V = PPoly((coefficients / 4.0 ** np.arange(17))[::-1, None], [0.0, 4.0])
-    profile = Profile.from_ppoly(V, units=ATOMIC)
-    assert (profile.V(np.array([0.01, 2.0, 3.99])) > profile.open_edge - 1).all()
+    V = np.zeros((4, 24))
+    V[3] = 10.0
+    V[:3, place] = np.array([400.0, -600.0, 200.0])  # 200 t (1 - t) (1 - 2 t)
+    profile = Profile.from_ppoly(PPoly(V, np.arange(25.0)), units=ATOMIC)
+    np.testing.assert_array_equal(profile.V(np.arange(0, 24, 0.5)), 10.0)
     exact = solve(profile)
-    assert len(exact) >= 3
+    assert len(exact) == 1
     assert_honest(differences(profile), exact.energy)
 
 

@@ -65,8 +65,8 @@ def test_square_wells(name):
 
 @pytest.mark.parametrize("case", SOLVABLE, ids=lambda case: case.id)
 def test_reference_levels(case):
-    """Published and computed levels, up to n = 30; sources in tests/reference/README.md."""
-    count = case.count and min(case.count, 31)
+    """Published and computed levels, up to n = 20; sources in tests/reference/README.md."""
+    count = case.count and min(case.count, 21)
     levels = differences(case.profile(), count=count)
     if case.bound is not None:
         assert len(levels) == case.bound
