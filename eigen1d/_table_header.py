@@ -1,9 +1,11 @@
 """The head of a table: settings, columns with their units, and the delimiter.
 
-Names and units are never guessed: another spelling is answered with the right one.
+Names and units are never guessed: another spelling is answered with the right one, and a unit that
+is not known with all that are.
 """
 
 import re
+import unicodedata
 from dataclasses import dataclass
 from difflib import get_close_matches
 
@@ -41,14 +43,25 @@ _OTHER_NAMES = {
     **dict.fromkeys(("sigma", "dv", "error"), "sigma_V"),
     "name": "layer",
 }
+# Of the same unit, never of another; after NFKC, as _unit_meant compares them.
 _OTHER_UNITS = {
-    **dict.fromkeys(("å", "\N{ANGSTROM SIGN}", "a", "ang"), "angstrom"),
-    **dict.fromkeys(("\N{MICRO SIGN}m", "\N{GREEK SMALL LETTER MU}m", "micron"), "um"),
-    **dict.fromkeys(("a0", "a_0"), "bohr"),
-    **dict.fromkeys(("ha", "eh", "e_h"), "hartree"),
-    **dict.fromkeys(("cm-1", "1/cm"), "cm^-1"),
+    **dict.fromkeys(("\N{LATIN SMALL LETTER A WITH RING ABOVE}", "a", "ang"), "angstrom"),
+    **dict.fromkeys(("angstroms", "\u00e5ngstr\u00f6m", "angstr\u00f6m"), "angstrom"),
+    **dict.fromkeys(("micron", "microns", "micrometer", "micrometre"), "um"),
+    **dict.fromkeys(("nanometer", "nanometre", "nanometers", "nanometres"), "nm"),
+    **dict.fromkeys(("meter", "metre", "meters", "metres"), "m"),
+    **dict.fromkeys(("a0", "a_0", "bohrs"), "bohr"),
+    **dict.fromkeys(("joule", "joules"), "J"),
+    **dict.fromkeys(("kelvin", "kelvins"), "K"),
+    **dict.fromkeys(("ha", "eh", "e_h", "hartrees"), "hartree"),
+    **dict.fromkeys(("cm-1", "1/cm", "cm\N{MINUS SIGN}1"), "cm^-1"),
     **dict.fromkeys(("m0", "m_0", "me"), "m_e"),
     **dict.fromkeys(("ev^-1", "ev-1", "/ev"), "1/eV"),
+}
+# What people write for want of nothing better; NFKC makes one of each letter's two codes.
+_ACCEPTED_UNITS = {
+    "\N{LATIN CAPITAL LETTER A WITH RING ABOVE}": "angstrom",
+    "\N{GREEK SMALL LETTER MU}m": "um",
 }
 _EXAMPLE = "x [nm], V [eV], m [m_e]"
 DELIMITERS = {",": "commas", ";": "semicolons", "\t": "tabs", None: "blanks"}
@@ -315,7 +328,7 @@ def named_columns(columns, units):
     if isinstance(units, Units):
         units = (units.length, units.energy)
     elif isinstance(units, str):
-        units = tuple(unit.strip() for unit in units.split(","))
+        units = tuple(_accepted(unit.strip()) for unit in units.split(","))
     if units is not None:
         if len(units) != 2:
             raise InputError(
@@ -363,41 +376,62 @@ def _column(cell, fault):
     match = re.fullmatch(r"([^\[\]]*?)\s*(?:\[\s*([^\[\]]*?)\s*\])?", cell)
     name, unit = match.groups() if match else (cell.split("[")[0].strip(), None)
     if name not in KINDS:
-        # "V (eV)" and "V / eV" begin with the right word.
-        first = re.match(r"\w*", name)[0]
-        meant = first if first in KINDS else nearest(name, KINDS, _OTHER_NAMES)
-        known = f"Columns are {', '.join(ROW_COLUMNS)}; for layers {', '.join(LAYER_COLUMNS)}."
-        if meant:
-            units = UNITS[KINDS[meant]]
-            known = (
-                f"Write {Column(meant, unit if unit in units else ''.join(units[:1]))}.\n{known}"
-            )
-        raise fault(f"unknown column {quoted(name)}" if name else "a column without a name", known)
+        raise fault(
+            f"unknown column {quoted(name)}" if name else "a column without a name",
+            _column_meant(name, unit)
+            + f"Columns are {', '.join(ROW_COLUMNS)}; for layers {', '.join(LAYER_COLUMNS)}.",
+        )
     kind = KINDS[name]
-    allowed = UNITS[kind]
     if kind == "text":
         if not match or unit is not None:
             raise fault(f"the column {name} holds text and has no unit", f"Write {name} alone.")
         return Column(name, "")
+    every = ", ".join(f"{name} [{known}]" for known in UNITS[kind])
     if not unit or not match:
         raise fault(
             f"expected a unit in brackets, found {quoted(cell)}",
-            f"Write {name} [{allowed[0]}]{_others(kind, allowed[0])}.",
+            f"Write the unit that the numbers have: {every}.",
         )
-    if unit not in allowed:
-        other = next((k for k, units in UNITS.items() if unit in units), None)
-        meant = allowed[0] if other else nearest(unit, allowed, _OTHER_UNITS) or allowed[0]
-        found = f"the unit of {other} {quoted(unit)}" if other else quoted(unit)
-        raise fault(
-            f"expected a unit of {kind}, found {found}",
-            f"Write {name} [{meant}]{_others(kind, meant)}.",
-        )
-    return Column(name, unit)
+    unit = _accepted(unit)
+    if unit in UNITS[kind]:
+        return Column(name, unit)
+    other = next((k for k, units in UNITS.items() if unit in units), None)
+    meant = _unit_meant(unit, kind)
+    if other:
+        remedy = f"Write the unit that the numbers have: {every}."
+    elif meant:
+        remedy = f"Write {name} [{meant}]."
+    else:
+        remedy = f"Convert the numbers to a unit that is known: {every}."
+    found = f"the unit of {other} {quoted(unit)}" if other else quoted(unit)
+    raise fault(f"expected a unit of {kind}, found {found}", remedy)
 
 
-def _others(kind, named):
-    rest = [unit for unit in UNITS[kind] if unit != named]
-    return f", or another unit of {kind}: {', '.join(rest)}" if rest else ""
+def _column_meant(name, unit):
+    """Return the sentence that says which column was probably meant, or nothing."""
+    # "V (eV)" and "V / eV" begin with the right word.
+    first, rest = re.fullmatch(r"(\w*)\W*(.*?)\W*", name).groups()
+    meant = first if first in KINDS else nearest(first or name, KINDS, _OTHER_NAMES)
+    if not meant:
+        return ""
+    # No unit but the one found: the numbers are in that one.
+    unit = _accepted(unit or rest)
+    kind = KINDS[meant]
+    unit = unit if unit in UNITS[kind] else _unit_meant(unit, kind)
+    return f"Write {Column(meant, unit or '')}.\n"
+
+
+def _accepted(unit):
+    return _ACCEPTED_UNITS.get(unicodedata.normalize("NFKC", unit), unit)
+
+
+def _unit_meant(unit, kind):
+    """Return the unit that this is another spelling of, or None; never a unit of another size."""
+    if re.match("M.", unit):  # MeV is not meV
+        return None
+    lower = unicodedata.normalize("NFKC", unit).lower()
+    found = {known.lower(): known for known in UNITS[kind]}.get(lower) or _OTHER_UNITS.get(lower)
+    return found if found in UNITS[kind] else None
 
 
 def _check_set(columns, fault):

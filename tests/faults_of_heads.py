@@ -130,7 +130,7 @@ well.csv, line 2: expected a header, found '0.0, 0.280, 0.092'
 well.csv, line 1, column 2 (V): expected a unit in brackets, found 'V'
     1 | x [nm], V, m [m_e]
       |         ^
-  Write V [eV], or another unit of energy: meV, J, hartree, cm^-1, K.""",
+  Write the unit that the numbers have: V [eV], V [meV], V [J], V [hartree], V [cm^-1], V [K].""",
         (1, 2, "V", "V"),
     ),
     Fault(
@@ -140,7 +140,7 @@ well.csv, line 1, column 2 (V): expected a unit in brackets, found 'V'
 well.csv, line 1, column 2 (V): expected a unit in brackets, found 'V'
     1 | x [nm] V m [m_e]
       |        ^
-  Write V [eV], or another unit of energy: meV, J, hartree, cm^-1, K.""",
+  Write the unit that the numbers have: V [eV], V [meV], V [J], V [hartree], V [cm^-1], V [K].""",
         (1, 2, "V", "V"),
     ),
     Fault(
@@ -161,7 +161,7 @@ well.csv, line 1, column 2 (V (eV)): unknown column 'V (eV)'
 well.csv, line 1, column 2 (V [eV): expected a unit in brackets, found 'V [eV'
     1 | x [nm], V [eV, m [m_e]
       |         ^^^^^
-  Write V [eV], or another unit of energy: meV, J, hartree, cm^-1, K.""",
+  Write the unit that the numbers have: V [eV], V [meV], V [J], V [hartree], V [cm^-1], V [K].""",
         (1, 2, "V [eV", "V [eV"),
     ),
     Fault(
@@ -171,18 +171,28 @@ well.csv, line 1, column 2 (V [eV): expected a unit in brackets, found 'V [eV'
 well.csv, line 1, column 2 (V [ev]): expected a unit of energy, found 'ev'
     1 | x [nm], V [ev], m [m_e]
       |         ^^^^^^
-  Write V [eV], or another unit of energy: meV, J, hartree, cm^-1, K.""",
+  Write V [eV].""",
         (1, 2, "V [ev]", "V [ev]"),
     ),
     Fault(
         "unknown unit of length",
-        "x [\xc5], V [eV], m [m_e]\n" + GOOD,
+        "x [pm], V [eV], m [m_e]\n" + GOOD,
         """\
-well.csv, line 1, column 1 (x [\u00c5]): expected a unit of length, found '\u00c5'
-    1 | x [\u00c5], V [eV], m [m_e]
-      | ^^^^^
-  Write x [angstrom], or another unit of length: nm, um, m, bohr.""",
-        (1, 1, "x [\xc5]", "x [\xc5]"),
+well.csv, line 1, column 1 (x [pm]): expected a unit of length, found 'pm'
+    1 | x [pm], V [eV], m [m_e]
+      | ^^^^^^
+  Convert the numbers to a unit that is known: x [nm], x [angstrom], x [um], x [m], x [bohr].""",
+        (1, 1, "x [pm]", "x [pm]"),
+    ),
+    Fault(
+        "unknown unit of mass",
+        "x [nm], V [eV], m [kg]\n" + GOOD,
+        """\
+well.csv, line 1, column 3 (m [kg]): expected a unit of mass, found 'kg'
+    1 | x [nm], V [eV], m [kg]
+      |                 ^^^^^^
+  Convert the numbers to a unit that is known: m [m_e].""",
+        (1, 3, "m [kg]", "m [kg]"),
     ),
     Fault(
         "unit of the wrong kind",
@@ -191,7 +201,7 @@ well.csv, line 1, column 1 (x [\u00c5]): expected a unit of length, found '\u00c
 well.csv, line 1, column 2 (V [nm]): expected a unit of energy, found the unit of length 'nm'
     1 | x [nm], V [nm], m [m_e]
       |         ^^^^^^
-  Write V [eV], or another unit of energy: meV, J, hartree, cm^-1, K.""",
+  Write the unit that the numbers have: V [eV], V [meV], V [J], V [hartree], V [cm^-1], V [K].""",
         (1, 2, "V [nm]", "V [nm]"),
     ),
     Fault(
@@ -201,7 +211,7 @@ well.csv, line 1, column 2 (V [nm]): expected a unit of energy, found the unit o
 well.csv, line 1, column 3 (alpha [eV^-1]): expected a unit of inverse energy, found 'eV^-1'
     1 | x [nm], V [eV], alpha [eV^-1]
       |                 ^^^^^^^^^^^^^
-  Write alpha [1/eV], or another unit of inverse energy: 1/meV, 1/J, 1/hartree, 1/cm^-1, 1/K.""",
+  Write alpha [1/eV].""",
         (1, 3, "alpha [eV^-1]", "alpha [eV^-1]"),
     ),
     Fault(

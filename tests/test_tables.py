@@ -76,6 +76,58 @@ def test_marks_stand_below_what_was_found(fault):
 
 
 @pytest.mark.parametrize(
+    ("header", "found", "meant"),
+    [
+        ("x [Angstroms], V [eV]", "Angstroms", "x [angstrom]"),
+        ("x [A], V [eV]", "A", "x [angstrom]"),
+        ("x [\N{LATIN SMALL LETTER A WITH RING ABOVE}], V [eV]", "\u00e5", "x [angstrom]"),
+        ("x [NM], V [eV]", "NM", "x [nm]"),
+        ("x [nm], V [EV]", "EV", "V [eV]"),
+        ("x [nm], V [Hartrees]", "Hartrees", "V [hartree]"),
+        ("x [nm], V [cm\N{SUPERSCRIPT MINUS}\N{SUPERSCRIPT ONE}]", "cm\u207b\u00b9", "V [cm^-1]"),
+        ("x [nm], V (meV)", "V (meV)", "V [meV]"),
+        ("x [nm], Ec / K", "Ec / K", "V [K]"),
+        ("z [um], V [eV]", "z", "x [um]"),
+        # Another unit, so none is proposed: to write it instead would be other physics.
+        ("x [pm], V [eV]", "pm", None),
+        ("x [mm], V [eV]", "mm", None),
+        ("x [nm], V [A]", "A", None),
+        ("x [nm], V [MeV]", "MeV", None),
+        ("x [nm], V [mV]", "mV", None),
+        ("x [nm], V [kcal/mol]", "kcal/mol", None),
+        ("x [nm], V (kcal/mol)", "V (kcal/mol)", None),
+        ("x [nm], V [eV], m [kg]", "kg", None),
+    ],
+)
+def test_a_unit_is_proposed_only_where_it_is_the_one_that_was_written(header, found, meant, write):
+    """A user does as the message says; one unit for another makes levels wrong by any factor."""
+    with pytest.raises(TableError) as caught:
+        read_profile(write(header + "\n0, 1\n5, 1\n"))
+    first, *_, text = str(caught.value).split("^\n")
+    assert f"found '{found}'" in first or f"column '{found}'" in first
+    proposed = re.findall(r"Write (\w+ \[.*?\])", text)
+    assert proposed == ([meant] if meant else [])
+    assert text.startswith("  Convert the numbers to ") or meant or "(" in found
+
+
+@pytest.mark.parametrize(
+    ("spelling", "unit"),
+    [
+        ("\N{LATIN CAPITAL LETTER A WITH RING ABOVE}", "angstrom"),
+        ("\N{ANGSTROM SIGN}", "angstrom"),
+        ("A\N{COMBINING RING ABOVE}", "angstrom"),
+        ("\N{MICRO SIGN}m", "um"),
+        ("\N{GREEK SMALL LETTER MU}m", "um"),
+    ],
+)
+def test_letters_of_physics_are_read_as_the_units_they_are(spelling, unit, write):
+    """They are how everybody writes these units, and mean nothing else."""
+    assert read_profile(write(f"x [{spelling}], V [eV]\n0, 1\n5, 1\n")).units == Units(unit, "eV")
+    bare = read_profile(write("0, 1\n5, 1\n"), columns="x,V", units=f"{spelling},eV")
+    assert bare.units == Units(unit, "eV")
+
+
+@pytest.mark.parametrize(
     ("path", "text"),
     [
         ("wel.csv", "wel.csv: there is no such file\n  Did you mean well.csv?"),
@@ -133,7 +185,7 @@ def test_path_that_is_no_file_is_explained(path, text, write):
         (
             {"columns": "x,U,m", "units": "nm,eV"},
             "columns='x,U,m', column 2: unknown column 'U'\n"
-            "  Write V [eV].\n"
+            "  Write V.\n"
             "  Columns are x, V, m, sigma_V, alpha; "
             "for layers thickness, V, m, V_end, m_end, alpha, layer.",
         ),
