@@ -290,7 +290,8 @@ def _delimiter_of_row(line, count):
 
 def _header_columns(source, number, line, delimiter):
     if delimiter is None:
-        spans = [m.span() for m in re.finditer(r"[^\s\[]+(?:\s*\[[^\]]*\]?)?|\[[^\]]*\]?", line)]
+        cell = r'"[^"]*"|[^\s\[]+(?:\s*\[[^\]]*\]?)?|\[[^\]]*\]?'
+        spans = [m.span() for m in re.finditer(cell, line)]
     else:
         spans = spans_of(line, delimiter)
 
@@ -308,7 +309,21 @@ def _header_columns(source, number, line, delimiter):
             span=spans[index],
         )
 
-    return _columns([line[slice(*span)] for span in spans], fault)
+    cells = [line[slice(*span)] for span in spans]
+    last = next((k for k in reversed(range(len(cells))) if cells[k]), 0)
+    if last < len(cells) - 1:
+        raise fault(
+            last + 1,
+            "expected a column, found a separator at the end of the line",
+            "Remove it, here and at the end of the rows; separators stand only between columns.",
+        )
+    return _columns([_without_quotes(cell) for cell in cells], fault)
+
+
+def _without_quotes(cell):
+    """Return a name without the quotation marks that many programs put around text."""
+    quotes = re.fullmatch(r'"\s*([^"]*?)\s*"', cell)
+    return quotes[1] if quotes else cell
 
 
 def named_columns(columns, units):
@@ -373,6 +388,11 @@ def _columns(cells, fault):
 
 
 def _column(cell, fault):
+    if '"' in cell:
+        raise fault(
+            f"unmatched quotation marks in {quoted(cell)}",
+            "Write no quotation marks, or two around each column.",
+        )
     match = re.fullmatch(r"([^\[\]]*?)\s*(?:\[\s*([^\[\]]*?)\s*\])?", cell)
     name, unit = match.groups() if match else (cell.split("[")[0].strip(), None)
     if name not in KINDS:

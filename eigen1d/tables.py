@@ -215,7 +215,7 @@ def _length_remedy(table, number, bare):
         others = [cell.replace(",", ".") for cell in cells_of(bare, other)]
         if len(others) == count and all(NUMBER.fullmatch(cell) for cell in others):
             return _ALIKE.format(first=DELIMITERS[delimiter], this=name)
-    if len(cells) == count + 1 and not cells[-1]:
+    if len(cells) > count and not any(cells[count:]):
         return "Remove the separator at the end of the row; it stands only between values."
     if len(cells) < count and bare != table.source.lines[number - 1].rstrip():
         return "Write the missing values; what follows # is a comment."

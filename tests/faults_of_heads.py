@@ -165,6 +165,36 @@ well.csv, line 1, column 2 (V [eV): expected a unit in brackets, found 'V [eV'
         (1, 2, "V [eV", "V [eV"),
     ),
     Fault(
+        "separator at the end of all lines",
+        "x [nm], V [eV],\n0.0, 0.28,\n5.0, 0.0,\n",
+        """\
+well.csv, line 1, column 3: expected a column, found a separator at the end of the line
+    1 | x [nm], V [eV],
+      |                ^
+  Remove it, here and at the end of the rows; separators stand only between columns.""",
+        (1, 3, "", ""),
+    ),
+    Fault(
+        "empty columns at the end of all lines",
+        "x [nm];V [eV];;\n0,0;0,28;;\n5,0;0,0;;\n",
+        """\
+well.csv, line 1, column 3: expected a column, found a separator at the end of the line
+    1 | x [nm];V [eV];;
+      |               ^
+  Remove it, here and at the end of the rows; separators stand only between columns.""",
+        (1, 3, "", ""),
+    ),
+    Fault(
+        "quotation marks around the whole header",
+        '"x [nm], V [eV]"\n0.0, 0.28\n5.0, 0.0\n',
+        """\
+well.csv, line 1, column 1 ("x [nm]): unmatched quotation marks in '"x [nm]'
+    1 | "x [nm], V [eV]"
+      | ^^^^^^^
+  Write no quotation marks, or two around each column.""",
+        (1, 1, '"x [nm]', '"x [nm]'),
+    ),
+    Fault(
         "unknown unit",
         "x [nm], V [ev], m [m_e]\n" + GOOD,
         """\
@@ -258,13 +288,13 @@ well.csv, line 1, column 3 (sigmaV [meV]): unknown column 'sigmaV'
     ),
     Fault(
         "column without a name",
-        "x [nm], V [eV],\n0.0, 0.280,\n",
+        "x [nm], , V [eV]\n0.0, , 0.280\n",
         """\
-well.csv, line 1, column 3: a column without a name
-    1 | x [nm], V [eV],
-      |                ^
+well.csv, line 1, column 2: a column without a name
+    1 | x [nm], , V [eV]
+      |         ^
   Columns are x, V, m, sigma_V, alpha; for layers thickness, V, m, V_end, m_end, alpha, layer.""",
-        (1, 3, "", ""),
+        (1, 2, "", ""),
     ),
     Fault(
         "column of layers among rows",

@@ -75,6 +75,13 @@ def test_marks_stand_below_what_was_found(fault):
             assert above in (quote[1], str(fault.place[2]))
 
 
+def test_empty_cells_at_the_end_of_rows_are_named(write):
+    """A spreadsheet writes as many separators as its widest row has; two are no other fault."""
+    with pytest.raises(TableError, match="expected 3 values, found 5") as caught:
+        read_profile(write(ROWS.replace(",", ";") + "0,0;0,280;0,092;;\n5;0;0,067;;\n"))
+    assert "\n  Remove the separator at the end of the row; it stands" in str(caught.value)
+
+
 @pytest.mark.parametrize(
     ("header", "found", "meant"),
     [
@@ -241,6 +248,8 @@ SAME = {
         "  # indented, 1, 2\n0.0, 0.280, 0.092 # first, 1\n\n \t\n#\n5.0, 0, 0.067 #\n# end\n"
     ),
     "other column order": "m [m_e], x [nm], V [eV]\n0.092, 0, 0.28\n0.067, 5, 0\n",
+    "quoted names": '"x [nm]","V [eV]" , "m [m_e] "\n' + GOOD,
+    "quoted names between blanks": '"x [nm]" "V [eV]" "m [m_e]"\n' + GOOD.replace(",", ""),
     "exponents": ROWS + "0e0, 2.8E-1, +92e-3\n.5e1, -0, 0.67e-1\n",
     "unit without blank": "x[nm], V[ eV ], m [m_e]\n" + GOOD,
     "blanks in a header of blanks": "x [nm]  V[eV] m  [m_e]\n0 0.28 0.092\n5 0 0.067\n",
