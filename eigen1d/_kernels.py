@@ -131,8 +131,11 @@ def _constant(v, mass, h, psi, phi):
         k = np.sqrt(z)
         slope = k / (mass * h)
         grows, decays = 0.5 * (psi + phi / slope), 0.5 * (psi - phi / slope)
-        decays *= np.exp(-2.0 * k)
-        out_psi, out_phi, log = grows + decays, slope * (grows - decays), k
+        if grows == 0.0:  # at a level to the last digit; what is left must not round to nothing
+            out_psi, out_phi, log = decays, -slope * decays, -k
+        else:
+            decays *= np.exp(-2.0 * k)
+            out_psi, out_phi, log = grows + decays, slope * (grows - decays), k
     zeros = 1 if is_positive(psi, phi) != is_positive(out_psi, out_phi) else 0
     return out_psi, out_phi, zeros, log
 
@@ -331,10 +334,49 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         node += -1 if backward else 1
 
 
+@kernel
+def _inside_barrier(k, fraction, psi, log, psi_right, log_right, slope):
+    """psi and phi in a flat barrier of k decay lengths from psi at both ends, as exp(log) psi.
+
+    From one end alone a state that decays towards the other loses all digits on the way.
+    """
+    u, u_right = k * fraction, k * (1.0 - fraction)
+    whole = -np.expm1(-2.0 * k)
+    a = psi * np.exp(log - u) / whole
+    b = psi_right * np.exp(log_right - u_right) / whole
+    shrink, shrink_right = np.exp(-2.0 * u_right), np.exp(-2.0 * u)
+    return (
+        a * (1.0 - shrink) + b * (1.0 - shrink_right),
+        slope * (b * (1.0 + shrink_right) - a * (1.0 + shrink)),
+    )
+
+
+@kernel
+def _along_flat(cells, c, fraction, energy, start, level, side):
+    """psi and phi of one level inside a cell that is crossed in closed form."""
+    width, V, mass, per_energy = cells[:4]
+    start_psi, start_phi, start_log = start
+    m = mass[c, 0] + (energy * per_energy[c, 0] if per_energy.shape[1] > 0 else 0.0)
+    v = V[c, 0] - energy
+    if v > 0.0:
+        k = np.sqrt(2.0 * m * v) * width[c]
+        return _inside_barrier(
+            k, fraction, start_psi[level, c], start_log[level, c], start_psi[level, c + 1],
+            start_log[level, c + 1], k / (m * width[c]),
+        )  # fmt: skip
+    sign, part = (-1.0, 1.0 - fraction) if side == 1 else (1.0, fraction)
+    psi, phi, _, log = _constant(
+        v, m, width[c] * part, start_psi[level, c + side], sign * start_phi[level, c + side]
+    )
+    grown = np.exp(log + start_log[level, c + side])
+    return psi * grown, sign * phi * grown
+
+
 @kernel(
     signature=types.void(
         CELLS,
         FLOATS,
+        types.float64[:, ::1],
         types.float64[:, ::1],
         types.float64[:, ::1],
         INTEGERS,
@@ -344,14 +386,14 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         types.float64[:, ::1],
     )
 )
-def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, phi):
+def along(cells, energies, start_psi, start_phi, start_log, cell, fraction, backward, psi, phi):
     """Evaluate wave functions inside cells, from the node on the side where they grow inwards.
 
     Parameters
     ----------
     energies : ndarray, shape (levels,)
-    start_psi, start_phi : ndarray, shape (levels, cells + 1)
-        At the nodes.
+    start_psi, start_phi, start_log : ndarray, shape (levels, cells + 1)
+        At the nodes: psi and phi, and the logarithm of their common factor.
     cell : ndarray of int64, shape (points,)
     fraction : ndarray, shape (points,)
         0 to 1 across the cell.
@@ -366,6 +408,14 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
     state, log, level_of = np.zeros(6 * LANES), np.zeros(LANES), np.empty(LANES, np.int64)
     for point in range(cell.size):
         c = cell[point]
+        if cells[7][c] == FLAT:
+            for level in range(energies.size):
+                side = 1 if c >= backward[level] else 0
+                psi[level, point], phi[level, point] = _along_flat(
+                    cells, c, fraction[point], energies[level],
+                    (start_psi, start_phi, start_log), level, side,
+                )  # fmt: skip
+            continue
         for side in range(2):
             part = fraction[point] if side == 0 else 1.0 - fraction[point]
             sign = 1.0 if side == 0 else -1.0
@@ -386,7 +436,9 @@ def along(cells, energies, start_psi, start_phi, cell, fraction, backward, psi, 
                 _advance(cells, kind, c, side == 1, part, state, lanes, log, scratch)
                 for lane in range(lanes):
                     grown = 1.0
-                    if log[lane] != 0.0:
-                        grown, log[lane] = np.exp(log[lane]), 0.0
+                    total = log[lane] + start_log[level_of[lane], c + side]
+                    log[lane] = 0.0
+                    if total != 0.0:
+                        grown = np.exp(total)
                     psi[level_of[lane], point] = state[lane] * grown
                     phi[level_of[lane], point] = sign * state[LANES + lane] * grown

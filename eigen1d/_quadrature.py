@@ -12,6 +12,8 @@ from numpy.polynomial.legendre import leggauss
 _FINE = 12, 3.0
 _COARSE = 4, 0.1
 _CHUNK = 1 << 16  # pieces evaluated at once: bounds memory for tables of millions of rows
+_VALUES = 1 << 22  # pieces times levels at once, at most
+_THICK = 30.0  # decay lengths of a barrier whose inside is not worth a piece for each
 _TAIL_POINTS = 40  # exact for polynomials up to degree 79 times the exponential
 
 
@@ -38,24 +40,51 @@ def pieces(profile, energies, breaks=(), span=None):
     ends = profile.x if len(breaks) == 0 else np.union1d(profile.x, breaks)
     if span is not None:
         ends = np.concatenate([[span[0]], ends[(ends > span[0]) & (ends < span[1])], [span[1]]])
-    for start in range(0, ends.size - 1, _CHUNK):
-        part = ends[start : start + _CHUNK + 1]
+    ends, barrier = _with_skins(profile, ends, energies)
+    chunk = int(np.clip(_VALUES // energies.size, 64, _CHUNK))
+    for start in range(0, ends.size - 1, chunk):
+        part = ends[start : start + chunk + 1]
         left, width, phase = part[:-1], np.diff(part), _phase(profile, part, energies)
-        short = phase <= _COARSE[1]
+        phase[barrier[start : start + chunk]] = 0.0
+        short = (phase <= _COARSE[1]) & ~barrier[start : start + chunk]
         for points, chosen, limit in (
             (_COARSE[0], short, _COARSE[1]),
             (_FINE[0], ~short, _FINE[1]),
         ):
-            yield from _gauss(points, left[chosen], width[chosen], phase[chosen] / limit)
+            yield from _gauss(points, left[chosen], width[chosen], phase[chosen] / limit, chunk)
 
 
-def _gauss(points, left, width, parts):
+def _with_skins(profile, ends, energies):
+    """Cut long cells that all levels tunnel into; return the ends, and which pieces are of those.
+
+    There psi falls off from both ends, and pieces may grow with the distance d from the nearer one:
+    on a piece from d to 2 d the integrand falls by exp(-2 kappa d), so where a piece is long
+    nothing is left. A barrier of a million decay lengths takes 40 pieces.
+    """
+    phase = _phase(profile, ends, energies)
+    barrier = phase > _THICK
+    if barrier.any():
+        cell, _ = profile.cell_of(0.5 * (ends[:-1] + ends[1:]))
+        V = profile.V_cells[cell]
+        barrier &= V[:, 0] - np.abs(V[:, 1:]).sum(axis=1) > energies.max()
+    if not barrier.any():
+        return ends, barrier
+    doublings = np.ceil(np.log2(phase[barrier] / _FINE[1])).astype(int)
+    share = 0.5 ** np.arange(1, doublings.max() + 1)
+    owner, step = np.nonzero(np.arange(share.size) < doublings[:, None])
+    left, width = ends[:-1][barrier][owner], np.diff(ends)[barrier][owner]
+    cuts = np.concatenate([left + width * share[step], left + width * (1 - share[step])])
+    inner = np.union1d(ends, cuts)
+    return inner, barrier[np.searchsorted(ends, inner[:-1], side="right") - 1]
+
+
+def _gauss(points, left, width, parts, chunk):
     parts = np.maximum(np.ceil(parts), 1).astype(int)
     node, weight = leggauss(points)
     node, weight = 0.5 * (node + 1), 0.5 * weight
     stop = np.cumsum(parts)
-    for low in range(0, int(stop[-1]) if stop.size else 0, _CHUNK):
-        index = np.arange(low, min(low + _CHUNK, stop[-1]))
+    for low in range(0, int(stop[-1]) if stop.size else 0, chunk):
+        index = np.arange(low, min(low + chunk, stop[-1]))
         piece = np.searchsorted(stop, index, side="right")
         h = width[piece] / parts[piece]
         start = left[piece] + (index - (stop[piece] - parts[piece])) * h
@@ -101,9 +130,9 @@ class Tail:
         own = edge.mass * electron_mass
         mass = own * (1 + edge.alpha * (energies - edge.V))
         kappa = np.sqrt(2 * mass * np.maximum(edge.V - energies, 0.0))
-        # A level within rounding of the edge would give a tail without end; the least kappa that
-        # doubles can tell from zero here stands for it.
-        kappa = np.maximum(kappa, np.sqrt(2 * mass * np.finfo(float).tiny))
+        # A level at the edge to the last digit would give a tail without end: it is bound by less
+        # than the spacing of doubles there, which stands for what it is bound by.
+        kappa = np.maximum(kappa, np.sqrt(mass * max(np.spacing(abs(edge.V)), 1e-300)))
         return cls(x, side, kappa, amplitude, 0.5 * own * edge.alpha * (kappa / mass) ** 2)
 
     def depth(self, x):

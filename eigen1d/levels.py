@@ -19,6 +19,7 @@ from ._quadrature import Tail, pieces
 from .errors import InputError
 from .profile import Profile
 
+_CROWDED = 1e-6  # of the height: levels closer than this share their digits, see `_mixing`
 DEFAULT_COUNT = 10  # between two walls levels never end; this many are returned unless asked
 
 
@@ -169,7 +170,7 @@ class Levels:
             x not one row of finite numbers.
         """
         x = numbers("x", x)
-        psi = self.states.sample(np.clip(x, self.profile.x[0], self.profile.x[-1]))[0]
+        psi = self._sample(np.clip(x, self.profile.x[0], self.profile.x[-1]))[0]
         for tail in self._tails:
             beyond = tail.depth(x) > 0
             psi[:, beyond] = tail.psi(x[beyond])
@@ -181,9 +182,45 @@ class Levels:
                 psi[:, outside] = 0.0
         return psi / self._norm[:, None]
 
+    def _sample(self, x):
+        """psi and phi of the states at x inside the cells, those of each crowd orthonormal."""
+        psi, phi = self.states.sample(x)
+        for crowd, mixing in self._mixing:
+            psi[crowd], phi[crowd] = mixing @ psi[crowd], mixing @ phi[crowd]
+        return psi, phi
+
+    @cached_property
+    def _mixing(self):
+        """(levels, matrix) for each crowd of levels too close for their states to be told apart.
+
+        Rounding mixes states of levels that differ by a part g of their height by eps / g. The
+        nearest orthonormal ones take their place: S^(-1/2), S being their overlaps
+        (P.-O. Loewdin, J. Chem. Phys. 18 (1950) 365).
+        """
+        near = np.diff(self.energy) <= _CROWDED * (self.energy[1:] - self.profile.V_min)
+        cuts = np.flatnonzero(~near) + 1
+        crowds = [c for c in np.split(np.arange(len(self)), cuts) if c.size > 1]
+        out = []
+        for crowd in (slice(c[0], c[-1] + 1) for c in crowds):
+            energy = self.energy[crowd]
+            overlap = np.zeros((energy.size, energy.size))
+            for x, weight in pieces(self.profile, energy):
+                psi = self.states.sample(x)[0][crowd]
+                overlap += (psi * weight) @ psi.T
+            for tail in self._tails_of(self.states.sample, crowd):
+                overlap += tail.matrix(np.ones_like)
+            norm = np.sqrt(np.diag(overlap))
+            value, vector = np.linalg.eigh(overlap / np.outer(norm, norm))
+            root = (vector / np.sqrt(np.maximum(value, np.finfo(float).eps))) @ vector.T
+            out.append((crowd, root / norm))
+        return out
+
     @cached_property
     def _tails(self):
-        """The decaying tails beyond the open edges, in the normalisation of the states."""
+        """The decaying tails beyond the open edges, in the normalisation of `_sample`."""
+        return self._tails_of(self._sample, slice(None))
+
+    def _tails_of(self, sample, part):
         ends = (
             (self.profile.left, self.profile.x[0], -1),
             (self.profile.right, self.profile.x[-1], 1),
@@ -191,7 +228,7 @@ class Levels:
         unit = self.profile.units.electron_mass
         return [
             Tail.beyond(
-                edge, x, side, unit, self.energy, self.states.sample(np.array([x]))[0][:, 0]
+                edge, x, side, unit, self.energy[part], sample(np.array([x]))[0][part, 0]
             )
             for edge, x, side in ends
             if edge.kind == "open"
@@ -208,8 +245,7 @@ class Levels:
     def _chunks(self, breaks=(), span=None):
         """Yield (x, weight, psi, phi) of a quadrature over the cells; psi as the states give it."""
         for x, weight in pieces(self.profile, self.energy, breaks, span):
-            psi, phi = self.states.sample(x)
-            yield x, weight, psi, phi
+            yield x, weight, *self._sample(x)
 
     # What follows from them ---------------------------------------------------------------------
 

@@ -32,6 +32,11 @@ EPS = np.finfo(float).eps
 # the worst error seen against the reference levels is quoted in tests/test_shooting.py.
 ROUNDING = 16 * EPS
 _SAMPLES = 4096  # nodes at which the place of a state is looked for
+# Levels of a group differ by less than _SAME of their height, some dozen roundings. Their waves are
+# computed _AWAY below: far against the group's width, near against other levels.
+_SAME, _AWAY = 1e-14, 1e-12
+# Where the earlier waves of a group leave room for the next: in another well they reach 1e-2.
+_SMALL = 0.1
 _FIRST_ROUNDS, _MORE_ROUNDS = 8, 12  # evaluations before the meeting node is chosen anew
 
 
@@ -52,6 +57,11 @@ def find(profile, request):
     energy, bracket = search.levels(first, last)
     complete = bool(np.isfinite(energy).all())
     half_width = np.maximum(bracket[:, 1] - energy, energy - bracket[:, 0])
+    if (np.diff(energy) <= half_width[1:]).any():
+        notes += (
+            "some levels agree to the last digit; each wave function of such a group may live in "
+            "one well, and any orthonormal mixture of them is as good",
+        )
     return Levels(
         profile=profile,
         n=np.arange(first, last),
@@ -273,29 +283,64 @@ class States:
 
     @cached_property
     def _nodes(self):
-        """psi and phi at all nodes, (count, nodes) each, and the node where both sides join."""
+        """At all nodes psi, phi and the log of their factor, (count, nodes) each; where sides join.
+
+        The logarithm is kept apart: behind a barrier of a thousand decay lengths psi is no double,
+        but grows into one inside the next cell.
+        """
         search, count = self.search, self.energy.size
         nodes = search.x.size
-        psi, phi = np.empty((count, nodes)), np.empty((count, nodes))
-        stop = self.stop if self.stop is not None else search._homes(self.energy)
+        wave = np.empty((3, count, nodes))
+        stop = (search._homes(self._at) if self.stop is None else self.stop).copy()
         lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
         for low in range(0, count, lanes):
             part = slice(low, min(low + lanes, count))
-            left = search.trail(self.energy[part], False)
-            right = search.trail(self.energy[part], True)
+            left = search.trail(self._at[part], False)
+            right = search.trail(self._at[part], True)
+            right[:, 1] *= -1  # the mirror image's phi
             for i, level in enumerate(range(part.start, part.stop)):
-                psi[level], phi[level] = _glued(left[:, :, i], right[:, :, i], stop[level])
-        return psi, phi, stop
+                halves = left[:, :, i], right[:, :, i]
+                first = self._first[level]
+                if first < level:
+                    stop[level] = _elsewhere(halves, wave[:, first:level])
+                wave[:, level] = _glued(*halves, stop[level])
+        return *wave, stop
+
+    @cached_property
+    def _first(self):
+        """The first level of the group that each level belongs to: equal but for rounding."""
+        height = np.maximum(self.energy - self.search.floor, 0.0)
+        apart = np.diff(self.energy) > _SAME * height[1:]
+        starts = np.flatnonzero(np.concatenate([[True], apart]))
+        return np.repeat(starts, np.diff(np.append(starts, self.energy.size)))
+
+    @cached_property
+    def _at(self):
+        """The energies at which waves are computed.
+
+        Joined at x0, the two solutions at E are the Green function, a sum of psi_n(x) psi_n(x0) /
+        (E_n - E). For a level alone its own energy picks its state. In a group that would pick one
+        by chance; somewhat below the group all weigh alike, and the wave joined in a well is what
+        the group can make of that well alone.
+        """
+        at = self.energy.copy()
+        for first in np.unique(self._first):
+            group = self._first == first
+            if group.sum() > 1:
+                low, high = self.energy[group][[0, -1]]
+                away = max(_AWAY * (high - self.search.floor), 10 * (high - low))
+                at[group] = max(low - away, self.search.floor)
+        return at
 
     @property
     def psi(self):
         """psi at the nodes, shape (count, nodes)."""
-        return self._nodes[0]
+        return self._nodes[0] * np.exp(self._nodes[2])
 
     @property
     def phi(self):
         """phi = psi'/m at the nodes, shape (count, nodes)."""
-        return self._nodes[1]
+        return self._nodes[1] * np.exp(self._nodes[2])
 
     def sample(self, x):
         """psi and phi at x inside the cells, each of shape (count, points); not normalised."""
@@ -303,28 +348,35 @@ class States:
         cell = np.clip(np.searchsorted(mesh, x, side="right") - 1, 0, mesh.size - 2)
         fraction = np.clip((x - mesh[cell]) / (mesh[cell + 1] - mesh[cell]), 0.0, 1.0)
         psi, phi = np.empty((self.energy.size, x.size)), np.empty((self.energy.size, x.size))
-        start_psi, start_phi, stop = self._nodes
-        _kernels.along(
-            self.search.cells, self.energy, start_psi, start_phi, cell, fraction, stop, psi, phi
-        )
+        *start, stop = self._nodes
+        _kernels.along(self.search.cells, self._at, *start, cell, fraction, stop, psi, phi)
         return psi, phi
 
 
+def _elsewhere(halves, before):
+    """The node where the Green function is largest among those where the waves `before` are small.
+
+    The Green function on the diagonal is the product of both solutions, here as a logarithm.
+    """
+    size = sum(half[:, 2] + np.log(np.hypot(half[:, 0], half[:, 1])) for half in halves)
+    others = np.hypot(before[0], before[1]) * np.exp(before[2])
+    taken = (others > _SMALL * others.max(axis=1)[:, None]).any(axis=0)
+    return int(np.argmax(np.where(taken, -np.inf, size)))
+
+
 def _glued(left, right, stop):
-    """One wave function from its two halves, shape (nodes, 3) each, largest about 1 at `stop`."""
-    right[:, 1] *= -1  # the mirror image's phi
-    scale = np.hypot(*_balanced(left[stop], right[stop]))
+    """One wave (psi, phi, log) from its two halves, (nodes, 3) each, about 1 at `stop`."""
     a, b = _balanced(left[stop], left[stop]), _balanced(right[stop], left[stop])
     factor = (a[0] * b[0] + a[1] * b[1]) / (b[0] ** 2 + b[1] ** 2)
-    psi, phi = np.empty(left.shape[0]), np.empty(left.shape[0])
+    norm = np.hypot(left[stop, 0], left[stop, 1])
+    wave = np.empty((3, left.shape[0]))
     for part, half, size in (
         (slice(0, stop + 1), left, 1.0),
         (slice(stop + 1, None), right, factor),
     ):
-        grown = np.exp(np.minimum(half[part, 2] - half[stop, 2], 700.0)) * size
-        psi[part], phi[part] = half[part, 0] * grown, half[part, 1] * grown
-    norm = scale if scale > 0 else 1.0
-    return psi / norm, phi / norm
+        wave[:2, part] = half[part, :2].T * (size / norm)
+        wave[2, part] = np.minimum(half[part, 2] - half[stop, 2], 700.0)
+    return wave
 
 
 def _balanced(state, like):

@@ -100,7 +100,7 @@ def test_along_is_what_its_python_says(kind):
     given = ready(rough_cells(8, kind, count=5), ENERGIES)
     random = np.random.default_rng(8)
     levels, points, count = 3, 9, given[0].size
-    start = random.uniform(-1, 1, (2, levels, count + 1))
+    start = random.uniform(-1, 1, (3, levels, count + 1))
     cell, fraction = random.integers(count, size=points), random.uniform(0, 1, points)
     stop = np.array([1, 3, 5])
     results = []
@@ -329,3 +329,22 @@ def test_a_trail_holds_every_node_and_a_stride_some():
     for node in (0, 4, full.shape[0] - 1):
         psi, phi, _, _ = sweep(given, ENERGIES[:4], stop=node)
         np.testing.assert_array_equal([psi, phi], full[node, :2])
+
+
+def test_a_state_at_its_level_survives_a_barrier():
+    """psi that only decays, to the last digit, must not round to nothing behind a barrier."""
+    k = math.sqrt(2 * 50.0) * 60.0  # 600 decay lengths of V - E = 50, mass 1
+    psi, phi, zeros, log = _kernels._constant(50.0, 1.0, 60.0, 1.0, -k / 60.0)
+    assert (zeros, log) == (0, -k) and psi == 1.0 and phi == -k / 60.0
+
+
+@pytest.mark.parametrize("k", [2.0, 40.0, 2000.0])
+def test_inside_a_barrier_both_ends_count(k):
+    """psi = exp(-u) + c exp(u - k) inside k decay lengths, from its values at both ends."""
+    c, slope = 0.3, 1.7
+    start, end = 1 + c * math.exp(-k), math.exp(-k) + c
+    for share in (0.0, 0.2, 0.5, 0.9, 1.0):
+        u = k * share
+        psi, phi = _kernels._inside_barrier(k, share, start, 0.0, end, 0.0, slope)
+        assert psi == pytest.approx(math.exp(-u) + c * math.exp(u - k), rel=1e-12)
+        assert phi == pytest.approx(slope * (c * math.exp(u - k) - math.exp(-u)), rel=1e-12)

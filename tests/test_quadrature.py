@@ -218,10 +218,31 @@ def test_a_constant_may_be_a_number():
 
 
 def test_a_level_at_the_edge_has_a_long_but_finite_tail():
-    """Within rounding of the edge kappa would be 0 and the norm infinite: nothing but nan."""
+    """Within rounding of the edge kappa would be 0 and the norm infinite: nothing but nan.
+
+    What the level is bound by is below the spacing of doubles at the edge; that stands for it.
+    """
     t = tail(energies=(2.0, 2.0 + 1e-16))
     assert (t.kappa > 0).all() and np.isfinite(t.squares()).all()
-    assert t.kappa.max() < 1e-150  # and still far longer than any well
+    assert t.kappa.max() < 1e-7  # and still far longer than any well
+    assert np.isfinite(t.expect(lambda x: x**2)).all()
+
+
+@pytest.mark.parametrize("height", [1e2, 1e4, 1e9, 1e15])
+def test_thick_barriers_take_few_pieces(height):
+    """exp(-2 kappa d) from both ends of a barrier: exact, with some 40 pieces however thick it is.
+
+    By hand: (1 - exp(-10 kappa)) / kappa for exp(-2 kappa d), d from the nearer end of 10.
+    """
+    barrier = Profile.from_layers([10.0], [height], left="wall", right="wall", units=ATOMIC)
+    energy = np.array([0.0])
+    kappa = math.sqrt(2 * height)
+    total, points = 0.0, 0
+    for x, weight in pieces(barrier, energy):
+        total += weight @ np.exp(-2 * kappa * np.minimum(x, 10 - x))
+        points += x.size
+    assert total == pytest.approx((1 - math.exp(-10 * kappa)) / kappa, rel=1e-12)
+    assert points < 1500
 
 
 def test_alpha_in_the_tail():
