@@ -22,6 +22,7 @@ from .errors import CheckError, InputError
 VERSION = sys.modules[__package__].__version__
 DESCRIPTION = """\
 Every bound level of a one-dimensional potential, none missed, each in a two-sided bracket."""
+_ELSEWHERE = "Send it where there is room, or read the levels from --json FILE."
 STATUSES = """\
 exit status: 0 done; 2 the input or the call is wrong; 3 a check failed; 1 a fault of the program"""
 
@@ -46,13 +47,9 @@ def main(argv=None):
     0
     """
     try:
-        args = _parser().parse_args(argv)
-        args.run(args)
-        sys.stdout.flush()
-    except SystemExit as end:  # --help and --version
-        return end.code or 0
-    except BrokenPipeError:
-        _let_the_reader_go()
+        _run(argv)
+    except BrokenPipeError:  # whoever read our output has seen enough
+        _abandon(sys.stdout)
     except InputError as fault:
         return _complain(f"error: {fault}", 2)
     except CheckError as fault:
@@ -67,6 +64,15 @@ def main(argv=None):
             1,
         )
     return 0
+
+
+def _run(argv):
+    try:
+        args = _parser().parse_args(argv)
+    except SystemExit:  # --help and --version have had their say, if it can be written
+        _say(end="")
+    else:
+        args.run(args)
 
 
 # The words ---------------------------------------------------------------------------------------
@@ -150,7 +156,7 @@ def _levels(args):
     _write(args, levels)
     words = _words(args, levels)
     if args.json == "-":
-        _say(*words, stream=sys.stderr)
+        _say(*words, aside=True)
     else:
         table = [*_table(levels), ""] if len(levels) else []
         _say(*_heading(levels.profile), "", *table, *words)
@@ -167,8 +173,8 @@ def _draw(args):
     figure = draw.draw(levels, density=args.density)
     _write(args, levels)
     draw.save(figure, args.output, inputs=[args.file])
-    _say(*_words(args, levels), stream=sys.stderr if args.json == "-" else sys.stdout)
-    _say(f"wrote {args.output}", stream=sys.stderr)
+    _say(*_words(args, levels), aside=args.json == "-")
+    _say(f"wrote {args.output}", aside=True)
 
 
 def _solved(args):
@@ -364,22 +370,38 @@ def _capital(text):
     return text[0].upper() + text[1:]
 
 
-def _say(*lines, stream=None, end="\n"):
-    """Print, spelling out what the terminal's encoding does not have."""
-    stream = stream or sys.stdout
+def _say(*lines, aside=False, end="\n"):
+    """Print to stdout, or aside to stderr, spelling out what the encoding there does not have."""
+    stream = sys.stderr if aside else sys.stdout
+    if stream is None:  # closed before we came
+        if aside:
+            return
+        raise InputError(f"standard output is closed\n  {_ELSEWHERE}")
     encoding = getattr(stream, "encoding", None) or "utf-8"
     text = "\n".join(lines) + end
-    stream.write(text.encode(encoding, "backslashreplace").decode(encoding))
+    try:
+        stream.write(text.encode(encoding, "backslashreplace").decode(encoding))
+        stream.flush()
+    except OSError as fault:
+        if aside:  # there is nowhere left to say so, but the exit status
+            _abandon(stream)
+        elif isinstance(fault, BrokenPipeError):
+            raise
+        else:
+            _abandon(stream)
+            raise InputError(
+                f"standard output cannot be written: {fault.strerror}\n  {_ELSEWHERE}"
+            ) from None
 
 
 def _complain(message, status):
-    _say(f"eigen1d: {message}", stream=sys.stderr)
+    _say(f"eigen1d: {message}", aside=True)
     return status
 
 
-def _let_the_reader_go():
-    """Whoever read our output has seen enough; keep Python from complaining at exit."""
+def _abandon(stream):
+    """Let go of a stream that takes no more, lest Python complain at exit of what it holds."""
     try:
-        os.dup2(os.open(os.devnull, os.O_WRONLY), sys.stdout.fileno())
+        os.dup2(os.open(os.devnull, os.O_WRONLY), stream.fileno())
     except (OSError, ValueError):
-        pass  # stdout is no file of ours
+        pass  # no file of ours

@@ -304,6 +304,30 @@ def test_closed_pipe_is_no_error():
     assert "Traceback" not in done.stderr and "Broken" not in done.stderr
 
 
+@pytest.mark.parametrize("words", ["levels well.csv", "--help", "levels well.csv --json -"])
+@pytest.mark.parametrize(
+    ("redirection", "status", "message"),
+    [
+        (">/dev/full", 2, "eigen1d: error: standard output cannot be written: No space left on d"),
+        (">&-", 2, "eigen1d: error: standard output is closed\n  Send it where there is room"),
+        ("2>/dev/full", 0, ""),
+        ("2>&-", 0, ""),
+    ],
+)
+def test_streams_that_cannot_be_written(words, redirection, status, message):
+    """A full disk is no fault of the program; a script sees it by the status."""
+    done = subprocess.run(
+        ["bash", "-c", f"{sys.executable} -m eigen1d {words} {redirection}"],
+        env=os.environ | {"PYTHONPATH": str(POTENTIALS.parent)},
+        capture_output=True, text=True,
+    )  # fmt: skip
+    assert done.returncode == status
+    assert message in done.stderr and done.stderr.count("error") == status / 2
+    assert "Traceback" not in done.stderr and "Exception" not in done.stderr
+    if status == 0 and "--json" in words:
+        assert len(json.loads(done.stdout)["levels"]) == 3
+
+
 # What is refused ---------------------------------------------------------------------------------
 
 
