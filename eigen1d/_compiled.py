@@ -1,8 +1,12 @@
 """How kernels are compiled, and what all of them share: the one module that knows numba's options.
 
-The cache of a kernel is dated by its own file alone. After a change to one kernel file, those that
-call into it would run their old code: delete eigen1d/__pycache__/*.nb* then.
+numba dates a cached kernel by its own file alone, although it holds the code of all that it calls:
+after a change in one kernel file, those above would silently run old code. The cache is therefore
+kept in a folder named after what stands in all kernel files together.
 """
+
+import hashlib
+import pathlib
 
 import numba
 import numpy as np
@@ -17,6 +21,21 @@ STRAIGHT_TERMS, GRADED_TERMS, SERIES_TERMS = 22, 24, 96
 FLAT, TOO_LONG = 0, 255
 
 
+_HERE = pathlib.Path(__file__).parent
+SOURCES = ("_compiled.py", "_straight.py", "_plan.py", "_kernels.py", "_search.py")
+
+
+def _cache_folder():
+    digest = hashlib.sha256()
+    for name in SOURCES:
+        digest.update((_HERE / name).read_bytes())
+    base = numba.config.CACHE_DIR or _HERE / "__pycache__"
+    return str(pathlib.Path(base) / f"eigen1d-{digest.hexdigest()[:16]}")
+
+
+_FOLDER = _cache_folder()
+
+
 def kernel(function=None, signature=None):
     """Compile: cached, division by zero as IEEE says, and no fast-math, which compensated sums
     would not survive. Kernels that Python calls have a signature, so that there is one version of
@@ -25,9 +44,13 @@ def kernel(function=None, signature=None):
     if function is None:
         return lambda function: kernel(function, signature)
     options = {"cache": True, "error_model": "numpy", "nogil": True}
-    return (
-        numba.njit(signature, **options)(function) if signature else numba.njit(**options)(function)
-    )
+    others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER
+    try:
+        if signature is None:
+            return numba.njit(**options)(function)
+        return numba.njit(signature, **options)(function)
+    finally:
+        numba.config.CACHE_DIR = others
 
 
 def given(dimensions, contiguous=False):

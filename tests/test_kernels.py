@@ -1,13 +1,15 @@
 """Kernels: compiled against interpreted, the fast ways across a cell against the general one."""
 
 import math
+import pathlib
 
+import numba
 import numpy as np
 import pytest
 from interpreted import interpreted
 from scipy.integrate import solve_ivp
 
-from eigen1d import _kernels, _plan
+from eigen1d import _compiled, _kernels, _plan
 
 PLAIN = interpreted(_kernels)
 OPEN, WALL = np.array([1.0, 9.0, 0.7, 0.0]), np.array([0.0, 0.0, 1.0, 0.0])
@@ -348,3 +350,11 @@ def test_inside_a_barrier_both_ends_count(k):
         psi, phi = _kernels._inside_barrier(k, share, start, 0.0, end, 0.0, slope)
         assert psi == pytest.approx(math.exp(-u) + c * math.exp(u - k), rel=1e-12)
         assert phi == pytest.approx(slope * (c * math.exp(u - k) - math.exp(-u)), rel=1e-12)
+
+
+def test_every_kernel_file_is_a_source_of_the_cache():
+    """A kernel file left out could change and leave those that call it running old code."""
+    folder = pathlib.Path(_compiled.__file__).parent
+    kernels = {path.name for path in folder.glob("*.py") if "@kernel" in path.read_text()}
+    assert kernels | {"_compiled.py"} == set(_compiled.SOURCES)
+    assert numba.config.CACHE_DIR != _compiled._FOLDER  # other packages keep their own place
