@@ -13,11 +13,12 @@ import json
 import math
 import os
 import re
+import shlex
 import sys
 import traceback
 
 from . import _files
-from .errors import CheckError, InputError
+from .errors import CheckError, InputError, TableError
 
 VERSION = sys.modules[__package__].__version__
 DESCRIPTION = """\
@@ -118,15 +119,14 @@ def _parser():
 def _add_common(command):
     add = command.add_argument
     add("file", metavar="FILE", help="a table of rows or of layers")
-    add("--count", type=_whole, metavar="N", help="how many levels, lowest first (default: all)")
+    add("--count", type=_count, metavar="N", help="how many levels, lowest first (default: all)")
     add("--window", type=_number, nargs=2, metavar=("LOW", "HIGH"),
         help="all levels between two energies, in the table's unit of energy")  # fmt: skip
-    add("--method", default="shooting", metavar="NAME",
+    add("--method", type=_one_of("method"), default="shooting", metavar="NAME",
         help="shooting (default) or finite-difference")  # fmt: skip
     add("--no-cross-check", action="store_true", help="do not solve by the other method too")
-    add("--interpolation", metavar="NAME", help="linear, step, smooth or monotone")
-    add("--left", metavar="EDGE", help="open or wall")
-    add("--right", metavar="EDGE", help="open or wall")
+    for option, metavar in (("interpolation", "NAME"), ("left", "EDGE"), ("right", "EDGE")):
+        add(f"--{option}", type=_one_of(option), metavar=metavar, help=_either(_CHOICES[option]))
     add("--columns", metavar="NAMES", help="for a file without a header, such as x,V,m")
     add("--units", metavar="UNITS", help="units of length and energy for --columns: nm,eV")
     add("--json", metavar="FILE", help="write the levels as JSON; - is stdout")
@@ -134,11 +134,36 @@ def _add_common(command):
     add("--states", metavar="FILE", help="write V and the wave functions, one row a position")
 
 
-def _whole(text):
+# As the modules have them; to import those here would make --help wait for numpy.
+_CHOICES = {
+    "method": ("shooting", "finite-difference"),
+    "interpolation": ("linear", "step", "smooth", "monotone"),
+    "left": ("open", "wall"),
+    "right": ("open", "wall"),
+}
+
+
+def _one_of(option):
+    def word(text):
+        if text in _CHOICES[option]:
+            return text
+        raise argparse.ArgumentTypeError(f"expected {_either(_CHOICES[option])}, found {text!r}")
+
+    return word
+
+
+def _either(words):
+    return f"{', '.join(words[:-1])} or {words[-1]}"
+
+
+def _count(text):
     try:
-        return int(text)
+        count = int(text)
     except ValueError:
-        raise argparse.ArgumentTypeError(f"expected a whole number, found {text!r}") from None
+        count = 0
+    if count < 1:
+        raise argparse.ArgumentTypeError(f"expected a whole number from 1, found {text!r}")
+    return count
 
 
 def _number(text):
@@ -181,11 +206,23 @@ def _solved(args):
     """Read, check every output, solve: nothing is written before all of that went well."""
     from .tables import read_profile
 
+    if args.file == "-":
+        raise InputError("-: standard input is read under its name\n  Write /dev/stdin instead.")
+    if args.count is not None and args.window is not None:
+        raise InputError(
+            "--count and --window exclude each other\n"
+            "  Leave one out: --window lists all levels in it."
+        )
     _check_outputs(args)
-    profile = read_profile(
-        args.file, interpolation=args.interpolation, left=args.left, right=args.right,
-        columns=args.columns, units=args.units,
-    )  # fmt: skip
+    try:
+        profile = read_profile(
+            args.file, interpolation=args.interpolation, left=args.left, right=args.right,
+            columns=args.columns, units=args.units,
+        )  # fmt: skip
+    except TableError:
+        raise
+    except InputError as fault:
+        raise InputError(_in_options(str(fault))) from None
     # As a name of the package, not of the module: see eigen1d/__init__.py.
     from . import solve
 
@@ -203,6 +240,13 @@ def _solved(args):
     return levels
 
 
+def _in_options(text):
+    """Return a message with Python's columns='x,V' as the --columns x,V of the command line."""
+    return re.sub(
+        r"\b(columns|units)=(['\"])(.*?)\2", lambda m: f"--{m[1]} {shlex.quote(m[3])}", text
+    )
+
+
 def _check_outputs(args):
     """Raise `InputError` for an output that cannot be written, before anything is computed."""
     outputs = {
@@ -214,6 +258,8 @@ def _check_outputs(args):
         del outputs["json"]
     places = {}
     for name, path in outputs.items():
+        if not path:
+            raise InputError(f"--{name}: expected the name of a file, found an empty one")
         if path == "-":
             raise InputError(f"--{name} -: only --json can go to stdout; name a file")
         place = os.path.realpath(path)
@@ -245,7 +291,7 @@ def _write(args, levels):
 
         levels.states_to_csv(args.states, positions(levels), inputs)
     if args.json is not None:
-        text = json.dumps(levels.to_dict(), indent=2, allow_nan=False, ensure_ascii=False) + "\n"
+        text = json.dumps(levels.to_dict(), indent=2, allow_nan=False) + "\n"
         if args.json == "-":
             _say(text, end="")
         else:
@@ -341,9 +387,9 @@ def _completeness(args, levels):
     if not levels.complete:
         return "The list is NOT complete: a bracket could not be closed in double precision."
     if args.window is not None:
-        low, high = args.window
+        low, high = (repr(end).removesuffix(".0") for end in args.window)  # every digit
         found = _counted(count, "level")
-        where = f"between {low:.10g} and {high:.10g} {unit}"
+        where = f"between {low} and {high} {unit}"
         also = "." if walls else f"; {continuum}."
         return f"The list is complete: {found} {where}{also}"
     if walls:

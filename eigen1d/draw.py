@@ -64,6 +64,7 @@ def draw(levels, *, density=False):
     axes.set_xlabel(f"x [{profile.units.length}]")
     axes.set_ylabel(f"energy [{profile.units.energy.replace('^-1', '$^{-1}$')}]")
     name = profile.title or os.path.basename(profile.source) or "potential"
+    name = name.encode("utf-8", "replace").decode()  # a file's name may hold bytes of no text
     what = "\N{GREEK SMALL LETTER PSI}" + "\N{SUPERSCRIPT TWO}" * density
     axes.set_title(textwrap.fill(name, 84), loc="left", fontsize=11, parse_math=False)
     axes.text(
@@ -78,11 +79,8 @@ def check_suffix(path):
     """Return the format that the suffix of `path` asks for, or raise `InputError`."""
     suffix = os.path.splitext(os.fspath(path))[1].lower().removeprefix(".")
     if suffix not in FORMATS:
-        found = f"the suffix .{suffix}" if suffix else "no suffix"
-        raise InputError(
-            f"{path}: {found} says no format that pictures are written in\n"
-            "  End the name in .png, .pdf or .svg."
-        )
+        fault = f"pictures are not written as .{suffix}" if suffix else "a picture needs a suffix"
+        raise InputError(f"{path}: {fault}\n  End the name in .png, .pdf or .svg.")
     return suffix
 
 

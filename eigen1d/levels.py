@@ -51,10 +51,12 @@ class Request:
                 raise InputError(
                     f"window must be two energies (low, high); found {window!r}"
                 ) from None
-            if not (np.isfinite(low) and np.isfinite(high) and low < high):
+            if not (np.isfinite(low) and np.isfinite(high)):
+                raise InputError(f"both ends of the window must be finite; found {low}, {high}")
+            if not low < high:
                 raise InputError(
                     f"window must ascend: its first energy lies below its second; found "
-                    f"{low:g}, {high:g}"
+                    f"{low}, {high}"
                 )
             return cls(window=(low, high))
         if np.isinf(profile.open_edge):

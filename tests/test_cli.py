@@ -143,6 +143,11 @@ def test_numbers_align_at_the_decimal_point():
             "The list is complete: 2 levels between -1 and 0.2 eV; the continuum starts at 0.3 eV.",
         ),
         (
+            ["--window", "0.1", "0.10000000000000002"],
+            "The list is complete: no levels between 0.1 and 0.10000000000000002 eV; the continuum "
+            "starts at 0.3 eV.",
+        ),
+        (
             ["--window", "-2e-1", "-1e-1"],
             "The list is complete: no levels between -0.2 and -0.1 eV; the continuum starts at "
             "0.3 eV.",
@@ -211,6 +216,39 @@ def test_title_beyond_the_terminals_encoding_is_spelled_out(run):
         assert done.returncode == 0 and done.stderr == b""
         title = title if isinstance(title, bytes) else title.encode()
         assert done.stdout.splitlines()[0] == title
+
+
+def test_standard_input_is_a_file(run):
+    """What the refusal of "-" advises must work."""
+    command = f"{sys.executable} -m eigen1d levels /dev/stdin --no-cross-check < well.csv"
+    done = subprocess.run(
+        ["bash", "-c", command], env=os.environ | {"PYTHONPATH": str(POTENTIALS.parent)},
+        capture_output=True, text=True,
+    )  # fmt: skip
+    expected = run("levels", "well.csv", "--no-cross-check")[1].splitlines()
+    assert done.stdout.splitlines()[1:] == expected[1:]
+
+
+def test_file_names_that_are_no_text_are_names(run):
+    """Names are bytes; one in an old encoding serves as well as any, in pictures and JSON too."""
+    name = os.fsdecode(b"t\xe4ler.csv")
+    Path(name).write_text(WELL)
+    assert run("draw", name, "--json", "levels.json", "--no-cross-check")[0] == 0
+    assert Path(os.fsdecode(b"t\xe4ler.png")).exists()
+    assert run("draw", name, "-o", "a.svg", "--no-cross-check")[0] == 0
+    assert "t?ler.csv" in Path("a.svg").read_text()
+    assert json.loads(Path("levels.json").read_text())["profile"]["source"] == name
+
+
+def test_json_is_json_in_any_encoding(run):
+    """A terminal without the letter of the title must not make the JSON unreadable."""
+    Path("micro.csv").write_text("# title: \N{MICRO SIGN}-well\n" + WELL)
+    done = subprocess.run(
+        [sys.executable, "-m", "eigen1d", "levels", "micro.csv", "--no-cross-check", "--json", "-"],
+        env=os.environ | {"PYTHONIOENCODING": "ascii", "PYTHONPATH": str(POTENTIALS.parent)},
+        capture_output=True,
+    )
+    assert json.loads(done.stdout)["profile"]["title"] == "\N{MICRO SIGN}-well"
 
 
 # What is written ---------------------------------------------------------------------------------
@@ -402,12 +440,26 @@ def test_windows_files_and_decimal_commas_are_read(run):
         ),
         (
             ["levels", "well.csv", "--count", "2", "--window", "0", "1"],
-            "give count or window, not both: a window returns all levels in it",
+            "--count and --window exclude each other\n"
+            "  Leave one out: --window lists all levels in it.",
         ),
-        (["levels", "well.csv", "--count", "0"], "count must be a whole number from 1; found 0"),
+        (
+            ["levels", "well.csv", "--window", "0.1", "inf"],
+            "both ends of the window must be finite; found 0.1, inf",
+        ),
+        (
+            ["levels", "well.csv", "--window", "0.10000000000000002", "0.1"],
+            "window must ascend: its first energy lies below its second; found "
+            "0.10000000000000002, 0.1",
+        ),
+        (
+            ["levels", "well.csv", "--count", "0"],
+            "argument --count: expected a whole number from 1, found '0'\n"
+            "  eigen1d levels --help shows what can be written.",
+        ),
         (
             ["levels", "well.csv", "--count", "two"],
-            "argument --count: expected a whole number, found 'two'\n"
+            "argument --count: expected a whole number from 1, found 'two'\n"
             "  eigen1d levels --help shows what can be written.",
         ),
         (
@@ -417,15 +469,46 @@ def test_windows_files_and_decimal_commas_are_read(run):
         ),
         (
             ["levels", "well.csv", "--method", "guessing"],
-            "unknown method 'guessing'; write one of: shooting, finite-difference",
+            "argument --method: expected shooting or finite-difference, found 'guessing'\n"
+            "  eigen1d levels --help shows what can be written.",
         ),
         (
             ["levels", "well.csv", "--interpolation", "cubic"],
-            "unknown interpolation 'cubic'; write one of: linear, step, smooth, monotone",
+            "argument --interpolation: expected linear, step, smooth or monotone, found 'cubic'\n"
+            "  eigen1d levels --help shows what can be written.",
         ),
         (
             ["levels", "well.csv", "--left", "shut"],
-            "unknown left 'shut'; write one of: open, wall",
+            "argument --left: expected open or wall, found 'shut'\n"
+            "  eigen1d levels --help shows what can be written.",
+        ),
+        (
+            ["levels", "well.csv", "--columns", "x,V,m"],
+            "--columns x,V,m without units\n  Write for example --columns x,V,m and --units nm,eV.",
+        ),
+        (
+            ["levels", "well.csv", "--units", "nm,eV"],
+            "--units nm,eV without columns\n  Write for example --columns x,V,m and --units nm,eV.",
+        ),
+        (
+            ["levels", "well.csv", "--columns", "x, V", "--units", "nm"],
+            "--units nm: expected a length and an energy, found 1 of them\n"
+            "  Write for example --columns x,V,m and --units nm,eV.",
+        ),
+        (
+            ["levels", "well.csv", "--columns", "x, U", "--units", "nm,eV"],
+            "--columns 'x, U', column 2: unknown column 'U'\n"
+            "  Write V.\n"
+            "  Columns are x, V, m, sigma_V, alpha; for layers thickness, V, m, V_end, m_end, "
+            "alpha, layer.",
+        ),
+        (
+            ["levels", "-"],
+            "-: standard input is read under its name\n  Write /dev/stdin instead.",
+        ),
+        (
+            ["levels", "well.csv", "--json", ""],
+            "--json: expected the name of a file, found an empty one",
         ),
         (
             ["levels", "well.csv", "--json", "nowhere/levels.json"],
@@ -446,13 +529,11 @@ def test_windows_files_and_decimal_commas_are_read(run):
         ),
         (
             ["draw", "well.csv", "-o", "well.gif"],
-            "well.gif: the suffix .gif says no format that pictures are written in\n"
-            "  End the name in .png, .pdf or .svg.",
+            "well.gif: pictures are not written as .gif\n  End the name in .png, .pdf or .svg.",
         ),
         (
             ["draw", "well.csv", "-o", "well"],
-            "well: no suffix says no format that pictures are written in\n"
-            "  End the name in .png, .pdf or .svg.",
+            "well: a picture needs a suffix\n  End the name in .png, .pdf or .svg.",
         ),
         (
             ["draw", "well.csv", "-o", "a.png", "--json", "nowhere/a.json"],
@@ -540,11 +621,15 @@ def test_help_and_version(run):
     assert (status, out) == (0, "eigen1d 0.1.0\n")
     status, out, _ = run("levels", "--help")
     from eigen1d._interpolation import INTERPOLATIONS
+    from eigen1d._parts import EDGES
     from eigen1d.solve import METHODS
 
     assert status == 0
     for word in (*INTERPOLATIONS, *METHODS):
         assert word in out
+    assert cli._CHOICES == {
+        "method": tuple(METHODS), "interpolation": INTERPOLATIONS, "left": EDGES, "right": EDGES,
+    }  # fmt: skip
     assert run("draw", "--help")[0] == 0
 
 

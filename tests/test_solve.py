@@ -122,8 +122,10 @@ def test_versions_agree():
         ({"count": 2.0}, "count must be a whole number from 1; found 2.0"),
         (
             {"window": (1, 0)},
-            "window must ascend: its first energy lies below its second; found 1, 0",
+            "window must ascend: its first energy lies below its second; found 1.0, 0.0",
         ),
+        ({"window": (0, np.inf)}, "both ends of the window must be finite; found 0.0, inf"),
+        ({"window": (np.nan, 1)}, "both ends of the window must be finite; found nan, 1.0"),
     ],
 )
 def test_wrong_calls_say_what_to_write(well, keywords, message):
