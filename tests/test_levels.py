@@ -413,13 +413,13 @@ def test_requests():
         (dict(window=(1, 2, 3)), "window must be two energies (low, high); found (1, 2, 3)"),
         (dict(window=("a", 1)), "window must be two energies (low, high); found ('a', 1)"),
         (dict(window=(2, 1)),
-         "window must ascend: its first energy lies below its second; found 2, 1"),
+         "window must ascend: its first energy lies below its second; found 2.0, 1.0"),
         (dict(window=(1, 1)),
-         "window must ascend: its first energy lies below its second; found 1, 1"),
+         "window must ascend: its first energy lies below its second; found 1.0, 1.0"),
         (dict(window=(float("nan"), 1)),
-         "window must ascend: its first energy lies below its second; found nan, 1"),
+         "both ends of the window must be finite; found nan, 1.0"),
         (dict(window=(0, float("inf"))),
-         "window must ascend: its first energy lies below its second; found 0, inf"),
+         "both ends of the window must be finite; found 0.0, inf"),
     ],
 )  # fmt: skip
 def test_requests_that_cannot_be_met(keywords, message):
