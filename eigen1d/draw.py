@@ -6,6 +6,7 @@ matplotlib is imported when a picture is drawn: `positions` serves tables of wav
 import io
 import os
 import textwrap
+import warnings
 
 import numpy as np
 
@@ -65,12 +66,14 @@ def draw(levels, *, density=False):
     axes.set_ylabel(f"energy [{profile.units.energy.replace('^-1', '$^{-1}$')}]")
     name = profile.title or os.path.basename(profile.source) or "potential"
     name = name.encode("utf-8", "replace").decode()  # a file's name may hold bytes of no text
-    what = "\N{GREEK SMALL LETTER PSI}" + "\N{SUPERSCRIPT TWO}" * density
     axes.set_title(textwrap.fill(name, 84), loc="left", fontsize=11, parse_math=False)
-    axes.text(
-        1.0, -0.075, f"{what} on each level, scaled to fit", transform=axes.transAxes, ha="right",
-        va="top", fontsize=8, color=GREY,
-    )  # fmt: skip
+    if len(levels):
+        what = "\N{GREEK SMALL LETTER PSI}" + "\N{SUPERSCRIPT TWO}" * density
+        axes.text(  # on the left: on the right stands the power of ten of x, if there is one
+            0.0, -0.075, f"{what} on each level, scaled to fit", transform=axes.transAxes,
+            ha="left", va="top", fontsize=8, color=GREY,
+        )  # fmt: skip
+    axes.ticklabel_format(axis="y", useOffset=False)  # an energy is read off, not added up
     axes.spines[["top", "right"]].set_visible(False)
     return figure
 
@@ -105,7 +108,10 @@ def save(figure, path, inputs=()):
     content = io.BytesIO()
     # No date and no random names: the same levels give the same bytes.
     undated = {"png": {}, "pdf": {"CreationDate": None}, "svg": {"Date": None}}[form]
-    with rc_context({"svg.hashsalt": "eigen1d", "svg.fonttype": "none"}):
+    fixed = rc_context({"svg.hashsalt": "eigen1d", "svg.fonttype": "none"})
+    with fixed, warnings.catch_warnings():
+        # A title in a script that the font lacks: SVG keeps it, elsewhere boxes show what happened.
+        warnings.filterwarnings("ignore", "Glyph .* missing from", UserWarning)
         figure.savefig(content, format=form, metadata=undated)
     write_whole(path, content.getvalue(), inputs)
 
@@ -162,9 +168,10 @@ def _heights(levels):
     high = max(reach, default=peak)
     if not high > low:  # nothing bound: V itself is the picture
         high = peak if peak > low else low + 1.0
-    room = high - low
-    high = peak if high < peak < high + room else high
-    return low - 0.06 * room, high + 0.12 * room
+    high = peak if high < peak < 2.0 * high - low else high
+    # The lowest psi goes below its level by 0.5 _TALLEST of the axes, the highest psi^2 above its
+    # own by 0.85 of that: 0.079 and 0.135 of what is between the margins.
+    return low - 0.08 * (high - low), high + 0.14 * (high - low)
 
 
 def _corners(profile):

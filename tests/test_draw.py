@@ -3,12 +3,14 @@
 import re
 import subprocess
 import sys
+import warnings
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
 import pytest
 
-from eigen1d import InputError, Profile, read_profile, solve
+from eigen1d import InputError, Profile, Units, read_profile, solve
 from eigen1d.draw import draw, positions, save
 
 POTENTIALS = Path(__file__).parent.parent / "potentials"
@@ -130,16 +132,74 @@ def test_tall_walls_do_not_flatten_the_levels():
 def test_profile_without_levels_is_drawn():
     """The picture shows why nothing is bound."""
     figure = draw(shipped("bare_barrier.csv"))
-    assert "no bound level" in [text.get_text() for text in figure.axes[0].texts]
+    texts = [text.get_text() for text in figure.axes[0].texts]
+    assert "no bound level" in texts and not any("each level" in text for text in texts)
     assert curves(figure) == {}
     low, high = figure.axes[0].get_ylim()
     assert low < 0.0 and high > 0.3
 
 
+def rendered(figure):
+    figure.canvas.draw()
+    return figure.axes[0]
+
+
+def caption(figure):
+    (text,) = (t for t in figure.axes[0].texts if "scaled to fit" in t.get_text())
+    return text
+
+
+@pytest.mark.parametrize("scale", [1e-9, 1e6])
+def test_power_of_ten_of_the_axis_is_not_covered(scale):
+    """In metres the numbers mean nothing without their 1e-8."""
+    x = np.array([0, 5, 5, 15, 15, 20]) * scale
+    mass = 0.067 * (1e-9 / scale) ** 2
+    profile = Profile.from_rows(x, [0.3, 0.3, 0, 0, 0.3, 0.3], mass=mass, units=Units("m", "eV"))
+    figure = draw(solve(profile))
+    axes = rendered(figure)
+    power = axes.xaxis.get_offset_text()
+    assert power.get_text()
+    assert not caption(figure).get_window_extent().overlaps(power.get_window_extent())
+    for other in (axes.xaxis.label, *axes.get_xticklabels()):
+        assert not caption(figure).get_window_extent().overlaps(other.get_window_extent())
+
+
+def test_energies_far_from_zero_are_whole_numbers_on_the_axis():
+    """-0.65 beside a small -1.234e5 in the corner is read as -0.65."""
+    V = np.array([0.3, 0.3, 0, 0, 0.3, 0.3]) - 123456.7
+    axes = rendered(draw(solve(Profile.from_rows([0, 5, 5, 15, 15, 20], V, mass=0.067))))
+    assert axes.yaxis.get_offset_text().get_text() == ""
+    assert any("123456" in label.get_text() for label in axes.get_yticklabels())
+
+
+@pytest.mark.parametrize("density", [False, True])
+@pytest.mark.parametrize("edge", ["open", "wall"])
+def test_waves_stay_within_the_picture(edge, density):
+    """Low levels of a tall well, or the only level between walls, next to the picture's rim."""
+    profile = Profile.from_rows(
+        [0, 5, 5, 15, 15, 20], [1e3, 1e3, 0, 0, 1e3, 1e3], mass=0.067, left=edge, right=edge
+    )
+    box = Profile.from_layers([10.0], [0.0], mass=0.067, left="wall", right="wall")
+    for found in (solve(profile, count=3), solve(box, count=1), solve(box, count=4)):
+        figure = draw(found, density=density)
+        low, high = figure.axes[0].get_ylim()
+        for _, y in curves(figure).values():
+            assert low < y.min() and y.max() < high
+
+
+@pytest.mark.parametrize("suffix", ["png", "pdf", "svg"])
+def test_title_in_a_script_that_the_font_lacks(levels, suffix, tmp_path):
+    """Warnings of a library on the screen are read as a fault; SVG keeps the title whole."""
+    title = "\N{CJK UNIFIED IDEOGRAPH-4E95}\N{CJK UNIFIED IDEOGRAPH-6238}"
+    path = tmp_path / f"well.{suffix}"
+    with warnings.catch_warnings():
+        warnings.simplefilter("error")
+        save(draw(replace(levels, profile=replace(levels.profile, title=title))), path)
+    assert suffix != "svg" or title in path.read_text(encoding="utf-8")
+
+
 def test_title_is_taken_literally(levels, tmp_path):
     """A title comes from a file; a dollar sign in it is no formula."""
-    from dataclasses import replace
-
     odd = replace(levels, profile=replace(levels.profile, title="cost $5_0$ {x} " + 30 * "long "))
     figure = draw(odd)
     save(figure, tmp_path / "odd.svg")
