@@ -7,6 +7,7 @@ in any normalisation; the exact tails beyond open edges are added here.
 
 import csv
 import io
+import os
 from dataclasses import dataclass, field
 from functools import cached_property
 
@@ -127,6 +128,8 @@ class Levels:
     >>> box = Profile.from_layers([1.0], [0.0], left="wall", right="wall",
     ...                           units=Units("bohr", "hartree"))
     >>> levels = solve(box, count=3)
+    >>> levels
+    <Levels: 3 of a profile, 4.9348 to 44.4132 hartree, complete>
     >>> levels.mean_x.round(12)
     array([0.5, 0.5, 0.5])
     >>> levels.probability(0, 0.25).round(6)
@@ -149,6 +152,13 @@ class Levels:
 
     def __len__(self):
         return self.energy.size
+
+    def __repr__(self):
+        name = self.profile.title or os.path.basename(self.profile.source) or "a profile"
+        unit = self.profile.units.energy
+        span = f", {self.energy[0]:.6g} to {self.energy[-1]:.6g} {unit}" if len(self) else ""
+        complete = "complete" if self.complete else "NOT complete"
+        return f"<Levels: {len(self) or 'none'} of {name}{span}, {complete}>"
 
     # Wave functions -----------------------------------------------------------------------------
 

@@ -46,6 +46,18 @@ def step():
     return solve(profile)
 
 
+def test_printed_levels_are_one_line(box):
+    """What a notebook shows first; the arrays behind it run over pages."""
+    named = dataclasses.replace(box, profile=dataclasses.replace(box.profile, title="box 7"))
+    first, last = (f"{(np.pi * n / WIDTH) ** 2 / (2 * 0.8):.6g}" for n in (1, 5))
+    assert str(named) == repr(named) == f"<Levels: 5 of box 7, {first} to {last} hartree, complete>"
+    assert repr(dataclasses.replace(named, complete=False)).endswith(" hartree, NOT complete>")
+    read = dataclasses.replace(box.profile, source="tables/box.csv")
+    assert repr(dataclasses.replace(box, profile=read)).startswith("<Levels: 5 of box.csv, ")
+    none = solve(Profile.from_layers([5.0, 5.0], [0.0, 0.3]))
+    assert repr(none) == "<Levels: none of a profile, complete>"
+
+
 # --- infinite well -------------------------------------------------------------------------------
 
 
