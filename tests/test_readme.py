@@ -1,10 +1,13 @@
 """What README says is what happens."""
 
+import math
 import pathlib
 import re
 import shlex
 
-from eigen1d import cli
+import numpy as np
+
+from eigen1d import Profile, cli
 
 ROOT = pathlib.Path(__file__).resolve().parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -45,6 +48,33 @@ def test_the_example_in_python_runs(capsys, monkeypatch):
     (code,) = blocks("python")
     exec(code, {})
     assert len(capsys.readouterr().out.splitlines()) == 2
+
+
+def test_words_that_are_explained_are_words_that_are_printed(capsys, tmp_path):
+    """A note that README explains under other words than the screen's is explained to nobody.
+
+    A wall and a well of depth V and width a bind one more level each time sqrt(2 m V) a passes
+    pi/2 (common practice, no source); here a = m = 1.
+    """
+    (note,) = re.findall(r'says\s+that "(.*?)"', README, re.S)
+    table = tmp_path / "threshold.csv"
+    table.write_text(f"thickness [bohr], V [hartree]\n1, 0\n1, {math.pi**2 / 8!r}\n")
+    assert cli.main(["levels", str(table), "--left", "wall"]) == 0
+    assert note in capsys.readouterr().out.lower()
+
+
+def test_every_command_shown_can_be_found():
+    """`eigen1d` alone is not found after an installation in .venv, unless PATH says so."""
+    first = README.index("\neigen1d ")
+    assert 'PATH="$PWD/.venv/bin:$PATH"' in README[:first]
+
+
+def test_ends_of_the_smooth_curve_are_as_explained():
+    """Not-a-knot: the first two cells share one cubic, the last two too."""
+    profile = Profile.from_rows([0, 1, 3, 4, 6, 7], [3, 0, 1, 5, 2, 2], interpolation="smooth")
+    for x in ([0, 0.5, 1, 2, 3], [4, 5, 6, 6.5, 7]):
+        V = profile.V(x)
+        assert np.allclose(np.polyval(np.polyfit(x, V, 3), x), V, rtol=0, atol=1e-12)
 
 
 def test_the_commands_shown_are_understood(tmp_path, monkeypatch):
