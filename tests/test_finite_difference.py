@@ -1,5 +1,6 @@
 """Finite differences as a second opinion: what they say of their error is true, and it is small."""
 
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -131,6 +132,17 @@ def test_no_level_is_further_off_than_the_estimate(block):
     assert np.median(relative) < 1e-8
 
 
+@pytest.mark.parametrize("seed", [13, 1495, 1807])
+def test_a_coincidence_is_not_convergence(seed):
+    """Entries of Richardson's table that agree by chance: 0.7, 4.2 and 3.8 times the estimate.
+
+    Were it not for the rate at which estimates may fall at most from one grid to the next.
+    """
+    profile = random_profile(seed)
+    levels, exact = differences(profile), solve(profile)
+    assert (np.abs(levels.energy - exact.energy) <= 0.5 * levels.budget.numeric).all()
+
+
 @pytest.mark.parametrize("problem", HARD, ids=lambda problem: problem.name)
 def test_hard_problems(problem):
     """Near-degenerate levels, thresholds, needles, masses of 1:100, profiles at x = 1e6.
@@ -193,13 +205,13 @@ def just_appears_beside(rim, distance):
     return Profile.from_layers([1, width, 1], [rim, 0, 1], units=ATOMIC)
 
 
-DISTANCES = [sign * 10.0**-power for power in (2, 2.5, 3, 4, 5, 6) for sign in (1, -1)]
+DISTANCES = [sign * 10.0**-power for power in (2.5, 3, 4, 6) for sign in (1, -1)]
 
 
 @pytest.mark.parametrize("distance", DISTANCES)
 @pytest.mark.parametrize(
     ("make", "value", "n"),
-    [(just_appears, k, k) for k in (1, 2, 3)] + [(just_appears_beside, r, 0) for r in (1.2, 2, 10)],
+    [(just_appears, k, k) for k in (1, 3)] + [(just_appears_beside, r, 0) for r in (1.2, 10)],
 )
 def test_a_level_that_just_appears(make, value, n, distance):
     """A level bound by about distance^2 of the depth, or just not bound: never one too many.
@@ -264,6 +276,19 @@ def test_a_level_that_just_appears_in_random_layers():
     assert tried > 20
 
 
+def test_edges_that_differ_by_rounding():
+    """Both ends count as the edge then; else the tail beyond the higher one would be cut off.
+
+    A function that tends to zero on both sides ends like this, at 1e-30 and at -1e-27.
+    """
+    profile = just_appears(2, 1e-5)
+    higher = np.nextafter(profile.left.V, np.inf)
+    profile = replace(profile, left=replace(profile.left, V=np.nextafter(higher, np.inf)))
+    levels = differences(profile)
+    assert_honest(levels, solve(profile).energy)
+    assert len(levels) == 3 and levels.notes == ()
+
+
 def test_estimates_beyond_the_last_bound_level():
     """States of the box lie at or above the edge within their error, and next to it."""
     flat = Profile.from_layers([2], [0.7], units=ATOMIC)
@@ -298,16 +323,17 @@ def test_estimates_of_part_of_the_levels():
 
 @pytest.mark.parametrize("place", [3, 12, 21])
 def test_a_dip_between_samples_is_not_overlooked(place):
-    """Cells at the edge at both ends and in the middle, one of which swings far below it between.
+    """A cell above the edge at both ends and in the middle, which swings far below it in between.
 
     As a cubic spline may. A grid that looks at a few points of a cell takes all of it for a
     barrier, and the level in it is lost.
     """
     V = np.zeros((4, 24))
-    V[3] = 10.0
+    V[3, 1:-1] = 11.0
+    V[3, [0, -1]] = 10.0  # the open edges
     V[:3, place] = np.array([400.0, -600.0, 200.0])  # 200 t (1 - t) (1 - 2 t)
     profile = Profile.from_ppoly(PPoly(V, np.arange(25.0)), units=ATOMIC)
-    np.testing.assert_array_equal(profile.V(np.arange(0, 24, 0.5)), 10.0)
+    assert profile.V(np.arange(0, 24, 0.5)).min() == 10.0 > profile.V_min + 17
     exact = solve(profile)
     assert len(exact) == 1
     assert_honest(differences(profile), exact.energy)
