@@ -65,6 +65,11 @@ def find(profile, request):
     listed, notes = (low < energy) & (energy < high), []
     if high == edge:
         unseen = edge - energy <= error
+        if unseen.any() and not unseen.all():
+            # Fewer levels at once are worth finer grids.
+            top = slice(unseen.argmax(), None)
+            energy[top], error[top] = ladder.estimates(n[top][0], n[-1] + 1)
+            unseen = edge - energy <= error
         listed &= ~unseen
         least = max(error[unseen].max(initial=0.0), ladder.bound[1] if count is None else 0.0)
         if least > _LEAST_WORTH_A_NOTE * (edge - profile.V_min):
@@ -267,7 +272,7 @@ class _Ladder:
         A grid is blind to a level that it does not bind: the energy there is that of the box.
         """
         # Intervals that hold several rows each have errors without an expansion to rely on.
-        columns, safety = (1, 4) if self.profile.cells > _BASE_INTERVALS else (_RUNGS, 2)
+        columns, safety = (1, 6) if self.profile.cells > _BASE_INTERVALS else (_RUNGS, 3)
         previous = [self.rung(0).energies(first, last)]
         energy, error = previous[0].copy(), np.full(last - first, np.inf)
         todo, spread = np.arange(last - first), np.zeros(last - first)
