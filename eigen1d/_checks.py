@@ -119,6 +119,27 @@ def check_mass(mass, alpha):
         )
 
 
+LEAST, MOST = 1e-100, 1e100
+
+
+def check_range(profile):
+    """Refuse sizes that no unit gives to a length, energy or mass: their squares are no doubles."""
+    step, V = np.diff(profile.x), profile.V_cells
+    if not (np.isfinite(V).all() and (step > 0).all()):
+        raise InputError("positions or energies leave the range of double precision")
+    for name, least, most in (
+        ("steps of x", step.min(), np.abs(profile.x).max()),
+        ("V", np.abs(V).max() or 1.0, np.abs(V).max()),
+        ("the mass", np.abs(profile.mass_cells[:, 0]).min(), np.abs(profile.mass_cells).max()),
+    ):
+        if least < LEAST or most > MOST:
+            found = least if least < LEAST else most
+            raise InputError(
+                f"{name} must be of a size from {LEAST:g} to {MOST:g}; found {found:g}. Is the "
+                "unit right?"
+            )
+
+
 def check_alpha(profile):
     """Refuse an alpha that makes m (1 + alpha (E - V)) vanish at an energy above the least V."""
     height = profile.V_cells.copy()

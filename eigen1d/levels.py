@@ -21,6 +21,7 @@ from .errors import InputError
 from .profile import Profile
 
 _CROWDED = 1e-6  # of the height: levels closer than this share their digits, see `_mixing`
+MOST_LEVELS = 100_000  # in one list
 DEFAULT_COUNT = 10  # between two walls levels never end; this many are returned unless asked
 
 
@@ -44,6 +45,8 @@ class Request:
         if count is not None:
             if isinstance(count, bool) or not hasattr(count, "__index__") or count < 1:
                 raise InputError(f"count must be a whole number from 1; found {count!r}")
+            if count > MOST_LEVELS:
+                raise InputError(f"count must be at most {MOST_LEVELS:,}; found {count:,}")
             return cls(count=int(count))
         if window is not None:
             try:

@@ -65,8 +65,7 @@ class Profile:
 
     def __post_init__(self):
         _check_units(self.units)
-        if not (np.isfinite(self.V_cells).all() and (np.diff(self.x) > 0).all()):
-            raise InputError("positions or energies leave the range of double precision")
+        _checks.check_range(self)
         if self.alpha_cells is not None:
             _checks.check_alpha(self)
 

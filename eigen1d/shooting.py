@@ -22,7 +22,8 @@ from functools import cached_property
 import numpy as np
 
 from . import _kernels, _plan, _search
-from .levels import Budget, Levels
+from .errors import InputError
+from .levels import MOST_LEVELS, Budget, Levels
 
 EPS = np.finfo(float).eps
 # Half width of a bracket relative to the level's height above the least V. Each cell's entries are
@@ -163,8 +164,14 @@ class Search:
         notes = []
         if request.window is not None:
             low, high = request.window
+            if min(high, self.edge) - self.floor > 1e16 * self._box_height(1):
+                raise InputError(f"far too many levels lie below {high:g}; lower the window")
             first = int(self.count(low)[0]) if low > self.floor else 0
             last = int(self.count(high)[0]) if high > self.floor else 0
+            if last - first > MOST_LEVELS:
+                raise InputError(
+                    f"{last - first:,} levels lie in the window; ask for at most {MOST_LEVELS:,}"
+                )
             return first, max(first, last), tuple(notes)
         if np.isinf(self.edge):
             return 0, request.count, tuple(notes)

@@ -132,7 +132,7 @@ UNITS = 'units must be Units("nm", "eV") or the like; found '
         (lambda: WALL.stretched(-1.5),
          "factor must be positive; found -1.5; use mirrored() to reflect"),
         (lambda: WALL.stretched("2x"), "factor must be a number; found '2x'"),
-        (lambda: WALL.stretched(5e-324).stretched(0.1),
+        (lambda: WALL.scaled(1e99).scaled(1e250),
          "positions or energies leave the range of double precision"),
         (lambda: WALL.scaled(None), "factor must be a number; found None"),
         (lambda: WALL.shifted([1, 2]), "energy must be one number; found [1, 2]"),
@@ -153,6 +153,22 @@ def test_a_function_that_fails_by_itself_keeps_its_own_error():
 
     with pytest.raises(ZeroDivisionError, match="mine"):
         from_function(broken, (0, 1))
+
+
+@pytest.mark.parametrize(
+    ("call", "text"),
+    [
+        (lambda: from_layers([5, 8, 5], [1e308, 0, 1e308]), "V must .* found 1e+308"),
+        (lambda: from_layers([5, 8, 5], [1e-300, 0, 1e-300]), "V must .* found 1e-300"),
+        (lambda: from_rows([0, 1e300, 2e300], [1, 0, 1]), "steps of x must .* found 2e+300"),
+        (lambda: from_rows([0, 1e-200, 2e-200], [1, 0, 1]), "steps of x must .* found 1e-200"),
+        (lambda: from_layers([5.0], [1.0], 1e300), "the mass must .* found 1e+300"),
+    ],
+)
+def test_sizes_that_no_unit_gives_are_refused(call, text):
+    """Their squares leave the range of doubles, which solvers would tell in riddles."""
+    with pytest.raises(InputError, match=text.replace("+", r"\+") + r"\. Is the unit right\?"):
+        call()
 
 
 ALPHA_LIMIT = (

@@ -275,3 +275,15 @@ def test_two_walls_give_the_lowest_ten():
     )
     expected = np.pi**2 / 2 * np.arange(1, 11) ** 2
     assert solve(box).energy == pytest.approx(expected, rel=1e-14)
+
+
+def test_lists_without_end_are_refused():
+    """A slip of the finger must not fill the memory for an hour."""
+    box = Profile.from_layers([10.0], [0.0], left="wall", right="wall")
+    with pytest.raises(InputError, match="count must be at most 100,000; found 100,001"):
+        solve(box, count=100_001)
+    with pytest.raises(InputError, match="levels lie in the window; ask for at most 100,000"):
+        solve(box, window=(0, 1e9))
+    with pytest.raises(InputError, match=r"far too many levels lie below 1e\+300; lower the"):
+        solve(box, window=(0, 1e300))
+    assert len(solve(box, window=(1e6, 1.001e6))) == 8  # n from 16307 on: by the closed form
