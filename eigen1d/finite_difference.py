@@ -3,7 +3,8 @@
 Every interval of a base grid is halved again and again. Inside each interval V and m are
 polynomials, so the error has an expansion in even powers of the step and Richardson's extrapolation
 [1]_ removes them one by one; differences within its table estimate what is left. An open edge is a
-box that reaches so far that the tail of anything bound by 1e-14 of the depth has died out.
+box that reaches so far that the tail of anything bound by 1e-14 of the depth has died out; how many
+levels are bound is asked of free ends (phi = 0) instead, where a level passes the edge smoothly.
 
 References
 ----------
