@@ -121,7 +121,7 @@ def _constant(v, mass, h, psi, phi):
         angle -= np.floor(angle)
         turns = angle + k / np.pi
         odd = 1 if is_positive(psi, phi) != is_positive(out_psi, out_phi) else 0
-        zeros = odd + 2 * int(np.round(0.5 * (turns - 0.5 - odd)))
+        zeros = odd + 2 * int(np.floor(0.5 * (turns - 0.5 - odd) + 0.5))
         return out_psi, out_phi, max(zeros, odd), 0.0
     if z == 0.0:
         out_psi, out_phi, log = psi + mass * h * phi, phi, 0.0
@@ -432,7 +432,8 @@ def along(cells, energies, start_psi, start_phi, start_log, cell, fraction, back
                     level += 1
                 if lanes == 0:
                     continue
-                state[2 * LANES : 4 * LANES] = 0.0
+                for carry in range(2 * LANES, 4 * LANES):
+                    state[carry] = 0.0
                 _advance(cells, kind, c, side == 1, part, state, lanes, log, scratch)
                 for lane in range(lanes):
                     grown = 1.0

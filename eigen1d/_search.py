@@ -118,16 +118,10 @@ def isolate(cells, left, right, stop, sigma, resolution, first, last, start, bra
                 owner[used] = i
                 used += 1
         turn, angle = np.empty(used, np.int64), np.empty(used)
-        angles(
-            cells,
-            left,
-            right,
-            points[:used],
-            np.full(used, stop),
-            np.full(used, sigma),
-            turn,
-            angle,
-        )
+        stops, sigmas = np.empty(used, np.int64), np.empty(used)
+        for k in range(used):
+            stops[k], sigmas[k] = stop, sigma
+        angles(cells, left, right, points[:used], stops, sigmas, turn, angle)
         new_ends, new_counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
         kept, k = 0, 0
         for i in range(pieces):
@@ -262,42 +256,37 @@ def refine(cells, left, right, edge, stop, sigma, resolution, n, bracket, energy
     # x1 is the newest end of the bracket, x2 the other one, x3 the point dropped last.
     x, f = np.empty((3, size)), np.empty((3, size))
     turn, angle = np.empty(size, np.int64), np.empty(size)
+    points, stops, sigmas = np.empty(size), np.empty(size, np.int64), np.empty(size)
     for end in range(2):
-        angles(cells, left, right, bracket[:, end].copy(), stop, sigma, turn, angle)
+        for i in range(size):
+            points[i] = bracket[i, end]
+        angles(cells, left, right, points, stop, sigma, turn, angle)
         for i in range(size):
             x[end, i], x[2, i] = bracket[i, end], bracket[i, end]
             f[end, i] = (turn[i] - n[i] - 1) * np.pi + angle[i]
             f[2, i] = f[end, i]
-    share = np.full(size, 0.5)
-    done = np.zeros(size, np.bool_)
+    share, done = np.empty(size), np.zeros(size, np.bool_)
     for i in range(size):
+        share[i] = 0.5
         if f[0, i] >= 0.0 or f[1, i] < 0.0:
             # The count that made this bracket and the angle at its end differ by rounding: the
             # level is that end.
             energy[i] = x[0, i] if f[0, i] >= 0.0 else x[1, i]
             done[i] = True
-    points = np.empty(size)
     active = np.empty(size, np.int64)
     for _ in range(rounds):
         used = 0
         for i in range(size):
             if not done[i]:
                 points[used] = _between(x[0, i], x[1, i], share[i], edge)
-                active[used] = i
+                active[used], stops[used], sigmas[used] = i, stop[i], sigma[i]
                 used += 1
         if used == 0:
             break
-        chosen = active[:used]
         angles(
-            cells,
-            left,
-            right,
-            points[:used],
-            stop[chosen],
-            sigma[chosen],
-            turn[:used],
+            cells, left, right, points[:used], stops[:used], sigmas[:used], turn[:used],
             angle[:used],
-        )
+        )  # fmt: skip
         for k in range(used):
             i = active[k]
             value = (turn[k] - n[i] - 1) * np.pi + angle[k]
