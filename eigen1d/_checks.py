@@ -119,24 +119,23 @@ def check_mass(mass, alpha):
         )
 
 
-LEAST, MOST = 1e-100, 1e100
+MOST = 1e100  # of any size: its square is a double
 
 
 def check_range(profile):
-    """Refuse sizes that no unit gives to a length, energy or mass: their squares are no doubles."""
-    step, V = np.diff(profile.x), profile.V_cells
+    """Refuse sizes that no unit gives to a length, energy or mass: solvers would leave doubles."""
+    step, V, mass = np.diff(profile.x), np.abs(profile.V_cells), profile.mass_cells
     if not (np.isfinite(V).all() and (step > 0).all()):
         raise InputError("positions or energies leave the range of double precision")
-    for name, least, most in (
-        ("steps of x", step.min(), np.abs(profile.x).max()),
-        ("V", np.abs(V).max() or 1.0, np.abs(V).max()),
-        ("the mass", np.abs(profile.mass_cells[:, 0]).min(), np.abs(profile.mass_cells).max()),
+    for name, allowed, least, most in (
+        ("steps of x", 1e-100, step.min(), np.abs(profile.x).max()),
+        ("V", 1e-250, V.max() or 1.0, V.max()),  # wells of any shallowness bind
+        ("the mass", 1e-100, np.abs(mass[:, 0]).min(), np.abs(mass).max()),
     ):
-        if least < LEAST or most > MOST:
-            found = least if least < LEAST else most
+        if least < allowed or most > MOST:
             raise InputError(
-                f"{name} must be of a size from {LEAST:g} to {MOST:g}; found {found:g}. Is the "
-                "unit right?"
+                f"{name} must be of a size from {allowed:g} to {MOST:g}; found "
+                f"{least if least < allowed else most:g}. Is the unit right?"
             )
 
 

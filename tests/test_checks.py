@@ -133,7 +133,7 @@ UNITS = 'units must be Units("nm", "eV") or the like; found '
          "factor must be positive; found -1.5; use mirrored() to reflect"),
         (lambda: WALL.stretched("2x"), "factor must be a number; found '2x'"),
         (lambda: WALL.scaled(1e250),
-         "V must be of a size from 1e-100 to 1e+100; found 1e+250. Is the unit right?"),
+         "V must be of a size from 1e-250 to 1e+100; found 1e+250. Is the unit right?"),
         (lambda: WALL.scaled(None), "factor must be a number; found None"),
         (lambda: WALL.shifted([1, 2]), "energy must be one number; found [1, 2]"),
     ],
