@@ -38,6 +38,7 @@ _SAMPLES = 4096  # nodes at which the place of a state is looked for
 _SAME, _AWAY = 1e-14, 1e-12
 # Where the earlier waves of a group leave room for the next: in another well they reach 1e-2.
 _SMALL = 0.1
+_MOST_LENGTHS = 1e7  # of a profile that is not flat; each takes a part of a cell and its memory
 _FIRST_ROUNDS, _MORE_ROUNDS = 8, 12  # evaluations before the meeting node is chosen anew
 
 
@@ -178,6 +179,10 @@ class Search:
         bound = 0
         if self.edge > self.floor:
             bound, doubtful = self.threshold
+            if request.count is None and bound > MOST_LEVELS:
+                raise InputError(
+                    f"{bound:,} levels are bound; ask for at most {MOST_LEVELS:,} of them"
+                )
             if doubtful:
                 notes.append(
                     "a further level may lie at the continuum's edge, bound by less than rounding "
@@ -401,6 +406,11 @@ def _edge(edge):
 def _prepared(x, natural, low, high):
     """Cut cells until their series are short at energies from low to high.
 
+    Raises
+    ------
+    InputError
+        More parts than memory is for.
+
     Returns
     -------
     x : ndarray, shape (parts + 1,)
@@ -408,9 +418,23 @@ def _prepared(x, natural, low, high):
         As the kernels want them, see `_kernels.sweep`.
     """
     given = natural.width, natural.V, natural.mass, natural.mass_per_energy
+    _check_length(natural, low, high)
     terms = np.empty(natural.width.size, np.uint8)
     straight = max(field.shape[1] for field in given[1:]) <= 2
     if _plan.plan(*given, low, high, terms) and straight:
         return x, (*given, *given[1:], terms)
     owner, offset, terms, tables = _plan.cut(*given, low, high)
     return np.append(x[owner] + offset * natural.width[owner], x[-1]), (*tables, terms)
+
+
+def _check_length(natural, low, high):
+    """Refuse profiles of so many wavelengths that the parts of their cells would fill memory."""
+    curved = (natural.V[:, 1:] != 0).any(axis=1)
+    reach = np.abs(natural.V[:, 0] - low) + np.abs(natural.V[:, 1:]).sum(axis=1) + high - low
+    mass = natural.mass[:, 0] + low * natural.mass_per_energy[:, :1].sum(axis=1)
+    lengths = (np.sqrt(2 * np.abs(mass) * reach) * natural.width)[curved].sum()
+    if lengths > _MOST_LENGTHS:
+        raise InputError(
+            f"this profile is some {lengths:.0e} wavelengths or decay lengths long; at most "
+            f"{_MOST_LENGTHS:.0e} can be solved. Is the unit right?"
+        )

@@ -287,3 +287,12 @@ def test_lists_without_end_are_refused():
     with pytest.raises(InputError, match=r"far too many levels lie below 1e\+300; lower the"):
         solve(box, window=(0, 1e300))
     assert len(solve(box, window=(1e6, 1.001e6))) == 8  # n from 16307 on: by the closed form
+
+
+def test_profiles_of_endless_lengths_are_refused():
+    """Metres taken for nanometres, or electronvolts for kelvin, must not fill the memory."""
+    with pytest.raises(InputError, match=r"some .e\+09 wavelengths .* Is the unit right\?"):
+        solve(Profile.from_rows([0, 1e9, 2e9], [0.3, 0, 0.3]))
+    assert len(solve(Profile.from_rows([0, 5, 10], [-1e6, -1e6 - 1, -1e6]))) > 0  # V has no zero
+    with pytest.raises(InputError, match=r"levels are bound; ask for at most 100,000 of them"):
+        solve(Profile.from_layers([20, 1e6, 20], [0.3, 0, 0.3]))
