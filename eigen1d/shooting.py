@@ -430,7 +430,8 @@ def _prepared(x, natural, low, high):
 def _check_length(natural, low, high):
     """Refuse profiles of so many wavelengths that the parts of their cells would fill memory."""
     curved = (natural.V[:, 1:] != 0).any(axis=1)
-    reach = np.abs(natural.V[:, 0] - low) + np.abs(natural.V[:, 1:]).sum(axis=1) + high - low
+    reach = np.abs(natural.V[:, 0] - low) + np.abs(natural.V[:, 1:]).sum(axis=1)
+    reach = reach + max(high - low, 0.0)  # an open edge may lie below all cells
     mass = natural.mass[:, 0] + low * natural.mass_per_energy[:, :1].sum(axis=1)
     lengths = (np.sqrt(2 * np.abs(mass) * reach) * natural.width)[curved].sum()
     if lengths > _MOST_LENGTHS:

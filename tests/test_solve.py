@@ -296,3 +296,13 @@ def test_profiles_of_endless_lengths_are_refused():
     assert len(solve(Profile.from_rows([0, 5, 10], [-1e6, -1e6 - 1, -1e6]))) > 0  # V has no zero
     with pytest.raises(InputError, match=r"levels are bound; ask for at most 100,000 of them"):
         solve(Profile.from_layers([20, 1e6, 20], [0.3, 0, 0.3]))
+
+
+@pytest.mark.parametrize("method", ["shooting", "finite-difference"])
+@pytest.mark.parametrize("height", [1.0, 3.0])
+def test_an_edge_below_all_cells_binds_nothing(method, height):
+    """In a step table the last row is the edge alone: V falls there, and nothing is bound."""
+    slope = Profile.from_rows([0, 1, 2], [height, 1, 0], interpolation="step", left="wall")
+    assert slope.open_edge < slope.V_min
+    levels = solve(slope, method=method)
+    assert len(levels) == 0 and levels.complete
