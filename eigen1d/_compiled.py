@@ -53,10 +53,9 @@ def kernel(function=None, signature=None):
         numba.config.CACHE_DIR = others
 
 
-def given(dimensions, contiguous=False):
+def given(dimensions):
     """Type of an array that a kernel only reads."""
-    layout = "C" if contiguous else "A"
-    return types.Array(types.float64, dimensions, layout, readonly=True)
+    return types.Array(types.float64, dimensions, "A", readonly=True)
 
 
 # Of cells: width; V, mass, mass_per_energy as seen from the left; the same from the right; terms.
