@@ -13,16 +13,17 @@ import numpy as np
 from numba import types
 
 LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
-LARGEST = 2.25  # of 2 m |V - E| h^2 in a series step; < pi^2: at most one zero of psi in it
+LARGEST = 2.25  # of 2 m |V - E| h^2 in a short cell; < pi^2: at most one zero of psi in it
 EPS = np.finfo(np.float64).eps
-# Most terms of a series: in the two kinds of vector lanes, and in general. FLAT and TOO_LONG stand
-# in their place for a cell that is crossed in closed form, and for one that must be cut first.
-STRAIGHT_TERMS, GRADED_TERMS, SERIES_TERMS = 22, 24, 96
+# Most terms of a power series in x: computed again in each sweep, where V is straight and the mass
+# constant or straight too, or once for all energies. FLAT and TOO_LONG stand in the place of a
+# number of terms for a cell that is crossed in closed form, and for one that must be cut first.
+STRAIGHT_TERMS, GRADED_TERMS, SERIES_TERMS = 8, 10, 22
 FLAT, TOO_LONG = 0, 255
 
 
 _HERE = pathlib.Path(__file__).parent
-SOURCES = ("_compiled.py", "_straight.py", "_plan.py", "_kernels.py", "_search.py")
+SOURCES = ("_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_search.py")
 
 
 def _cache_folder():
@@ -36,14 +37,18 @@ def _cache_folder():
 _FOLDER = _cache_folder()
 
 
-def kernel(function=None, signature=None):
+def kernel(function=None, signature=None, fused=False, entry=False):
     """Compile: cached, division by zero as IEEE says, and no fast-math, which compensated sums
-    would not survive. Kernels that Python calls have a signature, so that there is one version of
-    each, whether arrays are read-only, strided or neither.
+    would not survive; `fused` allows a product and a sum to be rounded once. A signature makes one
+    version serve arrays that are read-only, strided or neither. Only an `entry` can be called from
+    Python: unpacking its arguments is a large part of what compiling costs.
     """
     if function is None:
-        return lambda function: kernel(function, signature)
+        return lambda function: kernel(function, signature, fused, entry)
     options = {"cache": True, "error_model": "numpy", "nogil": True}
+    options |= {"no_cpython_wrapper": not entry, "no_cfunc_wrapper": True}
+    if fused:
+        options["fastmath"] = {"contract"}
     others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER
     try:
         if signature is None:
@@ -58,7 +63,8 @@ def given(dimensions):
     return types.Array(types.float64, dimensions, "A", readonly=True)
 
 
-# Of cells: width; V, mass, mass_per_energy as seen from the left; the same from the right; terms.
-CELLS = types.Tuple((given(1), *[given(2)] * 6, types.Array(types.uint8, 1, "A", readonly=True)))
 EDGE = given(1)
 FLOATS, INTEGERS, COUNTS = types.float64[::1], types.int64[::1], types.uint8[::1]
+# Of cells: width, V, mass, mass_per_energy, terms; where in `table` the propagator of each begins
+# (-1: none; empty: none at all), `table`, and the span of energies (floor, scale) that it is for.
+CELLS = types.Tuple((given(1), *[given(2)] * 3, COUNTS, INTEGERS, FLOATS, FLOATS))

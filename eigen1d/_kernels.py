@@ -4,9 +4,10 @@ On a cell of width h, with t in [0, 1]:  psi' = m phi,  phi' = 2 (V - E) psi.  p
 stays continuous where the mass jumps. V and m are polynomials in t, the mass also linear in E:
 m = mass + E * mass_per_energy. How a cell is crossed was decided beforehand, see `_plan`:
 
-series    Power series of the solution by a two-term recurrence, in short cells.
-constant  cos/sin or tanh, for cells of constant V and m of any width, which no table of layers
-          should pay for by subdivision.
+straight    Power series of the solution, in short cells of straight V and mass: few terms.
+propagated  In other short cells, by a tabulated polynomial of the energy.
+constant    cos/sin or tanh, for cells of constant V and m of any width, which no table of layers
+            should pay for by subdivision.
 
 The chain over cells is serial, so trial energies run side by side as lanes of the inner loops.
 Sweeping to the left is sweeping to the right through the mirror image, where phi changes sign.
@@ -17,77 +18,12 @@ from numba import types
 
 from ._compiled import CELLS, EDGE, FLAT, FLOATS, INTEGERS, LANES, SERIES_TERMS, kernel
 from ._plan import shape
+from ._propagators import orders, propagated
 from ._straight import graded, straight
 
 _BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
 _LOG_BIG = 300 * np.log(2.0)
 _AGE = 16  # steps between two looks at amplitudes: far from enough to leave the range of doubles
-# Rows of LANES numbers in the scratch of a series, see `_series`.
-_A = 2
-_B = _A + SERIES_TERMS + 1
-_M = _B + SERIES_TERMS + 1
-
-
-@kernel
-def _series(work, w, terms, w_size, m_size):
-    """Fill the power series psi = sum a_k t^k, phi = sum b_k t^k for all lanes.
-
-    Rows of LANES numbers in `work`: a from _A and b from _B on, row 0 of each given; the mass from
-    _M on and, behind it, the first coefficient of w, multiplied by h; the further ones, in `w`, are
-    the same for all lanes. Rows 0 and 1 hold sums. One array and loops of fixed length are what the
-    vector unit takes.
-    """
-    first_w = (_M + m_size) * LANES
-    for k in range(terms):
-        a, b = (_A + k) * LANES, (_B + k) * LANES
-        for lane in range(LANES):
-            work[lane] = work[_M * LANES + lane] * work[b + lane]
-            work[LANES + lane] = work[first_w + lane] * work[a + lane]
-        for j in range(1, min(k + 1, m_size)):
-            m, b = (_M + j) * LANES, (_B + k - j) * LANES
-            for lane in range(LANES):
-                work[lane] += work[m + lane] * work[b + lane]
-        for j in range(1, min(k + 1, w_size)):
-            c, a = w[j], (_A + k - j) * LANES
-            for lane in range(LANES):
-                work[LANES + lane] += c * work[a + lane]
-        a, b, inverse = (_A + k + 1) * LANES, (_B + k + 1) * LANES, 1.0 / (k + 1)
-        for lane in range(LANES):
-            work[a + lane] = work[lane] * inverse
-            work[b + lane] = work[LANES + lane] * inverse
-
-
-@kernel
-def _add(state, work, terms):
-    """Add the series to psi and phi in `state`, and count zeros.
-
-    Compensated (two-sum of D. E. Knuth, TAOCP 2, sec. 4.2.2): a cell of a fine table changes psi by
-    little; adding that plainly would cost half an ulp of psi a cell, which a table of 10^7 rows
-    turns into 1e-13 of the energy or worse.
-    """
-    for lane in range(LANES):
-        work[lane] = work[(_A + terms) * LANES + lane]
-        work[LANES + lane] = work[(_B + terms) * LANES + lane]
-    for k in range(terms - 1, 0, -1):
-        a, b = (_A + k) * LANES, (_B + k) * LANES
-        for lane in range(LANES):
-            work[lane] += work[a + lane]
-            work[LANES + lane] += work[b + lane]
-    for lane in range(LANES):
-        p, f = state[lane], state[LANES + lane]
-        gain = work[lane] + state[2 * LANES + lane]
-        new_p = p + gain
-        part = new_p - p
-        state[2 * LANES + lane] = (p - (new_p - part)) + (gain - part)
-        state[lane] = new_p
-        gain = work[LANES + lane] + state[3 * LANES + lane]
-        new_f = f + gain
-        part = new_f - f
-        state[3 * LANES + lane] = (f - (new_f - part)) + (gain - part)
-        state[LANES + lane] = new_f
-        was = (p > 0.0) | ((p == 0.0) & (f > 0.0))
-        now = (new_p > 0.0) | ((new_p == 0.0) & (new_f > 0.0))
-        state[4 * LANES + lane] += 1.0 if was != now else 0.0
 
 
 @kernel
@@ -170,45 +106,6 @@ def _rescale(state, log):
 
 
 @kernel
-def _scratch(V, mass, per_energy):
-    m_size = max(mass.shape[1], per_energy.shape[1])
-    return np.zeros((_M + m_size + 1) * LANES), np.empty(V.shape[1])
-
-
-@kernel
-def _used(coefficients, cell):
-    """How many coefficients a cell has up to the last that is not zero."""
-    size = coefficients.shape[1]
-    while size > 1 and coefficients[cell, size - 1] == 0.0:
-        size -= 1
-    return size
-
-
-@kernel
-def _curved(V, mass, per_energy, cell, h, fraction, terms, state, scratch):
-    """Cross the first `fraction` of a cell of any polynomials by the general series."""
-    work, w = scratch
-    w_size, m_size = _used(V, cell), max(_used(mass, cell), _used(per_energy, cell))
-    power = h * fraction
-    for j in range(m_size):
-        shared = power * mass[cell, j] if j < mass.shape[1] else 0.0
-        own = power * per_energy[cell, j] if j < per_energy.shape[1] else 0.0
-        for lane in range(LANES):
-            work[(_M + j) * LANES + lane] = shared + own * state[5 * LANES + lane]
-        power *= fraction
-    power = 2.0 * h * fraction
-    for lane in range(LANES):
-        work[(_M + m_size) * LANES + lane] = power * (V[cell, 0] - state[5 * LANES + lane])
-        work[_A * LANES + lane] = state[lane]
-        work[_B * LANES + lane] = state[LANES + lane]
-    for j in range(1, w_size):
-        power *= fraction
-        w[j] = power * V[cell, j]
-    _series(work, w, terms, w_size, m_size)
-    _add(state, work, terms)
-
-
-@kernel
 def _flat(v, mass, per_energy, h, state, lanes, log):
     """Cross a cell of constant V and mass in closed form, in the lanes in use: it is not cheap."""
     for lane in range(lanes):
@@ -223,48 +120,44 @@ def _flat(v, mass, per_energy, h, state, lanes, log):
 
 
 @kernel
-def _line(coefficients, cell, backward, fraction):
-    """Value and slope of a straight line over the first `fraction` of a cell."""
+def _line(coefficients, cell, backward):
+    """Value and slope of a straight line over a cell, from its left or its right end."""
     size = coefficients.shape[1]
     value = coefficients[cell, 0] if size > 0 else 0.0
     slope = coefficients[cell, 1] if size > 1 else 0.0
     if backward:
-        value, slope = value + slope, -slope
-    return value, slope * fraction
+        return value + slope, -slope
+    return value, slope
 
 
 @kernel
-def _advance(cells, kind, cell, backward, fraction, state, lanes, log, scratch):
-    """Carry `state` (see `straight`) across part of a cell, from its left or its right end.
+def _advance(cells, constant, cell, backward, state, lanes, log):
+    """Carry `state` (see `straight`) across a cell, from its left or its right end.
 
     Returns about how many steps amplitudes may have grown by.
     """
-    width, V, mass, per_energy, V_right, mass_right, per_energy_right, terms = cells
+    width, V, mass, per_energy, terms, at, table, _ = cells
     h, count = width[cell], int(terms[cell])
     if count == FLAT:
         q = per_energy[cell, 0] if per_energy.shape[1] > 0 else 0.0
-        _flat(V[cell, 0], mass[cell, 0], q, h * fraction, state, lanes, log)
+        _flat(V[cell, 0], mass[cell, 0], q, h, state, lanes, log)
         return _AGE
-    if kind < 2:
-        v, slope = _line(V, cell, backward, fraction)
-        m, m_slope = _line(mass, cell, backward, fraction)
-        if kind == 0:
-            straight(state, v, slope, m, h * fraction, count)
-        else:
-            q, q_slope = _line(per_energy, cell, backward, fraction)
-            graded(state, v, slope, m, m_slope, q, q_slope, h * fraction, count)
+    if at.size > 0 and at[cell] >= 0:
+        powers = orders(count, per_energy.shape[1] > 0)
+        propagated(state, table, at[cell], backward, powers)
         return 1
-    count = min(count, SERIES_TERMS)
-    if backward:
-        _curved(
-            V_right, mass_right, per_energy_right, cell, h, fraction, count, state, scratch
-        )
+    v, slope = _line(V, cell, backward)
+    m, m_slope = _line(mass, cell, backward)
+    if constant:
+        straight(state, v, slope, m, h, count)
     else:
-        _curved(V, mass, per_energy, cell, h, fraction, count, state, scratch)
+        q, q_slope = _line(per_energy, cell, backward)
+        graded(state, v, slope, m, m_slope, q, q_slope, h, count)
     return 1
 
 
 @kernel(
+    entry=True,
     signature=types.void(
         CELLS,
         EDGE,
@@ -276,16 +169,15 @@ def _advance(cells, kind, cell, backward, fraction, state, lanes, log, scratch):
         INTEGERS,
         types.float64[:, :, ::1],
         types.int64,
-    )
+    ),
 )
 def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
     """Shoot from one edge to the nodes `stop`, for up to LANES energies at once.
 
     Parameters
     ----------
-    cells : (width, V, mass, mass_per_energy, V, mass, mass_per_energy, terms)
-        Shapes (cells,) and (cells, degree + 1); polynomials as seen from the left end of each cell,
-        then from its right end (which straight ones do without: anything of the same shape).
+    cells : tuple
+        As `CELLS` says, from `_plan.prepare`.
     edge : ndarray, shape (4,)
         Where the sweep starts, see `_start`.
     backward : bool
@@ -303,13 +195,15 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     """
     lanes, count = energies.size, cells[0].size
     # All lanes are carried along, also unused ones: loops of a fixed length are vectors.
-    state, log = np.zeros(6 * LANES), np.zeros(LANES)
-    kind, scratch = shape(cells[1], cells[2], cells[3]), _scratch(cells[1], cells[2], cells[3])
+    state, log = np.zeros(7 * LANES), np.zeros(LANES)
+    constant = shape(cells[1], cells[2], cells[3]) == 0
+    floor, scale = cells[7]
     node = count if backward else 0
     last = stop[0]
     for lane in range(LANES):
         energy = energies[lane] if lane < lanes else energies[0]
         state[5 * LANES + lane] = energy
+        state[6 * LANES + lane] = (energy - floor) / scale
         state[lane], state[LANES + lane] = _start(edge, energy)
         if lane < lanes:
             last = min(last, stop[lane]) if backward else max(last, stop[lane])
@@ -327,7 +221,7 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         if node == last:
             return
         cell = node - 1 if backward else node
-        age += _advance(cells, kind, cell, backward, 1.0, state, lanes, log, scratch)
+        age += _advance(cells, constant, cell, backward, state, lanes, log)
         if age >= _AGE:
             _rescale(state, log)
             age = 0
@@ -372,7 +266,26 @@ def _along_flat(cells, c, fraction, energy, start, level, side):
     return psi * grown, sign * phi * grown
 
 
+@kernel
+def _series(cells, cell, energy, psi, phi, a, b):
+    """Power series psi = sum a_k t^k, phi = sum b_k t^k in a short cell; the number of terms."""
+    width, V, mass, per_energy, terms = cells[:5]
+    h, most = width[cell], int(terms[cell])
+    a[0], b[0] = psi, phi
+    for k in range(most):
+        p, f = 0.0, 2.0 * h * (V[cell, 0] - energy) * a[k]
+        for j in range(min(k + 1, mass.shape[1])):
+            p += h * mass[cell, j] * b[k - j]
+        for j in range(min(k + 1, per_energy.shape[1])):
+            p += h * energy * per_energy[cell, j] * b[k - j]
+        for j in range(1, min(k + 1, V.shape[1])):
+            f += 2.0 * h * V[cell, j] * a[k - j]
+        a[k + 1], b[k + 1] = p / (k + 1), f / (k + 1)
+    return most
+
+
 @kernel(
+    entry=True,
     signature=types.void(
         CELLS,
         FLOATS,
@@ -384,10 +297,10 @@ def _along_flat(cells, c, fraction, energy, start, level, side):
         INTEGERS,
         types.float64[:, ::1],
         types.float64[:, ::1],
-    )
+    ),
 )
 def along(cells, energies, start_psi, start_phi, start_log, cell, fraction, backward, psi, phi):
-    """Evaluate wave functions inside cells, from the node on the side where they grow inwards.
+    """Evaluate wave functions inside cells.
 
     Parameters
     ----------
@@ -398,48 +311,28 @@ def along(cells, energies, start_psi, start_phi, start_log, cell, fraction, back
     fraction : ndarray, shape (points,)
         0 to 1 across the cell.
     backward : ndarray of int64, shape (levels,)
-        From this cell on, a level is evaluated from the right.
+        From this cell on, a level grows to the left: closed forms start from the right.
     psi, phi : ndarray, shape (levels, points)
         Result.
     """
-    if energies.size == 0:
-        return
-    kind, scratch = shape(cells[1], cells[2], cells[3]), _scratch(cells[1], cells[2], cells[3])
-    state, log, level_of = np.zeros(6 * LANES), np.zeros(LANES), np.empty(LANES, np.int64)
-    for point in range(cell.size):
-        c = cell[point]
-        if cells[7][c] == FLAT:
-            for level in range(energies.size):
-                side = 1 if c >= backward[level] else 0
+    a, b = np.empty(SERIES_TERMS + 1), np.empty(SERIES_TERMS + 1)
+    for level in range(energies.size):
+        last, terms = -1, 0
+        for point in range(cell.size):
+            c, t = cell[point], fraction[point]
+            if cells[4][c] == FLAT:
                 psi[level, point], phi[level, point] = _along_flat(
-                    cells, c, fraction[point], energies[level],
-                    (start_psi, start_phi, start_log), level, side,
+                    cells, c, t, energies[level], (start_psi, start_phi, start_log), level,
+                    1 if c >= backward[level] else 0,
                 )  # fmt: skip
-            continue
-        for side in range(2):
-            part = fraction[point] if side == 0 else 1.0 - fraction[point]
-            sign = 1.0 if side == 0 else -1.0
-            level = 0
-            while level < energies.size:
-                lanes = 0
-                while level < energies.size and lanes < LANES:
-                    if (c >= backward[level]) == (side == 1):
-                        level_of[lanes] = level
-                        state[lanes] = start_psi[level, c + side]
-                        state[LANES + lanes] = sign * start_phi[level, c + side]
-                        state[5 * LANES + lanes] = energies[level]
-                        lanes += 1
-                    level += 1
-                if lanes == 0:
-                    continue
-                for carry in range(2 * LANES, 4 * LANES):
-                    state[carry] = 0.0
-                _advance(cells, kind, c, side == 1, part, state, lanes, log, scratch)
-                for lane in range(lanes):
-                    grown = 1.0
-                    total = log[lane] + start_log[level_of[lane], c + side]
-                    log[lane] = 0.0
-                    if total != 0.0:
-                        grown = np.exp(total)
-                    psi[level_of[lane], point] = state[lane] * grown
-                    phi[level_of[lane], point] = sign * state[LANES + lane] * grown
+                continue
+            if c != last:
+                terms = _series(
+                    cells, c, energies[level], start_psi[level, c], start_phi[level, c], a, b
+                )
+                last = c
+            p, f = a[terms], b[terms]
+            for k in range(terms - 1, -1, -1):
+                p, f = p * t + a[k], f * t + b[k]
+            grown = np.exp(start_log[level, c]) if start_log[level, c] != 0.0 else 1.0
+            psi[level, point], phi[level, point] = p * grown, f * grown

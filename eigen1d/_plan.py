@@ -1,16 +1,18 @@
-"""What a sweep must know of each cell beforehand: cells cut short enough, and terms for each.
+"""What a sweep must know of each cell beforehand: cells cut short enough, and how each is crossed.
 
 A cell is crossed by the power series of the solution, which needs 2 m |V - E| h^2 <= LARGEST: then
 psi has at most one zero in it, and some 20 terms reach rounding. Only flat cells are crossed in
-closed form, at any width. Both depend on the energies that will be tried; everything here is done
-once, for the lowest and the highest of them, and not in the sweeps.
+closed form, at any width. All this depends on the energies that will be tried; everything here is
+done once, for the lowest and the highest of them, and not in the sweeps.
 """
 
 import numpy as np
 from numba import types
 
 from ._compiled import (
+    CELLS,
     COUNTS,
+    EDGE,
     EPS,
     FLAT,
     FLOATS,
@@ -23,12 +25,18 @@ from ._compiled import (
     given,
     kernel,
 )
+from ._propagators import orders, tabulate
 
 _FINEST = 2.0**-26  # of a cell: halves of halves stay exact in the products of `_part`
 # Terms are dropped below this part of what a cell changes psi and phi by, so that what is lost in
 # a million cells stays below rounding too.
 _LOST = 0.03 * EPS
-_TABLES = types.Tuple((FLOATS, *[types.float64[:, ::1]] * 6))
+_RUN = 64  # neighbouring cells whose terms are looked for together, by their largest coefficients
+_HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, mass and per_energy
+# Decay lengths from the outermost place that an energy reaches: what lies further out changes the
+# solution there by exp(-2 * 25) = 2e-22 of itself.
+_FAR = 25.0
+_WORK = types.Tuple((FLOATS, FLOATS, FLOATS, types.float64[:, ::1]))  # w, m, q, majorant
 
 
 @kernel
@@ -40,118 +48,122 @@ def shape(V, mass, per_energy):
 
 
 @kernel
-def _size(c, first):
+def _sum(c):
     total = 0.0
-    for j in range(first, c.size):
-        total += abs(c[j])
+    for value in c:
+        total += value
     return total
 
 
 @kernel
-def _straight_terms(size, slope):
-    """Terms of a_(k+2) = (z a_k + s a_(k-1)) / ((k+1) (k+2)) by a majorant that starts from
-    (1, zeta): as many until three in a row, the reach of the recurrence, are negligible."""
-    target = _LOST * np.sqrt(size)
-    before, a, b = 0.0, 1.0, np.sqrt(size)
-    terms, quiet = 0, 0
-    while quiet < 3:
-        if terms >= STRAIGHT_TERMS + 3:
-            return TOO_LONG
-        before, a, b = (
-            a, b, ((size - slope) * a + slope * before) / ((terms + 1.0) * (terms + 2.0))
-        )  # fmt: skip
-        terms += 1
-        quiet = quiet + 1 if (terms + 1.0) * b <= target else 0
-    return terms - quiet
+def _series_terms(work, most):
+    """Terms of psi' = (m + q) phi, phi' = w psi by a majorant of both series.
 
-
-@kernel
-def _series_terms(V, mass, per_energy, h, low, high, majorant, most):
-    """Terms of psi' = m phi, phi' = 2 (V - E) psi by a majorant of both series.
-
-    It starts as (1, eta), with eta such that both equations have the rate sqrt(2 m |V - E|) h.
+    w, m and q in `work` hold the sizes of all coefficients. It starts as (1, eta), with eta such
+    that both equations have the same rate zeta. TOO_LONG if that is more than LARGEST allows, or
+    the terms more than `most`.
     """
-    far = max(abs(low), abs(high))
-    m_total = h * (_size(mass, 0) + far * _size(per_energy, 0))
-    w_total = 2.0 * h * (max(abs(V[0] - low), abs(V[0] - high)) + _size(V, 1))
+    w, m, q, majorant = work
+    w_total, m_total = _sum(w), _sum(m) + _sum(q)
+    if not m_total * w_total <= LARGEST:
+        return TOO_LONG
     zeta = np.sqrt(m_total * w_total)
     eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
-    majorant[0, 0] = 1.0
-    majorant[1, 0] = eta
-    reach = max(V.size, mass.size, per_energy.size)
+    majorant[0, 0], majorant[1, 0] = 1.0, eta
+    reach = max(w.size, m.size, q.size)
     quiet = 0
     for k in range(most + reach):
         psi, phi = 0.0, 0.0
-        for j in range(min(k + 1, mass.size)):
-            psi += h * abs(mass[j]) * majorant[1, k - j]
-        for j in range(min(k + 1, per_energy.size)):
-            psi += h * far * abs(per_energy[j]) * majorant[1, k - j]
-        phi = 2.0 * h * max(abs(V[0] - low), abs(V[0] - high)) * majorant[0, k]
-        for j in range(1, min(k + 1, V.size)):
-            phi += 2.0 * h * abs(V[j]) * majorant[0, k - j]
-        majorant[0, k + 1] = psi / (k + 1)
-        majorant[1, k + 1] = phi / (k + 1)
+        for j in range(min(k + 1, m.size)):
+            psi += m[j] * majorant[1, k - j]
+        for j in range(min(k + 1, q.size)):
+            psi += q[j] * majorant[1, k - j]
+        for j in range(min(k + 1, w.size)):
+            phi += w[j] * majorant[0, k - j]
+        majorant[0, k + 1], majorant[1, k + 1] = psi / (k + 1), phi / (k + 1)
         small = psi <= _LOST * zeta * (k + 1) and phi <= _LOST * zeta * eta * (k + 1)
         quiet = quiet + 1 if small else 0
         if quiet > reach:
-            return max(k + 1 - quiet, 1)
+            return min(max(k + 1 - quiet, 1), SERIES_TERMS)
     return TOO_LONG
 
 
 @kernel
-def _terms(kind, V, mass, per_energy, h, low, high, majorant):
-    """How many terms a cell of this `shape` needs; FLAT: closed form; TOO_LONG: to be cut."""
+def _clear(work):
+    for j in range(work[0].size):
+        work[0][j] = 0.0
+    for j in range(work[1].size):
+        work[1][j] = 0.0
+    for j in range(work[2].size):
+        work[2][j] = 0.0
+
+
+@kernel(
+    signature=types.void(
+        given(1), given(1), given(1), types.float64, types.float64, types.float64, _WORK
+    )
+)
+def _sizes(V, mass, per_energy, h, low, high, work):
+    """Raise sizes to those of a cell's coefficients, for energies from low to high."""
+    w, m, q = work[:3]
     far = max(abs(low), abs(high))
-    slope = _size(V, 1)
-    reach = max(abs(V[0] - low), abs(V[0] - high)) + slope
-    size = 2.0 * (_size(mass, 0) + far * _size(per_energy, 0)) * reach * h * h
-    if size > LARGEST:
-        flat = slope == 0.0 and _size(mass, 1) == 0.0 and _size(per_energy, 1) == 0.0
-        return FLAT if flat else TOO_LONG
-    if kind == 0:
-        return max(_straight_terms(size, size * slope / reach if reach > 0.0 else 0.0), 1)
-    most = GRADED_TERMS if kind == 1 else SERIES_TERMS
-    return _series_terms(V, mass, per_energy, h, low, high, majorant, most)
+    w[0] = max(w[0], 2.0 * h * max(abs(V[0] - low), abs(V[0] - high)))
+    for j in range(1, V.size):
+        w[j] = max(w[j], 2.0 * h * abs(V[j]))
+    for j in range(mass.size):
+        m[j] = max(m[j], h * abs(mass[j]))
+    for j in range(per_energy.size):
+        q[j] = max(q[j], h * far * abs(per_energy[j]))
+
+
+@kernel
+def _is_flat(c):
+    for j in range(1, c.size):
+        if c[j] != 0.0:
+            return False
+    return True
+
+
+@kernel
+def _terms(V, mass, per_energy, h, low, high, work):
+    """How many terms one cell needs; FLAT: closed form; TOO_LONG: to be cut."""
+    _clear(work)
+    _sizes(V, mass, per_energy, h, low, high, work)
+    # A power of u for each term: so many fit.
+    most = SERIES_TERMS if per_energy.size == 0 else SERIES_TERMS // 2
+    needed = _series_terms(work, most)
+    if needed == TOO_LONG and _is_flat(V) and _is_flat(mass) and _is_flat(per_energy):
+        return FLAT
+    return needed
 
 
 @kernel
 def _work(V, mass, per_energy):
     columns = max(V.shape[1], mass.shape[1], per_energy.shape[1])
-    return np.empty((2, SERIES_TERMS + columns + 2)), np.empty((3, columns)), np.empty((2, columns))
+    return (
+        np.empty(V.shape[1]), np.empty(mass.shape[1]), np.empty(per_energy.shape[1]),
+        np.empty((2, SERIES_TERMS + columns + 2)),
+    )  # fmt: skip
 
 
-@kernel(
-    signature=types.boolean(
-        given(1), given(2), given(2), given(2), types.float64, types.float64, COUNTS
-    )
-)
-def plan(width, V, mass, per_energy, low, high, terms):
-    """Write the terms that each cell needs at energies from low to high.
+@kernel
+def _plan(width, V, mass, per_energy, low, high, terms):
+    """Write the terms of cells that all are short, and whether they are.
 
-    Parameters
-    ----------
-    width, V, mass, per_energy : ndarray
-        Shapes (cells,) and (cells, degree + 1).
-    low, high : float
-    terms : ndarray of uint8, shape (cells,)
-        Result: the number of terms, or FLAT, or TOO_LONG.
-
-    Returns
-    -------
-    bool
-        Whether no cell is too long.
+    Cells of a table differ little: a run of them shares its number.
     """
-    kind = shape(V, mass, per_energy)
-    majorant = _work(V, mass, per_energy)[0]
-    short = True
-    for cell in range(width.size):
-        needed = _terms(
-            kind, V[cell], mass[cell], per_energy[cell], width[cell], low, high, majorant
-        )
-        terms[cell] = needed
-        if needed == TOO_LONG:
-            short = False
-    return short
+    work = _work(V, mass, per_energy)
+    for first in range(0, width.size, _RUN):
+        last = min(first + _RUN, width.size)
+        _clear(work)
+        for cell in range(first, last):
+            _sizes(V[cell], mass[cell], per_energy[cell], width[cell], low, high, work)
+        shared = _series_terms(work, GRADED_TERMS)
+        if shared == TOO_LONG:
+            return False
+        for cell in range(first, last):
+            terms[cell] = shared
+    return True
 
 
 @kernel
@@ -186,7 +198,7 @@ def _part(c, offset, ratio, pairs, out):
 @kernel
 def _trim(c, size):
     """Set to zero what is far below rounding of `size` at the end of a polynomial: parts of a cell
-    are so short that its highest powers vanish, and no sweep should pay for them."""
+    are so short that its highest powers vanish, and no series should pay for them."""
     for j in range(c.size - 1, 0, -1):
         if abs(c[j]) > 2.0**-8 * EPS * size:
             return
@@ -194,91 +206,180 @@ def _trim(c, size):
 
 
 @kernel
-def _longer(array):
-    out = np.empty(2 * array.size, array.dtype)
-    for i in range(array.size):
-        out[i] = array[i]
+def _longer(rows):
+    out = np.empty((2 * rows.shape[0], rows.shape[1]))
+    for i in range(rows.shape[0]):
+        for j in range(rows.shape[1]):
+            out[i, j] = rows[i, j]
     return out
 
 
 @kernel
-def _leaves(width, V, mass, per_energy, low, high):
-    """Halve cells, and halves again, until each part is short: (owner, offset, ratio, terms)."""
-    kind = shape(V, mass, per_energy)
-    majorant, row, pairs = _work(V, mass, per_energy)
-    room = 2 * width.size + 64
-    owner, offset, ratio = np.empty(room, np.int64), np.empty(room), np.empty(room)
-    terms = np.empty(room, np.uint8)
-    starts, ratios = np.empty(64), np.empty(64)
+def _cut(width, V, mass, per_energy, low, high):
+    """Halve cells, and halves again, until each part is short: rows as _HEAD says.
+
+    Halves of halves have exact widths and places. From differences of positions the widths of a
+    profile far from x = 0 would lose digits (test_shooting.py, "far-away-curved").
+    """
+    work = _work(V, mass, per_energy)
+    V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
+    columns = m_end + per_energy.shape[1]
+    pairs = np.empty((2, columns))
+    parts = np.empty((2 * width.size + 64, columns))
+    starts, shares = np.empty(64), np.empty(64)
     count = 0
     for cell in range(width.size):
-        starts[0], ratios[0] = 0.0, 1.0
+        starts[0], shares[0] = 0.0, 1.0
         waiting = 1
         while waiting > 0:
             waiting -= 1
-            start, share = starts[waiting], ratios[waiting]
-            v = row[0, : V.shape[1]]
-            m = row[1, : mass.shape[1]]
-            q = row[2, : per_energy.shape[1]]
+            start, share = starts[waiting], shares[waiting]
+            if count == parts.shape[0]:
+                parts = _longer(parts)
+            row = parts[count]
+            v, m, q = row[_HEAD:V_end], row[V_end:m_end], row[m_end:]
             _part(V[cell], start, share, pairs, v)
             _part(mass[cell], start, share, pairs, m)
             _part(per_energy[cell], start, share, pairs, q)
-            needed = _terms(kind, v, m, q, width[cell] * share, low, high, majorant)
+            _trim(v, max(abs(v[0] - low), abs(v[0] - high)))
+            _trim(m, m[0])
+            needed = _terms(v, m, q, width[cell] * share, low, high, work)
             if needed == TOO_LONG and share > _FINEST:
-                starts[waiting], ratios[waiting] = start + 0.5 * share, 0.5 * share
-                starts[waiting + 1], ratios[waiting + 1] = start, 0.5 * share
+                starts[waiting], shares[waiting] = start + 0.5 * share, 0.5 * share
+                starts[waiting + 1], shares[waiting + 1] = start, 0.5 * share
                 waiting += 2
                 continue
-            if count == owner.size:
-                owner, offset, ratio = _longer(owner), _longer(offset), _longer(ratio)
-                terms = _longer(terms)
-            owner[count], offset[count], ratio[count] = cell, start, share
-            terms[count] = needed
+            row[0], row[1], row[2] = cell, start, share
+            row[3], row[4] = needed, width[cell] * share
             count += 1
-    return owner[:count], offset[:count], ratio[:count], terms[:count]
+    return parts[:count]
+
+
+@kernel
+def _decay(width, V, mass, cell, top):
+    """Decay lengths at least of energies up to `top` in a cell; 0 if one may reach it."""
+    V_low, m_low = V[cell, 0], mass[cell, 0]
+    for j in range(1, V.shape[1]):
+        V_low -= abs(V[cell, j])
+    for j in range(1, mass.shape[1]):
+        m_low -= abs(mass[cell, j])
+    if V_low <= top:
+        return 0.0
+    return np.sqrt(2.0 * max(m_low, 0.0) * (V_low - top)) * width[cell]
+
+
+@kernel
+def _matter(width, V, mass, top):
+    """(first, last): the cells beyond which no energy up to `top` notices where the profile ends.
+
+    Any solution that does not fall outwards is, _FAR decay lengths further in, the one that is
+    right at the edge.
+    """
+    count = width.size
+    first = 0
+    while first < count and _decay(width, V, mass, first, top) > 0.0:
+        first += 1
+    if first == count:
+        return 0, count
+    last = count
+    while _decay(width, V, mass, last - 1, top) > 0.0:
+        last -= 1
+    far = 0.0
+    while first > 0 and far < _FAR:
+        first -= 1
+        far += _decay(width, V, mass, first, top)
+    far = 0.0
+    while last < count and far < _FAR:
+        far += _decay(width, V, mass, last, top)
+        last += 1
+    return first, last
+
+
+@kernel(signature=EDGE(EDGE))
+def _read(edge):
+    return edge
+
+
+@kernel(signature=CELLS(given(1), given(2), given(2), given(2), COUNTS, types.float64, types.float64))
+def _ready(width, V, mass, per_energy, terms, floor, scale):
+    """Return short cells as `CELLS` says, propagators where a sweep does not do without."""
+    kind = shape(V, mass, per_energy)
+    ready = STRAIGHT_TERMS if kind == 0 else (GRADED_TERMS if kind == 1 else 0)
+    total = 0
+    for cell in range(terms.size):
+        if terms[cell] > ready:
+            total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
+    table = np.empty(total)
+    at = np.empty(terms.size if total > 0 else 0, np.int64)
+    total = 0
+    for cell in range(at.size):
+        at[cell] = -1
+        if terms[cell] > ready:
+            at[cell] = total
+            total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
+    if total > 0:
+        tabulate(width, V, mass, per_energy, terms, at, floor, scale, table)
+    span = np.empty(2)
+    span[0], span[1] = floor, scale
+    return width, V, mass, per_energy, terms, at, table, span
 
 
 @kernel(
-    signature=types.Tuple((INTEGERS, FLOATS, COUNTS, _TABLES))(
-        given(1), given(2), given(2), given(2), types.float64, types.float64
-    )
-)
-def cut(width, V, mass, per_energy, low, high):
-    """Cut cells until each is short, for energies from low to high.
+    entry=True,
+    signature=types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE))(
+        given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
+        types.float64, types.boolean,
+    ),
+)  # fmt: skip
+def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
+    """Make cells ready for sweeps at energies from floor to top.
 
-    They are halved and halved again: then their widths and places are exact. From differences of
-    positions the widths of a profile far from x = 0 would lose digits (test_shooting.py,
-    "far-away-curved").
+    Parameters
+    ----------
+    width, V, mass, per_energy : ndarray
+        Shapes (cells,) and (cells, degree + 1).
+    left, right : ndarray, shape (4,)
+        The edges, see `_kernels._start`.
+    floor, top : float
+    scale : float
+        At least top - floor; a power of two rounds nothing.
+    whole : bool
+        Keep also what lies too deep in a barrier to matter for the energies.
 
     Returns
     -------
-    owner, offset : ndarray, shape (parts,)
-        The cell that each part is of, and where in it, from 0 to 1, the part begins.
-    terms : ndarray of uint8, shape (parts,)
-        As from `plan`.
-    tables : (width, V, mass, per_energy, V, mass, per_energy)
-        Of the parts; the polynomials first as seen from the left end, then from the right end.
+    cells : tuple
+        As `CELLS` says; a table of short straight cells keeps its own arrays.
+    parts : ndarray, shape (parts, columns)
+        Rows of owner, offset, share, terms, width and polynomials; none if no cell was cut.
+    left, right : ndarray, shape (4,)
+        The edges of what was kept.
     """
-    owner, offset, ratio, terms = _leaves(width, V, mass, per_energy, low, high)
-    count = owner.size
-    pairs = _work(V, mass, per_energy)[2]
-    widths = np.empty(count)
-    V_left, V_right = np.empty((count, V.shape[1])), np.empty((count, V.shape[1]))
-    m_left, m_right = np.empty((count, mass.shape[1])), np.empty((count, mass.shape[1]))
-    columns = per_energy.shape[1]
-    q_left, q_right = np.empty((count, columns)), np.empty((count, columns))
-    for i in range(count):
-        cell, start, share = owner[i], offset[i], ratio[i]
-        widths[i] = width[cell] * share
-        _part(V[cell], start, share, pairs, V_left[i])
-        _part(V[cell], start + share, -share, pairs, V_right[i])
-        _part(mass[cell], start, share, pairs, m_left[i])
-        _part(mass[cell], start + share, -share, pairs, m_right[i])
-        for c in (V_left[i], V_right[i]):
-            _trim(c, max(abs(c[0] - low), abs(c[0] - high)))
-        for c in (m_left[i], m_right[i]):
-            _trim(c, c[0])
-        _part(per_energy[cell], start, share, pairs, q_left[i])
-        _part(per_energy[cell], start + share, -share, pairs, q_right[i])
-    tables = (widths, V_left, m_left, q_left, V_right, m_right, q_right)
-    return owner, offset, terms, tables
+    terms = np.empty(width.size, np.uint8)
+    short = _plan(width, V, mass, per_energy, floor, top, terms)
+    if short and shape(V, mass, per_energy) < 2:
+        cells = _ready(width, V, mass, per_energy, terms, floor, scale)
+        return cells, np.empty((0, _HEAD)), left, right
+    parts = _cut(width, V, mass, per_energy, floor, top)
+    V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
+    first, last = 0, parts.shape[0]
+    if not whole and per_energy.shape[1] == 0:
+        first, last = _matter(parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], top)
+    inside, inside_right = np.zeros(4), np.zeros(4)
+    if first > 0:
+        inside[0], inside[1], inside[2] = 1.0, parts[first, _HEAD], parts[first, V_end]
+        left = _read(inside)
+    if last < parts.shape[0]:
+        row = parts[last - 1]
+        inside_right[0], inside_right[1] = 1.0, _sum(row[_HEAD:V_end])
+        inside_right[2] = _sum(row[V_end:m_end])
+        right = _read(inside_right)
+    parts = parts[first:last]
+    terms = np.empty(parts.shape[0], np.uint8)
+    for i in range(terms.size):
+        terms[i] = int(parts[i, 3])
+    cells = _ready(
+        parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], parts[:, m_end:],
+        terms, floor, scale,
+    )  # fmt: skip
+    return cells, parts, left, right

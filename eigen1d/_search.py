@@ -26,7 +26,10 @@ def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
     return zeros + (2 if sine < 0.0 else 0), np.arctan(sine / cosine)
 
 
-@kernel(signature=types.void(CELLS, EDGE, EDGE, FLOATS, INTEGERS, FLOATS, INTEGERS, FLOATS))
+@kernel(
+    entry=True,
+    signature=types.void(CELLS, EDGE, EDGE, FLOATS, INTEGERS, FLOATS, INTEGERS, FLOATS),
+)
 def angles(cells, left, right, energies, stop, sigma, turn, angle):
     """Shoot from both edges and compare the two solutions where they meet.
 
@@ -72,6 +75,7 @@ def angles(cells, left, right, energies, stop, sigma, turn, angle):
 
 
 @kernel(
+    entry=True,
     signature=types.void(
         CELLS,
         EDGE,
@@ -213,6 +217,7 @@ def _narrow(x, f, share, i, point, value, edge, resolution):
 
 
 @kernel(
+    entry=True,
     signature=types.boolean[::1](
         CELLS,
         EDGE,

@@ -16,6 +16,7 @@ References
 .. [2] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
 """
 
+import math
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -83,7 +84,7 @@ class Search:
     def __init__(self, profile):
         self.profile = profile
         self.natural = profile.natural()
-        self.left, self.right = _edge(self.natural.left), _edge(self.natural.right)
+        self.edges = _edge(self.natural.left), _edge(self.natural.right)
         self.floor = float(profile.V_min)
         self.edge = profile.open_edge
         self.resolution = (ROUNDING + profile.tolerance, self.floor)
@@ -96,11 +97,39 @@ class Search:
     def _reach(self, top):
         """Make the cells ready for energies up to `top`."""
         self.top = top
-        self.x, self.cells = _prepared(self.profile.x, self.natural, self.floor, top)
+        self.cells, self.parts, self.left, self.right = self._prepared(top, False)
         # The deepest cell: where all levels of a single well live.
         V, mass, per_energy = self.cells[1:4]
         self.home = int(np.argmin(V[:, 0] + V.sum(axis=1)))
         self.home_mass = float(mass[self.home, 0] + self.floor * per_energy[self.home, :1].sum())
+
+    def _prepared(self, top, whole):
+        natural = self.natural
+        _check_length(natural, self.floor, top)
+        span = top - self.floor
+        scale = 2.0 ** math.ceil(math.log2(span)) if span > 0 else 1.0
+        return _plan.prepare(
+            natural.width, natural.V, natural.mass, natural.mass_per_energy, *self.edges,
+            self.floor, top, scale, whole,
+        )  # fmt: skip
+
+    def make_whole(self):
+        """Make the cells ready once more, with all that lies deep in barriers, for wave functions.
+
+        """
+        self.cells, self.parts, self.left, self.right = self._prepared(self.top, True)
+        V, mass, per_energy = self.cells[1:4]
+        self.home = int(np.argmin(V[:, 0] + V.sum(axis=1)))
+
+    @property
+    def x(self):
+        """The nodes between the cells, shape (cells + 1,)."""
+        if not self.parts.size:
+            return self.profile.x
+        owner = self.parts[:, 0].astype(int)
+        start = self.profile.x[owner] + self.parts[:, 1] * self.natural.width[owner]
+        last = self.profile.x[owner[-1]] + (self.parts[-1, 1] + self.parts[-1,2]) * self.natural.width[owner[-1]]
+        return np.append(start, last)
 
     def _box_height(self, count):
         """Height of the energy that so many levels would reach if V were flat, between the ends."""
@@ -240,7 +269,7 @@ class Search:
 
     def _homes(self, energies):
         """The node where the state nearest to each energy is largest."""
-        nodes = self.x.size
+        nodes = self.cells[0].size + 1
         stride = max(1, -(-nodes // _SAMPLES))
         out = np.empty(energies.size, np.int64)
         for low in range(0, energies.size, _kernels.LANES):
@@ -257,7 +286,7 @@ class Search:
 
     def trail(self, energies, backward, stride=1):
         """psi, phi and the log of their factor at every `stride`-th node: (samples, 3, lanes)."""
-        lanes, cells = energies.size, self.x.size - 1
+        lanes, cells = energies.size, self.cells[0].size
         trail = np.empty((cells // stride + 1, 3, lanes))
         stop = np.full(lanes, 0 if backward else cells)
         psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
@@ -301,6 +330,7 @@ class States:
         but grows into one inside the next cell.
         """
         search, count = self.search, self.energy.size
+        search.make_whole()
         nodes = search.x.size
         wave = np.empty((3, count, nodes))
         stop = (search._homes(self._at) if self.stop is None else self.stop).copy()
@@ -401,30 +431,6 @@ def _edge(edge):
     """An Edge as the kernels read it: is open, V, and the mass as mass + E * mass_per_energy."""
     per_energy = edge.mass * edge.alpha
     return np.array([edge.kind == "open", edge.V, edge.mass - per_energy * edge.V, per_energy])
-
-
-def _prepared(x, natural, low, high):
-    """Cut cells until their series are short at energies from low to high.
-
-    Raises
-    ------
-    InputError
-        More parts than memory is for.
-
-    Returns
-    -------
-    x : ndarray, shape (parts + 1,)
-    cells : tuple of ndarray
-        As the kernels want them, see `_kernels.sweep`.
-    """
-    given = natural.width, natural.V, natural.mass, natural.mass_per_energy
-    _check_length(natural, low, high)
-    terms = np.empty(natural.width.size, np.uint8)
-    straight = max(field.shape[1] for field in given[1:]) <= 2
-    if _plan.plan(*given, low, high, terms) and straight:
-        return x, (*given, *given[1:], terms)
-    owner, offset, terms, tables = _plan.cut(*given, low, high)
-    return np.append(x[owner] + offset * natural.width[owner], x[-1]), (*tables, terms)
 
 
 def _check_length(natural, low, high):

@@ -1,0 +1,188 @@
+"""Short cells crossed by a matrix that is a polynomial of the energy, tabulated once.
+
+On a short cell the solution at its end is T(E) times that at its start, and each entry of T is an
+entire function of E. Over the energies that will be tried a dozen powers of u = (E - floor) / scale
+give it to rounding. So the power series in x, whatever the degrees of V and m, is summed once, with
+a polynomial in u for each coefficient, and no sweep has to do it again.
+
+The table of a cell with K powers holds T_11 - 1, T_12, T_21, T_22 - 1 for u^0, then for u^1, ...
+Seen from the right, T_11 and T_22 change places: the determinant is 1, and phi changes its sign.
+"""
+
+import numpy as np
+from numba import types
+
+from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, kernel
+
+_ORDERS = (6, 12)  # powers of u: two kinds of cells
+
+
+@kernel
+def orders(terms, with_alpha):
+    """How many powers of u a series of so many terms reaches, rounded up to what is compiled.
+
+    phi' = 2 (V - E) psi brings one power for every two terms, a mass that depends on E one more.
+    """
+    reached = terms + 1 if with_alpha else (terms + 1) // 2 + 1
+    return _ORDERS[0] if reached <= _ORDERS[0] else _ORDERS[1]
+
+
+def _step(powers):
+    """Make the kernel that crosses a cell with so many powers of u; unrolled, see `_straight`."""
+
+    @kernel(fused=True)
+    def step(state, table, first, last):
+        for lane in range(LANES):
+            p, f, u = state[lane], state[LANES + lane], state[6 * LANES + lane]
+            pp, pf, fp, ff = 0.0, 0.0, 0.0, 0.0
+            for k in range(powers):
+                row = 4 * (powers - 1 - k)
+                pp = pp * u + table[row + first]
+                pf = pf * u + table[row + 1]
+                fp = fp * u + table[row + 2]
+                ff = ff * u + table[row + last]
+            gain_p = pp * p + pf * f + state[2 * LANES + lane]
+            new_p = p + gain_p
+            part = new_p - p
+            state[2 * LANES + lane] = (p - (new_p - part)) + (gain_p - part)
+            state[lane] = new_p
+            gain_f = fp * p + ff * f + state[3 * LANES + lane]
+            new_f = f + gain_f
+            part = new_f - f
+            state[3 * LANES + lane] = (f - (new_f - part)) + (gain_f - part)
+            state[LANES + lane] = new_f
+            was = (p > 0.0) | ((p == 0.0) & (f > 0.0))
+            now = (new_p > 0.0) | ((new_p == 0.0) & (new_f > 0.0))
+            state[4 * LANES + lane] += 1.0 if was != now else 0.0
+
+    return step
+
+
+_few, _many = _step(_ORDERS[0]), _step(_ORDERS[1])
+
+
+@kernel
+def propagated(state, table, start, backward, powers):
+    """Cross a cell whose propagator begins at `start`; `state` as for `straight`."""
+    first, last = (3, 0) if backward else (0, 3)
+    if powers == _ORDERS[0]:
+        _few(state, table[start : start + 4 * _ORDERS[0]], first, last)
+    else:
+        _many(state, table[start : start + 4 * _ORDERS[1]], first, last)
+
+
+@kernel(fused=True)
+def _add(out, row, c, i, series, k):
+    for lane in range(LANES):
+        out[row, lane] += c[i, lane] * series[k, lane]
+
+
+@kernel(fused=True)
+def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
+    """Continue both series from order 0, in rows: power i of u at order k is row k powers + i.
+
+    m phi = psi' and w psi = phi', all in units of the cell, and q what m gains with u; w ends with
+    what it gains itself.
+    """
+    w_size, m_size, q_size = sizes
+    for k in range(terms):
+        share = 1.0 / (k + 1.0)
+        reach = k + 2 if with_alpha else (k + 2) // 2 + 1
+        for i in range(min(reach, powers)):
+            row = (k + 1) * powers + i
+            for lane in range(LANES):
+                psi[row, lane] = 0.0
+                phi[row, lane] = 0.0
+            for j in range(min(k + 1, m_size)):
+                _add(psi, row, m, j, phi, (k - j) * powers + i)
+            for j in range(min(k + 1, w_size)):
+                _add(phi, row, w, j, psi, (k - j) * powers + i)
+            if i > 0:
+                for j in range(min(k + 1, q_size)):
+                    _add(psi, row, q, j, phi, (k - j) * powers + i - 1)
+                _add(phi, row, w, w_size, psi, k * powers + i - 1)
+            for lane in range(LANES):
+                psi[row, lane] *= share
+                phi[row, lane] *= share
+
+
+@kernel
+def _used(coefficients, cell):
+    """How many coefficients a cell has up to the last that is not zero."""
+    size = coefficients.shape[1]
+    while size > 0 and coefficients[cell, size - 1] == 0.0:
+        size -= 1
+    return size
+
+
+@kernel(
+    signature=types.void(
+        given(1), given(2), given(2), given(2), COUNTS, INTEGERS, types.float64, types.float64, FLOATS
+    )
+)
+def tabulate(width, V, mass, per_energy, terms, at, floor, scale, table):
+    """Write the propagators of all cells that have a place in `table`.
+
+    Parameters
+    ----------
+    width, V, mass, per_energy, terms
+        As for `_kernels.sweep`.
+    at : ndarray of int64, shape (cells,)
+        Where each begins, or -1.
+    floor, scale : float
+        Energies are floor + u scale.
+    table : ndarray
+        Result.
+    """
+    count, columns = width.size, per_energy.shape[1]
+    most = 1
+    for cell in range(count):
+        if at[cell] >= 0:
+            most = max(most, terms[cell])
+    powers = orders(most, columns > 0)
+    psi = np.zeros(((most + 1) * powers, LANES))
+    phi = np.zeros(((most + 1) * powers, LANES))
+    w = np.empty((V.shape[1] + 1, LANES))
+    m = np.empty((max(mass.shape[1], columns), LANES))
+    q = np.empty((columns, LANES))
+    members = np.zeros(LANES, np.int64)
+    cell = 0
+    while cell < count:
+        size, longest = 0, 1
+        w_size, m_size, q_size = 1, 1, 0
+        while cell < count and size < LANES:
+            if at[cell] >= 0:
+                members[size] = cell
+                size += 1
+                longest = max(longest, terms[cell])
+                w_size, m_size = max(w_size, _used(V, cell)), max(m_size, _used(mass, cell))
+                q_size = max(q_size, _used(per_energy, cell))
+            cell += 1
+        if size == 0:
+            return
+        m_size = max(m_size, q_size)
+        for lane in range(LANES):
+            one = members[min(lane, size - 1)]
+            h = width[one]
+            w[w_size, lane] = -2.0 * h * scale
+            for j in range(w_size):
+                w[j, lane] = 2.0 * h * (V[one, j] - (floor if j == 0 else 0.0))
+            for j in range(m_size):
+                m[j, lane] = h * mass[one, j] if j < mass.shape[1] else 0.0
+            for j in range(q_size):
+                m[j, lane] += h * floor * per_energy[one, j]
+                q[j, lane] = h * scale * per_energy[one, j]
+        for solution in range(2):
+            for lane in range(LANES):
+                psi[0, lane], phi[0, lane] = 1.0 - solution, 1.0 * solution
+            _series(psi, phi, w, m, q, (w_size, m_size, q_size), longest, powers, columns > 0)
+            for lane in range(size):
+                one = members[lane]
+                wide = orders(terms[one], columns > 0)
+                for i in range(wide):
+                    p, f = 0.0, 0.0
+                    for k in range(longest, 0, -1):
+                        p += psi[k * powers + i, lane]
+                        f += phi[k * powers + i, lane]
+                    table[at[one] + 4 * i + solution] = p
+                    table[at[one] + 4 * i + 2 + solution] = f
