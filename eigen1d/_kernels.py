@@ -163,7 +163,7 @@ def _advance(cells, constant, cell, backward, state, lanes, log):
         EDGE,
         types.boolean,
         FLOATS,
-        INTEGERS,
+        types.int64,
         FLOATS,
         FLOATS,
         INTEGERS,
@@ -172,7 +172,7 @@ def _advance(cells, constant, cell, backward, state, lanes, log):
     ),
 )
 def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
-    """Shoot from one edge to the nodes `stop`, for up to LANES energies at once.
+    """Shoot from one edge to the node `stop`, for up to LANES energies at once.
 
     Parameters
     ----------
@@ -183,11 +183,11 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     backward : bool
         From the right edge to the left; phi then has the mirror image's sign.
     energies : ndarray, shape (lanes,)
-    stop : ndarray of int64, shape (lanes,)
-        Node (0 to cells) at which each lane's result is taken.
-    psi, phi : ndarray, shape (lanes,)
+    stop : int
+        Node (0 to cells) at which the result is taken.
+    psi, phi : ndarray, shape (lanes or more,)
         Result: the solution at `stop`, to a positive factor.
-    zeros : ndarray of int64, shape (lanes,)
+    zeros : ndarray of int64, shape (lanes or more,)
         Result: zeros of psi between the edge and `stop`, that node included.
     trail : ndarray, shape (samples, 3, lanes)
         Result: psi, phi and the logarithm of their common factor at the nodes 0, stride, 2 stride,
@@ -199,14 +199,11 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     constant = shape(cells[1], cells[2], cells[3]) == 0
     floor, scale = cells[7]
     node = count if backward else 0
-    last = stop[0]
     for lane in range(LANES):
         energy = energies[lane] if lane < lanes else energies[0]
         state[5 * LANES + lane] = energy
         state[6 * LANES + lane] = (energy - floor) / scale
         state[lane], state[LANES + lane] = _start(edge, energy)
-        if lane < lanes:
-            last = min(last, stop[lane]) if backward else max(last, stop[lane])
     age = 0  # steps since amplitudes were last brought into range
     while True:
         if trail.shape[0] > 0 and node % stride == 0:
@@ -214,18 +211,17 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
                 trail[node // stride, 0, lane] = state[lane]
                 trail[node // stride, 1, lane] = state[LANES + lane]
                 trail[node // stride, 2, lane] = log[lane]
-        for lane in range(lanes):
-            if stop[lane] == node:
-                psi[lane], phi[lane] = state[lane], state[LANES + lane]
-                zeros[lane] = int(state[4 * LANES + lane])
-        if node == last:
-            return
+        if node == stop:
+            break
         cell = node - 1 if backward else node
         age += _advance(cells, constant, cell, backward, state, lanes, log)
         if age >= _AGE:
             _rescale(state, log)
             age = 0
         node += -1 if backward else 1
+    for lane in range(lanes):
+        psi[lane], phi[lane] = state[lane], state[LANES + lane]
+        zeros[lane] = int(state[4 * LANES + lane])
 
 
 @kernel

@@ -34,8 +34,9 @@ _LOST = 0.03 * EPS
 _RUN = 64  # neighbouring cells whose terms are looked for together, by their largest coefficients
 _HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, mass and per_energy
 # Decay lengths from the outermost place that an energy reaches: what lies further out changes the
-# solution there by exp(-2 * 25) = 2e-22 of itself.
-_FAR = 25.0
+# solution there by exp(-2 * 20) = 4e-18 of itself.
+_FAR = 20.0
+MOST_PARTS = 1 << 21  # of all cells together; their propagators fill 0.8 GB
 _WORK = types.Tuple((FLOATS, FLOATS, FLOATS, types.float64[:, ::1]))  # w, m, q, majorant
 
 
@@ -235,6 +236,8 @@ def _cut(width, V, mass, per_energy, low, high):
             waiting -= 1
             start, share = starts[waiting], shares[waiting]
             if count == parts.shape[0]:
+                if count > MOST_PARTS:
+                    return parts
                 parts = _longer(parts)
             row = parts[count]
             v, m, q = row[_HEAD:V_end], row[V_end:m_end], row[m_end:]
@@ -295,6 +298,19 @@ def _matter(width, V, mass, top):
     return first, last
 
 
+@kernel(signature=types.int64(given(2)))
+def _deepest(V):
+    """The cell where V is lowest, on average of both ends."""
+    home, least = 0, np.inf
+    for cell in range(V.shape[0]):
+        value = V[cell, 0]
+        for j in range(V.shape[1]):
+            value += V[cell, j]
+        if value < least:
+            home, least = cell, value
+    return home
+
+
 @kernel(signature=EDGE(EDGE))
 def _read(edge):
     return edge
@@ -326,7 +342,7 @@ def _ready(width, V, mass, per_energy, terms, floor, scale):
 
 @kernel(
     entry=True,
-    signature=types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE))(
+    signature=types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE, types.int64))(
         given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
         types.float64, types.boolean,
     ),
@@ -351,16 +367,23 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
     cells : tuple
         As `CELLS` says; a table of short straight cells keeps its own arrays.
     parts : ndarray, shape (parts, columns)
-        Rows of owner, offset, share, terms, width and polynomials; none if no cell was cut.
+        Rows of owner, offset, share, terms, width and polynomials; none if no cell was cut, and
+        more than MOST_PARTS if the end was not reached: then nothing else is of use.
     left, right : ndarray, shape (4,)
         The edges of what was kept.
+    home : int
+        The deepest cell.
     """
     terms = np.empty(width.size, np.uint8)
     short = _plan(width, V, mass, per_energy, floor, top, terms)
     if short and shape(V, mass, per_energy) < 2:
         cells = _ready(width, V, mass, per_energy, terms, floor, scale)
-        return cells, np.empty((0, _HEAD)), left, right
+        return cells, np.empty((0, _HEAD)), left, right, _deepest(V)
     parts = _cut(width, V, mass, per_energy, floor, top)
+    if parts.shape[0] > MOST_PARTS:
+        nothing = np.empty(0, np.uint8)
+        cells = _ready(width[:0], V[:0], mass[:0], per_energy[:0], nothing, floor, scale)
+        return cells, parts, left, right, 0
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
     first, last = 0, parts.shape[0]
     if not whole and per_energy.shape[1] == 0:
@@ -382,4 +405,4 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
         parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], parts[:, m_end:],
         terms, floor, scale,
     )  # fmt: skip
-    return cells, parts, left, right
+    return cells, parts, left, right, _deepest(parts[:, _HEAD:V_end])

@@ -1,16 +1,28 @@
-"""Compiled search: from sweeps to counts, from counts to brackets, from brackets to energies.
+"""Compiled search: from sweeps to angles and counts, from those to energies in verified brackets.
 
 Like `_kernels`, these know arrays only, in units with hbar = 1.
+
+All angles taken at one meeting node are samples of one function of E that rises by pi from level to
+level. It is smooth where a state is large at that node, so each round asks inverse interpolation
+through all samples so far where the wanted levels are, tries the energies there, and ends with two
+counts around each. Where it is a staircase instead, as for a state in another well, interpolation
+fails, brackets are cut evenly, and whoever calls chooses another node for what is left.
 """
 
 import numpy as np
 from numba import types
 
-from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, kernel
+from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, given, kernel
 from ._kernels import is_positive, sweep
 
-_PAIR = types.UniTuple(types.float64, 2)
-_START = types.Tuple((types.float64, types.float64, types.int64, types.int64))
+_SAMPLES = 128  # places at which V is looked at for a first guess
+_STEPS = 24  # energies at which the phase is known for it
+_NEAREST = 7  # samples that one interpolation uses at most
+# A guess is sure enough for two counts around it if its error is below this part of their distance.
+_SURE = 0.1
+_ROUNDS, _MORE_ROUNDS = 7, 60  # before another node is tried, and then
+_TINY = 1e-300
+_BESIDE = 1e-10  # of the height: so close to the edge only the tail changes
 
 
 @kernel
@@ -26,11 +38,23 @@ def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
     return zeros + (2 if sine < 0.0 else 0), np.arctan(sine / cosine)
 
 
+@kernel
+def _scale(cells, stop, energy):
+    """A scale of phi / psi at a node: any positive number is right, the local wave number smooth."""
+    _, V, mass, per_energy, _, _, _, span = cells
+    cell = min(stop, V.shape[0] - 1)
+    m = mass[cell, 0]
+    if per_energy.shape[1] > 0:
+        m += energy * per_energy[cell, 0]
+    height = energy - span[0]
+    return np.sqrt(2.0 * max(energy - V[cell, 0], 0.01 * height, _TINY) / m)
+
+
 @kernel(
     entry=True,
-    signature=types.void(CELLS, EDGE, EDGE, FLOATS, INTEGERS, FLOATS, INTEGERS, FLOATS),
+    signature=types.void(CELLS, EDGE, EDGE, types.int64, FLOATS, INTEGERS, FLOATS),
 )
-def angles(cells, left, right, energies, stop, sigma, turn, angle):
+def angles(cells, left, right, stop, energies, turn, angle):
     """Shoot from both edges and compare the two solutions where they meet.
 
     With psi_L = A sin(theta) / sigma, phi_L = A cos(theta), and the same for the mirror image of
@@ -39,11 +63,9 @@ def angles(cells, left, right, energies, stop, sigma, turn, angle):
 
     Parameters
     ----------
-    energies : ndarray, shape (k,), any number
-    stop : ndarray of int64, shape (k,)
+    stop : int
         Node where they meet.
-    sigma : ndarray, shape (k,)
-        Scale of phi / psi; any positive number is right, one near sqrt(2 |E - V| / m) is smooth.
+    energies : ndarray, shape (k,), any number
     turn : ndarray of int64, shape (k,)
         Result.
     angle : ndarray, shape (k,)
@@ -57,248 +79,399 @@ def angles(cells, left, right, energies, stop, sigma, turn, angle):
     psi, phi, psi_r, phi_r = np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
     zeros, zeros_r = np.empty(LANES, np.int64), np.empty(LANES, np.int64)
     for low in range(0, energies.size, LANES):
-        high = min(low + LANES, energies.size)
-        lanes = high - low
-        sweep(
-            cells, left, False, energies[low:high], stop[low:high],
-            psi[:lanes], phi[:lanes], zeros[:lanes], trail, 1,
-        )  # fmt: skip
-        sweep(
-            cells, right, True, energies[low:high], stop[low:high],
-            psi_r[:lanes], phi_r[:lanes], zeros_r[:lanes], trail, 1,
-        )  # fmt: skip
+        lanes = min(LANES, energies.size - low)
+        part = energies[low : low + lanes]
+        sweep(cells, left, False, part, stop, psi, phi, zeros, trail, 1)
+        sweep(cells, right, True, part, stop, psi_r, phi_r, zeros_r, trail, 1)
         for lane in range(lanes):
             turn[low + lane], angle[low + lane] = _joined(
-                psi[lane], phi[lane], psi_r[lane], phi_r[lane],
-                zeros[lane] + zeros_r[lane], sigma[low + lane],
+                psi[lane], phi[lane], psi_r[lane], phi_r[lane], zeros[lane] + zeros_r[lane],
+                _scale(cells, stop, part[lane]),
             )  # fmt: skip
 
 
+# First guesses ----------------------------------------------------------------------------------
+
+
+@kernel(signature=FLOATS(given(1), given(2), given(2), given(2), types.float64, FLOATS))
+def _phases(width, V, mass, per_energy, floor, energies):
+    """Levels below each energy by the semiclassical phase, at a sample of places."""
+    stride = -(-width.size // _SAMPLES)
+    inside = max(1, _SAMPLES // width.size)
+    phases = np.zeros(energies.size)
+    for cell in range(0, width.size, stride):
+        m = mass[cell, 0]
+        if per_energy.shape[1] > 0:
+            m += floor * per_energy[cell, 0]
+        size = np.sqrt(2.0 * m) * width[cell] * stride / (inside * np.pi)
+        for place in range(inside):
+            t, value = (place + 0.5) / inside, 0.0
+            for j in range(V.shape[1] - 1, -1, -1):
+                value = value * t + V[cell, j]
+            for k in range(energies.size):
+                phases[k] += size * np.sqrt(max(energies[k] - value, 0.0))
+    return phases
+
+
 @kernel(
     entry=True,
-    signature=types.void(
-        CELLS,
-        EDGE,
-        EDGE,
-        types.int64,
-        types.float64,
-        _PAIR,
-        types.int64,
-        types.int64,
-        _START,
-        types.float64[:, ::1],
-        types.int64[:, ::1],
-    )
+    signature=types.float64(
+        given(1), given(2), given(2), given(2), types.float64, types.float64, types.float64
+    ),
 )
-def isolate(cells, left, right, stop, sigma, resolution, first, last, start, bracket, count):
-    """Cut an energy interval until each wanted level is alone in its piece, by counting.
+def top_for(width, V, mass, per_energy, floor, step, count):
+    """Guess an energy above which the phase allows `count` levels, from floor + step upwards."""
+    energy = np.empty(1)
+    low, high = 0.0, step
+    while True:
+        energy[0] = floor + high
+        if not _phases(width, V, mass, per_energy, floor, energy)[0] < count:
+            break
+        low, high = high, 4.0 * high
+    for _ in range(5):
+        middle = 0.5 * (low + high)
+        energy[0] = floor + middle
+        if _phases(width, V, mass, per_energy, floor, energy)[0] < count:
+            low = middle
+        else:
+            high = middle
+    return floor + high
 
-    Parameters
-    ----------
-    stop, sigma
-        One node and one scale for all energies, see `angles`.
-    resolution : (relative, floor)
-        A piece narrower than relative * |E - floor| + spacing of doubles at E is not cut further.
-    first, last : int
-        Levels wanted: first <= n < last.
-    start : (low, high, count_low, count_high)
-        The interval and the number of levels below each end.
-    bracket, count : ndarray, shape (last - first, 2), of float64 and int64
-        Result: the piece that holds each level and the numbers of levels below its ends.
+
+@kernel
+def _spread(cells, bottom, top, most):
+    """Energies above bottom, the last at top, evenly by phase: two a level, at least LANES."""
+    width, V, mass, per_energy = cells[:4]
+    energies = np.empty(_STEPS + 1)
+    for k in range(_STEPS + 1):
+        energies[k] = bottom + (top - bottom) * (k / _STEPS) ** 2
+    phases = _phases(width, V, mass, per_energy, cells[7][0], energies)
+    total = phases[_STEPS] - phases[0]
+    size = LANES * int(np.ceil(max(min(2.0 * total, most), 1.0) / LANES))
+    points = np.empty(size)
+    k = 0
+    for i in range(size):
+        wanted = phases[0] + total * (i + 1.0) / size
+        while k < _STEPS - 1 and phases[k + 1] < wanted:
+            k += 1
+        rise = phases[k + 1] - phases[k]
+        share = (wanted - phases[k]) / rise if rise > 0.0 else (i + 1.0) / size
+        points[i] = bottom + (top - bottom) * ((k + min(max(share, 0.0), 1.0)) / _STEPS) ** 2
+    points[size - 1] = top
+    return points
+
+
+# Rounds -----------------------------------------------------------------------------------------
+
+
+@kernel
+def _count(turn, angle):
+    """Levels below an energy."""
+    return turn - 1 if angle < 0.0 else turn
+
+
+@kernel
+def _above(turn, angle, n):
+    """The angle beyond that of level n."""
+    return (turn - n - 1) * np.pi + angle
+
+
+@kernel
+def _offset(energy, origin, edge):
+    """How far an energy lies above another in u = -sqrt(edge - E), smooth up to the continuum."""
+    if edge == np.inf:
+        return energy - origin
+    total = np.sqrt(max(edge - energy, 0.0)) + np.sqrt(max(edge - origin, 0.0))
+    return (energy - origin) / total if total > 0.0 else 0.0
+
+
+@kernel
+def _energy(offset, origin, edge):
+    """The energy at an `_offset`. It is moved, not computed from u: that rounds by the edge."""
+    if edge == np.inf:
+        return origin + offset
+    return origin + offset * (2.0 * np.sqrt(max(edge - origin, 0.0)) - offset)
+
+
+@kernel
+def _guess(samples, turn, angle, used, i, n, edge):
+    """Where the angle reaches level n between samples i and i + 1: (energy, error).
+
+    Inverse interpolation by E. H. Neville's scheme, with the angle as abscissa and the nearest
+    samples first. The error is the last correction; infinite where the angle is no help.
     """
-    size = last - first
-    ends, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
-    ends[0, 0], ends[0, 1], counts[0, 0], counts[0, 1] = start
-    pieces = 1
-    while pieces > 0:
-        each = max(LANES // pieces, 1)
-        points = np.empty(pieces * LANES)
-        owner = np.empty(pieces * LANES, np.int64)
-        used = 0
-        for i in range(pieces):
-            inside = max(each, min(counts[i, 1] - counts[i, 0], LANES - 1))
-            for k in range(inside):
-                points[used] = ends[i, 0] + (ends[i, 1] - ends[i, 0]) * ((k + 1.0) / (inside + 1.0))
-                owner[used] = i
-                used += 1
-        turn, angle = np.empty(used, np.int64), np.empty(used)
-        stops, sigmas = np.empty(used, np.int64), np.empty(used)
-        for k in range(used):
-            stops[k], sigmas[k] = stop, sigma
-        angles(cells, left, right, points[:used], stops, sigmas, turn, angle)
-        new_ends, new_counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
-        kept, k = 0, 0
-        for i in range(pieces):
-            low, n_low = ends[i, 0], counts[i, 0]
-            while n_low < counts[i, 1]:
-                if k < used and owner[k] == i:
-                    high, n_high = points[k], turn[k] - (1 if angle[k] < 0.0 else 0)
-                    n_high = min(max(n_high, n_low), counts[i, 1])
-                    k += 1
-                else:
-                    high, n_high = ends[i, 1], counts[i, 1]
-                if n_high > first and n_low < last and n_high > n_low:
-                    floor = resolution[1]
-                    size_high = max(abs(low), abs(high))
-                    fine = resolution[0] * (high - floor) + 2.0 * EPS * size_high
-                    if n_high == n_low + 1 or high - low <= fine:
-                        for n in range(max(n_low, first), min(n_high, last)):
-                            bracket[n - first, 0], bracket[n - first, 1] = low, high
-                            count[n - first, 0], count[n - first, 1] = n_low, n_high
-                    else:
-                        new_ends[kept, 0], new_ends[kept, 1] = low, high
-                        new_counts[kept, 0], new_counts[kept, 1] = n_low, n_high
-                        kept += 1
-                low, n_low = high, n_high
-            while k < used and owner[k] == i:
-                k += 1
-        ends, counts, pieces = new_ends, new_counts, kept
+    x, y = np.empty(_NEAREST), np.empty(_NEAREST)
+    low, high = i, i + 1
+    value, error = 0.0, np.inf
+    for size in range(min(_NEAREST, used)):
+        if low >= 0 and (size % 2 == 0 or high >= used):
+            k = low
+            low -= 1
+        else:
+            k = high
+            high += 1
+        x[size] = _above(turn[k], angle[k], n)
+        y[size] = _offset(samples[k], samples[i], edge)
+        for j in range(size - 1, -1, -1):
+            gap = x[size] - x[j]
+            y[j] = (x[size] * y[j] - x[j] * y[j + 1]) / gap if gap != 0.0 else np.nan
+        correction = abs(y[0] - value)
+        if size > 1 and not correction < error:
+            break
+        if size > 0:
+            error = correction
+        value = y[0]
+    energy = _energy(value, samples[i], edge)
+    if not samples[i] < energy < samples[i + 1]:
+        return 0.5 * (samples[i] + samples[i + 1]), np.inf
+    return energy, abs(_energy(value + error, samples[i], edge) - energy)
 
 
 @kernel
-def _between(one, other, share, edge):
-    """The energy at `share` of the way from one to other, measured in u."""
-    if edge == np.inf:
-        return one + share * (other - one)
-    u_one, u_other = -np.sqrt(max(edge - one, 0.0)), -np.sqrt(max(edge - other, 0.0))
-    both = u_one + u_other
-    step = share * (one - other) / both if both != 0.0 else 0.0
-    # E is moved, not recomputed from u: edge - u^2 would round to the depth of the edge.
-    point = one - step * (2.0 * u_one + step)
-    if min(one, other) < point < max(one, other):
-        return point
-    # Beside the edge u has digits that E has not: the step may round to nothing, for ever.
-    return 0.5 * (one + other)
+def _bracket(turn, angle, used, n):
+    """The sample below level n whose neighbour is above it."""
+    low, high = 0, used - 1
+    while high - low > 1:
+        middle = (low + high) // 2
+        if _count(turn[middle], angle[middle]) > n:
+            high = middle
+        else:
+            low = middle
+    return low
 
 
 @kernel
-def _ratio(a, b, c, edge):
-    """(u_a - u_b) / (u_c - u_b), without cancellation."""
-    if edge == np.inf:
-        return (a - b) / (c - b)
-    u = -np.sqrt(max(edge - b, 0.0))
-    u_a, u_c = -np.sqrt(max(edge - a, 0.0)), -np.sqrt(max(edge - c, 0.0))
-    return (a - b) / (c - b) * ((u_c + u) / (u_a + u))
+def _half_width(energy, resolution, floor):
+    """Of a bracket that rounding cannot deceive."""
+    return resolution * max(energy - floor, 0.0) + 4.0 * EPS * abs(energy)
 
 
 @kernel
-def _narrow(x, f, share, i, point, value, edge, resolution):
-    """One step of Chandrupatla's method for level i; True when its bracket is closed."""
-    if (value < 0.0) == (f[0, i] < 0.0):
-        x[2, i], f[2, i] = x[0, i], f[0, i]
-    else:
-        x[2, i], f[2, i] = x[1, i], f[1, i]
-        x[1, i], f[1, i] = x[0, i], f[0, i]
-    x[0, i], f[0, i] = point, value
-    x1, x2, x3 = x[0, i], x[1, i], x[2, i]
-    f1, f2, f3 = f[0, i], f[1, i], f[2, i]
-    height = max(point - resolution[1], 0.0)
-    if edge < np.inf:
-        # Near the continuum the state lies mostly in the tails, which round nothing.
-        height = min(height, np.sqrt(height * max(edge - point, 0.0)))
-    fine = 0.25 * resolution[0] * height + EPS * abs(point)
-    width = abs(x2 - x1)
-    if value == 0.0 or width <= fine:
-        return True
-    least = fine / width
-    share[i] = 0.5
-    if f3 != f1 and f3 != f2:
-        xi = _ratio(x1, x2, x3, edge)
-        ph = (f1 - f2) / (f3 - f2)
-        if ph * ph < xi and (1.0 - ph) ** 2 < 1.0 - xi:
-            share[i] = f1 / (f2 - f1) * f3 / (f2 - f3) + _ratio(x3, x1, x2, edge) * f1 / (
-                f3 - f1
-            ) * f2 / (f3 - f2)
-    if least >= 0.5:
-        share[i] = 0.5
-    else:
-        share[i] = min(max(share[i], least), 1.0 - least)
-    return False
+def _cuts(points, low, high, guess, error, each):
+    """Energies that cut a bracket: the guess, as many steps beside it as its error, even cuts."""
+    size = 0
+    if error < np.inf:
+        points[0] = guess
+        size = 1
+        if each > 2:
+            for step in (-3.0, 3.0):
+                point = guess + step * error
+                if low < point < high:
+                    points[size] = point
+                    size += 1
+    even = max(each - size, 1 - size)
+    for k in range(even):
+        points[size] = low + (high - low) * (k + 1.0) / (even + 1.0)
+        size += 1
+    return size
+
+
+@kernel
+def _merge(samples, turn, angle, used, points, new_turn, new_angle, size):
+    """Insert new samples in their order; points come nearly sorted."""
+    for i in range(1, size):
+        k = i
+        while k > 0 and points[k - 1] > points[k]:
+            points[k - 1], points[k] = points[k], points[k - 1]
+            new_turn[k - 1], new_turn[k] = new_turn[k], new_turn[k - 1]
+            new_angle[k - 1], new_angle[k] = new_angle[k], new_angle[k - 1]
+            k -= 1
+    old, new = used - 1, size - 1
+    for place in range(used + size - 1, -1, -1):
+        if new < 0:
+            return
+        if old >= 0 and samples[old] > points[new]:
+            samples[place], turn[place], angle[place] = samples[old], turn[old], angle[old]
+            old -= 1
+        else:
+            samples[place], turn[place] = points[new], new_turn[new]
+            angle[place] = new_angle[new]
+            new -= 1
+
+
+@kernel
+def _verified(turn, angle, points, k, n, target, energy, bracket, i):
+    """Take two counts around a target, at points k and k + 1, as the bracket of level n.
+
+    Returns whether that closes the matter: 1 for a level alone, 2 for one of several, else 0.
+    """
+    below, above = _count(turn[k], angle[k]), _count(turn[k + 1], angle[k + 1])
+    if below > n or above <= n:
+        return 0
+    low, high = points[k], points[k + 1]
+    energy[i], bracket[i, 0], bracket[i, 1] = target, low, high
+    if below < n or above > n + 1:
+        return 2
+    f, f_high = _above(turn[k], angle[k], n), _above(turn[k + 1], angle[k + 1], n)
+    if f_high > f:
+        energy[i] = low + (high - low) * (-f / (f_high - f))
+    return 1 if abs(energy[i] - target) <= 0.15 * (high - low) else 0
+
+
+@kernel
+def _converge(
+    cells, left, right, stop, edge, first, resolution, room, used, energy, bracket, done, rounds
+):
+    """Close the brackets of levels first, first + 1, ... from the samples in `room`."""
+    samples, turn, angle, points, new_turn, new_angle = room
+    floor, size = cells[7][0], energy.size
+    target, place = np.empty(size), np.empty(size, np.int64)
+    width, missed = np.empty(size), np.zeros(size, np.bool_)
+    for i in range(size):
+        width[i] = np.inf
+    for _ in range(rounds):
+        active = 0
+        for i in range(size):
+            if done[i] == 0:
+                active += 1
+        if active == 0:
+            return
+        each, new, previous = max(1, LANES // active), 0, -1
+        for i in range(size):
+            place[i] = -1
+            if done[i] != 0:
+                continue
+            n = first + i
+            k = _bracket(turn, angle, used, n)
+            low, high = samples[k], samples[k + 1]
+            guess, error = _guess(samples, turn, angle, used, k, n, edge)
+            half = _half_width(guess, resolution, floor)
+            if missed[i]:
+                error = np.inf
+            missed[i] = False
+            if high - low <= half or error <= _SURE * half:
+                target[i], place[i] = guess, new
+                points[new] = max(guess - half, floor)
+                points[new + 1] = min(guess + half, edge)
+                new += 2
+            elif k != previous:
+                inside = _count(turn[k + 1], angle[k + 1]) - _count(turn[k], angle[k])
+                several = each
+                if inside > 1 or high - low > 0.5 * width[i]:
+                    several = max(each, min(inside + 2, LANES - 1))
+                new += _cuts(points[new:], low, high, guess, error, several)
+            width[i], previous = high - low, k
+        angles(cells, left, right, stop, points[:new], new_turn, new_angle)
+        for i in range(size):
+            if place[i] >= 0:
+                done[i] = _verified(
+                    new_turn, new_angle, points, place[i], first + i, target[i], energy, bracket, i
+                )
+                missed[i] = done[i] == 0
+        _merge(samples, turn, angle, used, points, new_turn, new_angle, new)
+        used += new
+    for i in range(size):
+        if done[i] == 0:
+            k = _bracket(turn, angle, used, first + i)
+            bracket[i, 0], bracket[i, 1] = samples[k], samples[k + 1]
+            energy[i] = 0.5 * (samples[k] + samples[k + 1])
+
+
+@kernel
+def _room(used, levels, rounds):
+    """Arrays for all samples of some rounds, and for the points of one."""
+    most = 3 * levels + 4 * LANES
+    total = used + rounds * most
+    return (
+        np.empty(total), np.empty(total, np.int64), np.empty(total),
+        np.empty(most), np.empty(most, np.int64), np.empty(most),
+    )  # fmt: skip
 
 
 @kernel(
     entry=True,
-    signature=types.boolean[::1](
-        CELLS,
-        EDGE,
-        EDGE,
-        types.float64,
-        INTEGERS,
-        FLOATS,
-        _PAIR,
-        INTEGERS,
-        types.float64[:, ::1],
-        FLOATS,
-        types.int64,
-    )
-)
-def refine(cells, left, right, edge, stop, sigma, resolution, n, bracket, energy, rounds):
-    """Close the brackets of isolated levels by root finding on the angle of `angles`.
-
-    Inverse quadratic interpolation kept inside the bracket, with bisection where that is unsafe
-    (T. R. Chandrupatla, Adv. Eng. Softw. 28 (1997) 145), in the variable u = -sqrt(edge - E), in
-    which the angle is smooth up to the continuum; u = E between two walls (edge infinite).
+    signature=types.Tuple((types.int64, types.boolean, FLOATS, types.float64[:, ::1], INTEGERS))(
+        CELLS, EDGE, EDGE, types.int64, types.float64, types.float64, types.float64,
+        types.int64, types.int64, types.float64,
+    ),
+)  # fmt: skip
+def levels(cells, left, right, stop, bottom, top, edge, first, last, resolution):
+    """Find the levels first <= n < last, as many as lie below `top`.
 
     Parameters
     ----------
-    stop, sigma : ndarray, shape (k,)
-    resolution : (relative, floor)
-        As for `isolate`; the error aimed at.
-    n : ndarray of int64, shape (k,)
-    bracket : ndarray, shape (k, 2)
-        Holds just level n; overwritten by a smaller one.
-    energy : ndarray, shape (k,)
-        Result: the best energy.
-    rounds : int
-        Most evaluations a level.
+    cells, left, right
+        From `_plan.prepare`, for energies up to `top`.
+    stop : int
+        Node where solutions meet.
+    bottom : float
+        The floor of the energies, or one with no more than `first` levels below it.
+    top, edge : float
+        top <= edge: where the continuum begins, infinity between walls.
+    first, last : int
+    resolution : float
+        Half width of a bracket, relative to the height above the floor.
 
     Returns
     -------
-    ndarray of bool, shape (k,)
-        Which levels have converged.
+    below : int
+        Number of levels below `top`.
+    sure : bool
+        False if that depends on rounding, which happens at the edge only.
+    energy : ndarray, shape (count,)
+    bracket : ndarray, shape (count, 2)
+    done : ndarray of int64, shape (count,)
+        1: bracket and energy are final. 2: so is the bracket, which holds several levels. 0: the
+        bracket is by counts, but it is wide.
     """
-    size = n.size
-    # x1 is the newest end of the bracket, x2 the other one, x3 the point dropped last.
-    x, f = np.empty((3, size)), np.empty((3, size))
-    turn, angle = np.empty(size, np.int64), np.empty(size)
-    points, stops, sigmas = np.empty(size), np.empty(size, np.int64), np.empty(size)
-    for end in range(2):
-        for i in range(size):
-            points[i] = bracket[i, end]
-        angles(cells, left, right, points, stop, sigma, turn, angle)
-        for i in range(size):
-            x[end, i], x[2, i] = bracket[i, end], bracket[i, end]
-            f[end, i] = (turn[i] - n[i] - 1) * np.pi + angle[i]
-            f[2, i] = f[end, i]
-    share, done = np.empty(size), np.zeros(size, np.bool_)
+    floor = cells[7][0]
+    points = _spread(cells, bottom, top, 4.0 * (last - first))
+    size = points.size
+    if top == edge:
+        points[size - 2] = max(points[size - 3], edge - _BESIDE * (edge - floor))
+    room = _room(size + 1, min(last - first, 4 * size), _ROUNDS)
+    samples, turn, angle = room[:3]
+    samples[0], turn[0], angle[0] = bottom, 0, 0.0
     for i in range(size):
-        share[i] = 0.5
-        if f[0, i] >= 0.0 or f[1, i] < 0.0:
-            # The count that made this bracket and the angle at its end differ by rounding: the
-            # level is that end.
-            energy[i] = x[0, i] if f[0, i] >= 0.0 else x[1, i]
-            done[i] = True
-    active = np.empty(size, np.int64)
-    for _ in range(rounds):
-        used = 0
-        for i in range(size):
-            if not done[i]:
-                points[used] = _between(x[0, i], x[1, i], share[i], edge)
-                active[used], stops[used], sigmas[used] = i, stop[i], sigma[i]
-                used += 1
-        if used == 0:
-            break
-        angles(
-            cells, left, right, points[:used], stops[:used], sigmas[:used], turn[:used],
-            angle[:used],
+        samples[i + 1] = points[i]
+    skip = 1 if bottom == floor else 0
+    angles(cells, left, right, stop, samples[skip : size + 1], turn[skip:], angle[skip:])
+    below, sure = _count(turn[size], angle[size]), True
+    if top == edge:
+        moved = (turn[size] - turn[size - 1]) * np.pi + angle[size] - angle[size - 1]
+        sure = below == _count(turn[size - 1], angle[size - 1]) and abs(angle[size]) > 4.0 * moved
+    count = max(min(last, below) - first, 0)
+    energy, bracket = np.empty(count), np.empty((count, 2))
+    done = np.zeros(count, np.int64)
+    if count > 0:
+        _converge(
+            cells, left, right, stop, edge, first, resolution, room, size + 1, energy, bracket,
+            done, _ROUNDS,
         )  # fmt: skip
-        for k in range(used):
-            i = active[k]
-            value = (turn[k] - n[i] - 1) * np.pi + angle[k]
-            done[i] = _narrow(x, f, share, i, points[k], value, edge, resolution)
-    for i in range(size):
-        if f[0, i] < 0.0 or f[1, i] < 0.0:
-            best = 0 if abs(f[0, i]) < abs(f[1, i]) else 1
-            energy[i] = x[best, i]
-        bracket[i, 0], bracket[i, 1] = min(x[0, i], x[1, i]), max(x[0, i], x[1, i])
-    return done
+    return below, sure, energy, bracket, done
+
+
+@kernel(
+    entry=True,
+    signature=types.int64(
+        CELLS, EDGE, EDGE, types.int64, types.float64, types.int64, types.float64, FLOATS,
+        types.float64[:, ::1],
+    ),
+)  # fmt: skip
+def settle(cells, left, right, stop, edge, n, resolution, energy, bracket):
+    """Close the bracket of one level that `levels` left wide, with solutions that meet elsewhere.
+
+    Parameters
+    ----------
+    stop : int
+        A node where the state is large.
+    energy, bracket : ndarray, shapes (1,) and (1, 2)
+        Of level n; overwritten.
+
+    Returns
+    -------
+    int
+        As `done` of `levels`.
+    """
+    room = _room(LANES, 1, _MORE_ROUNDS)
+    samples, turn, angle = room[:3]
+    for i in range(LANES):
+        samples[i] = bracket[0, 0] + (bracket[0, 1] - bracket[0, 0]) * (i / (LANES - 1.0))
+    samples[LANES - 1] = bracket[0, 1]
+    angles(cells, left, right, stop, samples[:LANES], turn, angle)
+    done = np.zeros(1, np.int64)
+    _converge(
+        cells, left, right, stop, edge, n, resolution, room, LANES, energy, bracket, done,
+        _MORE_ROUNDS,
+    )  # fmt: skip
+    return done[0]

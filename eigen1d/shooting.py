@@ -29,9 +29,9 @@ from .levels import MOST_LEVELS, Budget, Levels
 EPS = np.finfo(float).eps
 # Half width of a bracket relative to the level's height above the least V. Each cell's entries are
 # rounded by an eps or so relative to the change that the cell makes in psi and phi (sums are
-# compensated); first-order perturbation theory turns that into eps * (kinetic + |potential - E|)
-# expectation values, together at most 3 heights. 16 leaves room for a handful of operations a cell;
-# the worst error seen against the reference levels is quoted in tests/test_shooting.py.
+# compensated); first-order perturbation theory turns that into eps * (kinetic + potential)
+# expectation values, together at most a few heights. 16 leaves room for a handful of operations a
+# cell; the worst error seen against the reference levels is quoted in tests/test_shooting.py.
 ROUNDING = 16 * EPS
 _SAMPLES = 4096  # nodes at which the place of a state is looked for
 # Levels of a group differ by less than _SAME of their height, some dozen roundings. Their waves are
@@ -39,8 +39,7 @@ _SAMPLES = 4096  # nodes at which the place of a state is looked for
 _SAME, _AWAY = 1e-14, 1e-12
 # Where the earlier waves of a group leave room for the next: in another well they reach 1e-2.
 _SMALL = 0.1
-_MOST_LENGTHS = 1e7  # of a profile that is not flat; each takes a part of a cell and its memory
-_FIRST_ROUNDS, _MORE_ROUNDS = 8, 12  # evaluations before the meeting node is chosen anew
+_SPARE = 1.5  # levels that the first guess of the highest energy allows for beyond those wanted
 
 
 def find(profile, request):
@@ -56,21 +55,20 @@ def find(profile, request):
     Levels
     """
     search = Search(profile)
-    first, last, notes = search.range(request)
-    energy, bracket = search.levels(first, last)
-    complete = bool(np.isfinite(energy).all())
+    first, energy, bracket = search.requested(request)
     half_width = np.maximum(bracket[:, 1] - energy, energy - bracket[:, 0])
-    if (np.diff(energy) <= half_width[1:]).any():
+    notes = search.notes
+    if (energy[1:] - energy[:-1] <= half_width[1:]).any():
         notes += (
             "some levels agree to the last digit; each wave function of such a group may live in "
             "one well, and any orthonormal mixture of them is as good",
         )
     return Levels(
         profile=profile,
-        n=np.arange(first, last),
+        n=np.arange(first, first + energy.size),
         energy=energy,
         bracket=bracket,
-        complete=complete,
+        complete=True,
         method="shooting",
         states=States(search, energy.copy()),
         budget=Budget(numeric=half_width),
@@ -79,239 +77,219 @@ def find(profile, request):
 
 
 class Search:
-    """One profile made ready for the kernels, with the questions that a search asks it."""
+    """One profile, with the questions that a search asks it."""
 
     def __init__(self, profile):
         self.profile = profile
         self.natural = profile.natural()
-        self.edges = _edge(self.natural.left), _edge(self.natural.right)
-        self.floor = float(profile.V_min)
-        self.edge = profile.open_edge
-        self.resolution = (ROUNDING + profile.tolerance, self.floor)
-        self.top = -np.inf
-        if self.edge < np.inf:
-            self._reach(self.edge)
-        else:
-            self._reach(self.floor + self._box_height(1))
-
-    def _reach(self, top):
-        """Make the cells ready for energies up to `top`."""
-        self.top = top
-        self.cells, self.parts, self.left, self.right = self._prepared(top, False)
-        # The deepest cell: where all levels of a single well live.
-        V, mass, per_energy = self.cells[1:4]
-        self.home = int(np.argmin(V[:, 0] + V.sum(axis=1)))
-        self.home_mass = float(mass[self.home, 0] + self.floor * per_energy[self.home, :1].sum())
-
-    def _prepared(self, top, whole):
-        natural = self.natural
-        _check_length(natural, self.floor, top)
-        span = top - self.floor
-        scale = 2.0 ** math.ceil(math.log2(span)) if span > 0 else 1.0
-        return _plan.prepare(
-            natural.width, natural.V, natural.mass, natural.mass_per_energy, *self.edges,
-            self.floor, top, scale, whole,
+        self.given = (
+            self.natural.width, self.natural.V, self.natural.mass, self.natural.mass_per_energy
         )  # fmt: skip
+        self.edges = _edge(self.natural.left), _edge(self.natural.right)
+        self.floor = profile.V_min
+        self.edge = profile.open_edge
+        self.resolution = ROUNDING + profile.tolerance
+        self.notes = ()
+        self.ready = None
 
-    def make_whole(self):
-        """Make the cells ready once more, with all that lies deep in barriers, for wave functions.
+    def reach(self, top):
+        """Return the cells ready for energies up to `top` or more."""
+        if self.ready is None or top > self.ready.top:
+            self.ready = Ready(self, top, False)
+        return self.ready
 
-        """
-        self.cells, self.parts, self.left, self.right = self._prepared(self.top, True)
-        V, mass, per_energy = self.cells[1:4]
-        self.home = int(np.argmin(V[:, 0] + V.sum(axis=1)))
+    # Which levels -------------------------------------------------------------------------------
 
-    @property
-    def x(self):
-        """The nodes between the cells, shape (cells + 1,)."""
-        if not self.parts.size:
-            return self.profile.x
-        owner = self.parts[:, 0].astype(int)
-        start = self.profile.x[owner] + self.parts[:, 1] * self.natural.width[owner]
-        last = self.profile.x[owner[-1]] + (self.parts[-1, 1] + self.parts[-1,2]) * self.natural.width[owner[-1]]
-        return np.append(start, last)
+    def requested(self, request):
+        """Return (first, energy, bracket) of the levels that a `Request` asks for."""
+        if request.window is not None:
+            return self._in_window(*request.window)
+        if not self.edge > self.floor:
+            return 0, np.empty(0), np.empty((0, 2))
+        last = MOST_LEVELS + 1 if request.count is None else request.count
+        top = self._top(last + _SPARE)
+        energy, bracket = self.levels(0, last, self.floor, top)
+        if energy.size > MOST_LEVELS:
+            raise InputError(
+                f"more than {MOST_LEVELS:,} levels are bound; ask for at most that many of them"
+            )
+        return 0, energy, bracket
 
-    def _box_height(self, count):
-        """Height of the energy that so many levels would reach if V were flat, between the ends."""
-        per_energy = self.natural.mass_per_energy[:, :1].sum(axis=1)
-        mass = (self.natural.mass[:, 0] + self.floor * per_energy).max()
+    def _in_window(self, low, high):
+        if min(high, self.edge) > self.floor and self._top(1e15) < min(high, self.edge):
+            raise InputError(f"far too many levels lie below {high:g}; lower the window")
+        first, last = self.count([low, high])
+        if last - first > MOST_LEVELS:
+            raise InputError(
+                f"{last - first:,} levels lie in the window; ask for at most {MOST_LEVELS:,}"
+            )
+        if last <= first:
+            return first, np.empty(0), np.empty((0, 2))
+        bottom, top = max(low, self.floor), min(high, self.edge)
+        return first, *self.levels(first, last, bottom, top)
+
+    def _top(self, count):
+        """An energy up to which about so many levels lie; at most the edge."""
         span = self.profile.x[-1] - self.profile.x[0]
-        return (np.pi * count / span) ** 2 / (2 * mass)
+        mass = self.natural.mass[:, 0].max()
+        if self.natural.mass_per_energy.shape[1]:
+            mass = (self.natural.mass[:, 0] + self.floor * self.natural.mass_per_energy[:, 0]).max()
+        # No level lies lower than it would if V were flat, between the ends.
+        step = (np.pi * max(count - 1, 1) / span) ** 2 / (2 * mass)
+        if self.floor + step >= self.edge:
+            return self.edge
+        return min(self.edge, _search.top_for(*self.given, self.floor, step, count))
 
     # Counting -----------------------------------------------------------------------------------
 
     def count(self, energies):
         """Number of levels below each energy; energies at or above the open edge are cut to it."""
         energies = np.clip(np.atleast_1d(energies).astype(float), self.floor, self.edge)
-        if energies.max() > self.top:
-            self._reach(self.floor + 1.01 * (energies.max() - self.floor))
-        stop = np.full(energies.size, self.home)
-        turn, angle = self._angles(energies, stop, self._sigma(energies))
+        turn, angle = self.reach(energies.max()).angles(energies)
         count = turn - (angle < 0)
         at_edge = energies == self.edge
         if at_edge.any():
-            count[at_edge] = self.threshold[0]
+            count[at_edge] = self.threshold
         count[energies <= self.floor] = 0
         return count
 
-    def _angles(self, energies, stop, sigma):
-        turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        _search.angles(self.cells, self.left, self.right, energies, stop, sigma, turn, angle)
-        return turn, angle
-
-    def _sigma(self, energies):
-        """A scale of phi / psi for the angles at each energy."""
-        height = np.maximum(energies - self.floor, np.finfo(float).tiny)
-        return np.sqrt(2 * height / self.home_mass)
-
     @cached_property
     def threshold(self):
-        """(count, doubtful): levels below the open edge, and whether one more may just be bound.
+        """Number of levels below the open edge.
 
         At the edge itself kappa = 0, and a further level is bound if the solution there has already
         turned down. How far it has turned is compared with what rounding (and the tolerance of a
         profile made from a function) can do; within that it is not counted: a state bound by less
-        would reach some 10^13 times further than the well.
+        would reach some 10^13 times further than the well. A note then says so.
         """
-        energy = np.array([self.edge])
-        stop, sigma = np.array([self.home]), self._sigma(energy)
-        turn, angle = self._angles(energy, stop, sigma)
-        below = int(turn[0] - (angle[0] < 0))
-        states = States(self, energy, stop)
-        psi, phi = states.psi[0], states.phi[0]
-        meet = sigma[0] * psi[self.home] ** 2 + phi[self.home] ** 2 / sigma[0]
+        whole, energy = Ready(self, self.edge, True), np.array([self.edge])
+        (turn,), (angle,) = whole.angles(energy)
+        psi, phi = States(self, energy, whole.home, whole).at_nodes()
+        psi, phi = psi[0], phi[0]
+        sigma = abs(phi[whole.home]) / abs(psi[whole.home]) or 1.0
+        meet = sigma * psi[whole.home] ** 2 + phi[whole.home] ** 2 / sigma
         middle_psi = np.maximum(np.abs(psi[1:]), np.abs(psi[:-1]))
         middle_phi = np.maximum(np.abs(phi[1:]), np.abs(phi[:-1]))
         turned = np.abs(np.diff(phi)) * middle_psi + np.abs(np.diff(psi)) * middle_phi
-        noise = self.resolution[0] * turned.sum() / meet
+        noise = self.resolution * turned.sum() / meet
         # A zero angle means a level exactly at the edge, which is not bound.
-        if abs(angle[0]) <= noise:
-            return int(turn[0]) - 1, True
-        return below, False
-
-    def range(self, request):
-        """Return (first, last, notes): the request in level numbers, first <= n < last."""
-        notes = []
-        if request.window is not None:
-            low, high = request.window
-            if min(high, self.edge) - self.floor > 1e16 * self._box_height(1):
-                raise InputError(f"far too many levels lie below {high:g}; lower the window")
-            first = int(self.count(low)[0]) if low > self.floor else 0
-            last = int(self.count(high)[0]) if high > self.floor else 0
-            if last - first > MOST_LEVELS:
-                raise InputError(
-                    f"{last - first:,} levels lie in the window; ask for at most {MOST_LEVELS:,}"
-                )
-            return first, max(first, last), tuple(notes)
-        if np.isinf(self.edge):
-            return 0, request.count, tuple(notes)
-        bound = 0
-        if self.edge > self.floor:
-            bound, doubtful = self.threshold
-            if request.count is None and bound > MOST_LEVELS:
-                raise InputError(
-                    f"{bound:,} levels are bound; ask for at most {MOST_LEVELS:,} of them"
-                )
-            if doubtful:
-                notes.append(
-                    "a further level may lie at the continuum's edge, bound by less than rounding "
-                    "can tell; it is not counted"
-                )
-        return 0, bound if request.count is None else min(bound, request.count), tuple(notes)
+        if abs(angle) <= noise:
+            self.notes += (
+                "a further level may lie at the continuum's edge, bound by less than rounding "
+                "can tell; it is not counted",
+            )
+            return int(turn) - 1
+        return int(turn - (angle < 0))
 
     # Finding ------------------------------------------------------------------------------------
 
-    def levels(self, first, last):
-        """Return energies, shape (count,), and brackets, shape (count, 2), of first <= n < last."""
-        size = last - first
-        if size == 0:
-            return np.empty(0), np.empty((0, 2))
-        bracket, counts = np.empty((size, 2)), np.empty((size, 2), np.int64)
-        low, high, below = self._interval(last)
-        sigma = float(self._sigma(np.array([high]))[0])
-        _search.isolate(
-            self.cells, self.left, self.right, self.home, sigma, self.resolution,
-            first, last, (float(low), float(high), 0, below), bracket, counts,
-        )  # fmt: skip
-        energy = bracket.mean(axis=1)
-        alone = counts[:, 1] == counts[:, 0] + 1
-        self._refine(np.arange(first, last), energy, bracket, np.flatnonzero(alone))
-        return energy, self._verified(np.arange(first, last), energy, bracket, alone)
+    def levels(self, first, last, bottom, top):
+        """Return energies, shape (count,), and brackets, shape (count, 2), of first <= n < last.
 
-    def _interval(self, last):
-        """An energy interval (low, high) with no level below it, and the count `below` high."""
-        if self.edge < np.inf:
-            return self.floor, self.edge, self.threshold[0]
-        step = self._box_height(last + 1)
+        Fewer where fewer are bound. `bottom` has at most `first` levels below it; `top` is raised
+        until `last` are below it, or to the edge.
+        """
         while True:
-            below = int(self.count(self.floor + step)[0])
-            if below >= last:
-                return self.floor, self.floor + step, below
-            step *= 2
-
-    def _refine(self, n, energy, bracket, todo):
-        """Close the brackets of the levels `todo`; choose meeting nodes anew where that stalls."""
-        stop = np.full(todo.size, self.home)
-        rounds = _FIRST_ROUNDS
-        while todo.size:
-            part = bracket[todo]
-            best = np.empty(todo.size)
-            sigma = self._sigma(part[:, 1])
-            done = _search.refine(
-                self.cells, self.left, self.right, self.edge, stop, sigma, self.resolution,
-                n[todo], part, best, rounds,
+            ready = self.reach(top)
+            below, sure, energy, bracket, done = _search.levels(
+                ready.cells, ready.left, ready.right, ready.home, bottom, top, self.edge, first,
+                last, self.resolution,
             )  # fmt: skip
-            energy[todo], bracket[todo] = best, part
-            todo = todo[~done]
-            rounds = _MORE_ROUNDS
-            if todo.size:
-                stop = self._homes(bracket[todo].mean(axis=1))
+            if not sure and self.threshold < below:
+                last = min(last, self.threshold)
+                below, energy, bracket = last, energy[: last - first], bracket[: last - first]
+                done = done[: last - first]
+            if below >= last or top == self.edge:
+                break
+            top = min(self.edge, self.floor + 2 * (top - self.floor))
+        open_ = np.flatnonzero(done == 0)
+        if open_.size:
+            self._settle(first, open_, energy, bracket, ready)
+        return energy, bracket
 
-    def _homes(self, energies):
+    def _settle(self, first, todo, energy, bracket, ready):
+        """Close brackets that `levels` left wide, from where each state lives."""
+        homes = ready.homes(energy[todo])
+        failed = []
+        for i, home in zip(todo, homes, strict=True):
+            if not _search.settle(
+                ready.cells, ready.left, ready.right, home, self.edge, first + i,
+                self.resolution, energy[i : i + 1], bracket[i : i + 1],
+            ):  # fmt: skip
+                failed.append(i)
+        failed = np.array(failed, int)
+        half = np.maximum(self.resolution * (energy - self.floor), 4 * np.spacing(np.abs(energy)))
+        while failed.size:
+            low = np.maximum(energy[failed] - half[failed], self.floor)
+            high = np.minimum(energy[failed] + half[failed], self.edge)
+            bracket[failed] = np.column_stack([low, high])
+            n = first + failed
+            failed = failed[(self.count(low) > n) | (self.count(high) <= n)]
+            half[failed] *= 4
+
+
+class Ready:
+    """The cells of a search, short enough for energies up to `top`.
+
+    `whole`: with all that lies so deep in barriers that only wave functions ask for it.
+    """
+
+    def __init__(self, search, top, whole):
+        self.search, self.top = search, top
+        span = top - search.floor
+        scale = 2.0 ** math.ceil(math.log2(span)) if span > 0 else 1.0
+        self.cells, self.parts, self.left, self.right, self.home = _plan.prepare(
+            *search.given, *search.edges, search.floor, top, scale, whole
+        )
+        if self.parts.shape[0] > _plan.MOST_PARTS:
+            raise InputError(
+                "this profile is over a million wavelengths or decay lengths long, which is more "
+                "than can be solved. Is the unit right?"
+            )
+
+    @cached_property
+    def x(self):
+        """The nodes between the cells, shape (cells + 1,)."""
+        if not self.parts.size:
+            return self.search.profile.x
+        owner = self.parts[:, 0].astype(int)
+        start, width = self.search.profile.x[owner], self.search.natural.width[owner]
+        nodes = start + self.parts[:, 1] * width
+        return np.append(nodes, start[-1] + (self.parts[-1, 1] + self.parts[-1, 2]) * width[-1])
+
+    def angles(self, energies):
+        """turn and angle of `_search.angles` for some energies, at `home`."""
+        turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
+        _search.angles(self.cells, self.left, self.right, self.home, energies, turn, angle)
+        return turn, angle
+
+    def homes(self, energies):
         """The node where the state nearest to each energy is largest."""
-        nodes = self.cells[0].size + 1
-        stride = max(1, -(-nodes // _SAMPLES))
+        stride = max(1, -(-(self.cells[0].size + 1) // _SAMPLES))
         out = np.empty(energies.size, np.int64)
         for low in range(0, energies.size, _kernels.LANES):
             part = energies[low : low + _kernels.LANES]
-            size = sum(self._size(part, backward, stride) for backward in (False, True))
+            size = 0.0
+            for backward in (False, True):
+                trail = self.trail(part, backward, stride)
+                size = size + np.log(np.hypot(self._sigma(part) * trail[:, 0], trail[:, 1]))
+                size += trail[:, 2]
             out[low : low + part.size] = stride * np.argmax(size, axis=0)
         return out
 
-    def _size(self, energies, backward, stride):
-        """Log of the amplitude of one solution at every `stride`-th node: (samples, lanes)."""
-        trail = self.trail(energies, backward, stride)
-        sigma = self._sigma(energies)
-        return np.log(np.hypot(sigma * trail[:, 0], trail[:, 1])) + trail[:, 2]
+    def _sigma(self, energies):
+        """A scale of phi / psi."""
+        height = np.maximum(energies - self.search.floor, np.finfo(float).tiny)
+        return np.sqrt(2 * height / self.cells[2][self.home, 0])
 
     def trail(self, energies, backward, stride=1):
         """psi, phi and the log of their factor at every `stride`-th node: (samples, 3, lanes)."""
         lanes, cells = energies.size, self.cells[0].size
         trail = np.empty((cells // stride + 1, 3, lanes))
-        stop = np.full(lanes, 0 if backward else cells)
         psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
-        edge = self.right if backward else self.left
+        edge, stop = (self.right, 0) if backward else (self.left, cells)
         _kernels.sweep(self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         return trail
-
-    def _verified(self, n, energy, bracket, alone):
-        """Brackets a few rounding errors wide, counted again at both ends; wider where that fails.
-
-        Levels that counting could not part keep the interval that holds all of them.
-        """
-        height = np.maximum(energy - self.floor, 0.0)
-        half = self.resolution[0] * height + 4 * np.spacing(np.abs(energy))
-        half = np.where(alone, half, half + 0.5 * (bracket[:, 1] - bracket[:, 0]))
-        out = np.empty((energy.size, 2))
-        todo = np.arange(energy.size)
-        while todo.size:
-            low = np.maximum(energy[todo] - half[todo], self.floor)
-            high = np.minimum(energy[todo] + half[todo], self.edge)
-            out[todo] = np.column_stack([low, high])
-            good = (self.count(low) <= n[todo]) & (self.count(high) > n[todo])
-            todo = todo[~good]
-            half[todo] *= 4
-        return out
 
 
 @dataclass(eq=False)
@@ -320,7 +298,13 @@ class States:
 
     search: Search
     energy: np.ndarray
-    stop: np.ndarray | None = None
+    stop: int | None = None
+    given: Ready | None = None
+
+    @cached_property
+    def ready(self):
+        """All cells, for the energies of these states."""
+        return self.given or Ready(self.search, self.search.ready.top, True)
 
     @cached_property
     def _nodes(self):
@@ -329,16 +313,15 @@ class States:
         The logarithm is kept apart: behind a barrier of a thousand decay lengths psi is no double,
         but grows into one inside the next cell.
         """
-        search, count = self.search, self.energy.size
-        search.make_whole()
-        nodes = search.x.size
+        ready, count = self.ready, self.energy.size
+        nodes = ready.x.size
         wave = np.empty((3, count, nodes))
-        stop = (search._homes(self._at) if self.stop is None else self.stop).copy()
+        stop = ready.homes(self._at) if self.stop is None else np.full(count, self.stop)
         lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
         for low in range(0, count, lanes):
             part = slice(low, min(low + lanes, count))
-            left = search.trail(self._at[part], False)
-            right = search.trail(self._at[part], True)
+            left = ready.trail(self._at[part], False)
+            right = ready.trail(self._at[part], True)
             right[:, 1] *= -1  # the mirror image's phi
             for i, level in enumerate(range(part.start, part.stop)):
                 halves = left[:, :, i], right[:, :, i]
@@ -374,24 +357,19 @@ class States:
                 at[group] = max(low - away, self.search.floor)
         return at
 
-    @property
-    def psi(self):
-        """psi at the nodes, shape (count, nodes)."""
-        return self._nodes[0] * np.exp(self._nodes[2])
-
-    @property
-    def phi(self):
-        """phi = psi'/m at the nodes, shape (count, nodes)."""
-        return self._nodes[1] * np.exp(self._nodes[2])
+    def at_nodes(self):
+        """psi and phi = psi'/m at the nodes, shape (count, nodes) each."""
+        psi, phi, log, _ = self._nodes
+        return psi * np.exp(log), phi * np.exp(log)
 
     def sample(self, x):
         """psi and phi at x inside the cells, each of shape (count, points); not normalised."""
-        mesh = self.search.x
+        mesh = self.ready.x
         cell = np.clip(np.searchsorted(mesh, x, side="right") - 1, 0, mesh.size - 2)
         fraction = np.clip((x - mesh[cell]) / (mesh[cell + 1] - mesh[cell]), 0.0, 1.0)
         psi, phi = np.empty((self.energy.size, x.size)), np.empty((self.energy.size, x.size))
         *start, stop = self._nodes
-        _kernels.along(self.search.cells, self._at, *start, cell, fraction, stop, psi, phi)
+        _kernels.along(self.ready.cells, self._at, *start, cell, fraction, stop, psi, phi)
         return psi, phi
 
 
@@ -431,17 +409,3 @@ def _edge(edge):
     """An Edge as the kernels read it: is open, V, and the mass as mass + E * mass_per_energy."""
     per_energy = edge.mass * edge.alpha
     return np.array([edge.kind == "open", edge.V, edge.mass - per_energy * edge.V, per_energy])
-
-
-def _check_length(natural, low, high):
-    """Refuse profiles of so many wavelengths that the parts of their cells would fill memory."""
-    curved = (natural.V[:, 1:] != 0).any(axis=1)
-    reach = np.abs(natural.V[:, 0] - low) + np.abs(natural.V[:, 1:]).sum(axis=1)
-    reach = reach + max(high - low, 0.0)  # an open edge may lie below all cells
-    mass = natural.mass[:, 0] + low * natural.mass_per_energy[:, :1].sum(axis=1)
-    lengths = (np.sqrt(2 * np.abs(mass) * reach) * natural.width)[curved].sum()
-    if lengths > _MOST_LENGTHS:
-        raise InputError(
-            f"this profile is some {lengths:.0e} wavelengths or decay lengths long; at most "
-            f"{_MOST_LENGTHS:.0e} can be solved. Is the unit right?"
-        )
