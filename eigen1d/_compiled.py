@@ -15,10 +15,8 @@ from numba import types
 LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
 LARGEST = 2.25  # of 2 m |V - E| h^2 in a short cell; < pi^2: at most one zero of psi in it
 EPS = np.finfo(np.float64).eps
-# Most terms of a power series in x: computed again in each sweep, where V is straight and the mass
-# constant or straight too, or once for all energies. FLAT and TOO_LONG stand in the place of a
-# number of terms for a cell that is crossed in closed form, and for one that must be cut first.
-STRAIGHT_TERMS, GRADED_TERMS, SERIES_TERMS = 8, 10, 22
+SERIES_TERMS = 22  # most terms of a power series in x
+# In the place of a number of terms: a cell that is crossed in closed form, one that must be cut.
 FLAT, TOO_LONG = 0, 255
 
 

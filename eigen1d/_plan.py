@@ -16,11 +16,9 @@ from ._compiled import (
     EPS,
     FLAT,
     FLOATS,
-    GRADED_TERMS,
     INTEGERS,
     LARGEST,
     SERIES_TERMS,
-    STRAIGHT_TERMS,
     TOO_LONG,
     given,
     kernel,
@@ -57,6 +55,15 @@ def _sum(c):
 
 
 @kernel
+def _filled(c):
+    """How many numbers come before the zeros at the end."""
+    size = c.size
+    while size > 0 and c[size - 1] == 0.0:
+        size -= 1
+    return size
+
+
+@kernel
 def _series_terms(work, most):
     """Terms of psi' = (m + q) phi, phi' = w psi by a majorant of both series.
 
@@ -71,15 +78,16 @@ def _series_terms(work, most):
     zeta = np.sqrt(m_total * w_total)
     eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
     majorant[0, 0], majorant[1, 0] = 1.0, eta
-    reach = max(w.size, m.size, q.size)
+    w_size, m_size, q_size = _filled(w), _filled(m), _filled(q)
+    reach = max(w_size, m_size, q_size)
     quiet = 0
     for k in range(most + reach):
         psi, phi = 0.0, 0.0
-        for j in range(min(k + 1, m.size)):
+        for j in range(min(k + 1, m_size)):
             psi += m[j] * majorant[1, k - j]
-        for j in range(min(k + 1, q.size)):
+        for j in range(min(k + 1, q_size)):
             psi += q[j] * majorant[1, k - j]
-        for j in range(min(k + 1, w.size)):
+        for j in range(min(k + 1, w_size)):
             phi += w[j] * majorant[0, k - j]
         majorant[0, k + 1], majorant[1, k + 1] = psi / (k + 1), phi / (k + 1)
         small = psi <= _LOST * zeta * (k + 1) and phi <= _LOST * zeta * eta * (k + 1)
@@ -126,16 +134,30 @@ def _is_flat(c):
 
 
 @kernel
-def _terms(V, mass, per_energy, h, low, high, work):
+def _terms(V, mass, per_energy, h, low, high, most, work):
     """How many terms one cell needs; FLAT: closed form; TOO_LONG: to be cut."""
     _clear(work)
     _sizes(V, mass, per_energy, h, low, high, work)
-    # A power of u for each term: so many fit.
-    most = SERIES_TERMS if per_energy.size == 0 else SERIES_TERMS // 2
     needed = _series_terms(work, most)
     if needed == TOO_LONG and _is_flat(V) and _is_flat(mass) and _is_flat(per_energy):
         return FLAT
     return needed
+
+
+@kernel
+def _first_share(V, mass, per_energy, h, low, high):
+    """The part of a cell that its parts surely do not exceed, a power of two.
+
+    max(|V - low|, |V - high|) is at least half of high - low, wherever V lies.
+    """
+    share = 1.0
+    if not (_is_flat(V) and _is_flat(mass) and _is_flat(per_energy)):
+        m = 2.0 * mass[0]
+        for c in mass:
+            m -= abs(c)
+        while share > _FINEST and m * (h * share) ** 2 * (high - low) > LARGEST:
+            share *= 0.5
+    return share
 
 
 @kernel
@@ -159,7 +181,7 @@ def _plan(width, V, mass, per_energy, low, high, terms):
         _clear(work)
         for cell in range(first, last):
             _sizes(V[cell], mass[cell], per_energy[cell], width[cell], low, high, work)
-        shared = _series_terms(work, GRADED_TERMS)
+        shared = _series_terms(work, SERIES_TERMS)
         if shared == TOO_LONG:
             return False
         for cell in range(first, last):
@@ -176,6 +198,10 @@ def _part(c, offset, ratio, pairs, out):
     than a bracket is wide (test_shooting.py, "sextic-corner").
     """
     size = c.size
+    if ratio == 1.0:
+        for j in range(size):
+            out[j] = c[j]
+        return
     for j in range(size):
         pairs[0, j], pairs[1, j] = c[j], 0.0
     for k in range(size - 1):
@@ -229,10 +255,16 @@ def _cut(width, V, mass, per_energy, low, high):
     parts = np.empty((2 * width.size + 64, columns))
     starts, shares = np.empty(64), np.empty(64)
     count = 0
+    # A power of u for each term where alpha brings one: so many fit into a propagator.
+    full = per_energy.shape[1] == 0 or shape(V, mass, per_energy) < 2
+    most = SERIES_TERMS if full else SERIES_TERMS // 2
     for cell in range(width.size):
-        starts[0], shares[0] = 0.0, 1.0
-        waiting = 1
-        while waiting > 0:
+        largest = _first_share(V[cell], mass[cell], per_energy[cell], width[cell], low, high)
+        begin, waiting = 0.0, 0
+        while waiting > 0 or begin < 1.0:
+            if waiting == 0:
+                starts[0], shares[0] = begin, largest
+                begin, waiting = begin + largest, 1
             waiting -= 1
             start, share = starts[waiting], shares[waiting]
             if count == parts.shape[0]:
@@ -246,7 +278,7 @@ def _cut(width, V, mass, per_energy, low, high):
             _part(per_energy[cell], start, share, pairs, q)
             _trim(v, max(abs(v[0] - low), abs(v[0] - high)))
             _trim(m, m[0])
-            needed = _terms(v, m, q, width[cell] * share, low, high, work)
+            needed = _terms(v, m, q, width[cell] * share, low, high, most, work)
             if needed == TOO_LONG and share > _FINEST:
                 starts[waiting], shares[waiting] = start + 0.5 * share, 0.5 * share
                 starts[waiting + 1], shares[waiting + 1] = start, 0.5 * share
@@ -271,31 +303,51 @@ def _decay(width, V, mass, cell, top):
     return np.sqrt(2.0 * max(m_low, 0.0) * (V_low - top)) * width[cell]
 
 
-@kernel
-def _matter(width, V, mass, top):
-    """(first, last): the cells beyond which no energy up to `top` notices where the profile ends.
+@kernel(signature=EDGE(given(2), given(2), types.int64, types.boolean))
+def _edge_inside(V, mass, cell, at_end):
+    """An open edge at one end of a cell, where the barrier beyond is cut off."""
+    edge = np.zeros(4)
+    edge[0] = 1.0
+    for j in range(V.shape[1] if at_end else 1):
+        edge[1] += V[cell, j]
+    for j in range(mass.shape[1] if at_end else 1):
+        edge[2] += mass[cell, j]
+    return edge
+
+
+@kernel(
+    signature=types.Tuple((types.int64, types.int64, EDGE, EDGE))(
+        given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.boolean
+    )
+)
+def _kept(width, V, mass, per_energy, left, right, top, whole):
+    """(first, last, left, right): the cells without which an energy up to `top` would change.
 
     Any solution that does not fall outwards is, _FAR decay lengths further in, the one that is
     right at the edge.
     """
-    count = width.size
-    first = 0
-    while first < count and _decay(width, V, mass, first, top) > 0.0:
+    first, last = 0, width.size
+    if whole or per_energy.shape[1] > 0:
+        return first, last, left, right
+    while first < last and _decay(width, V, mass, first, top) > 0.0:
         first += 1
-    if first == count:
-        return 0, count
-    last = count
-    while _decay(width, V, mass, last - 1, top) > 0.0:
-        last -= 1
+    if first == last:
+        return 0, last, left, right
     far = 0.0
     while first > 0 and far < _FAR:
         first -= 1
         far += _decay(width, V, mass, first, top)
+    if first > 0:
+        left = _edge_inside(V, mass, first, False)
+    while _decay(width, V, mass, last - 1, top) > 0.0:
+        last -= 1
     far = 0.0
-    while last < count and far < _FAR:
+    while last < width.size and far < _FAR:
         far += _decay(width, V, mass, last, top)
         last += 1
-    return first, last
+    if last < width.size:
+        right = _edge_inside(V, mass, last - 1, True)
+    return first, last, left, right
 
 
 @kernel(signature=types.int64(given(2)))
@@ -311,29 +363,18 @@ def _deepest(V):
     return home
 
 
-@kernel(signature=EDGE(EDGE))
-def _read(edge):
-    return edge
-
-
 @kernel(signature=CELLS(given(1), given(2), given(2), given(2), COUNTS, types.float64, types.float64))
 def _ready(width, V, mass, per_energy, terms, floor, scale):
     """Return short cells as `CELLS` says, propagators where a sweep does not do without."""
-    kind = shape(V, mass, per_energy)
-    ready = STRAIGHT_TERMS if kind == 0 else (GRADED_TERMS if kind == 1 else 0)
-    total = 0
-    for cell in range(terms.size):
-        if terms[cell] > ready:
-            total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
-    table = np.empty(total)
-    at = np.empty(terms.size if total > 0 else 0, np.int64)
+    curved = shape(V, mass, per_energy) == 2
+    at = np.empty(terms.size if curved else 0, np.int64)
     total = 0
     for cell in range(at.size):
-        at[cell] = -1
-        if terms[cell] > ready:
-            at[cell] = total
+        at[cell] = total if terms[cell] != FLAT else -1
+        if terms[cell] != FLAT:
             total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
-    if total > 0:
+    table = np.empty(total)
+    if curved:
         tabulate(width, V, mass, per_energy, terms, at, floor, scale, table)
     span = np.empty(2)
     span[0], span[1] = floor, scale
@@ -375,28 +416,23 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
         The deepest cell.
     """
     terms = np.empty(width.size, np.uint8)
-    short = _plan(width, V, mass, per_energy, floor, top, terms)
-    if short and shape(V, mass, per_energy) < 2:
-        cells = _ready(width, V, mass, per_energy, terms, floor, scale)
-        return cells, np.empty((0, _HEAD)), left, right, _deepest(V)
+    if shape(V, mass, per_energy) < 2 and _plan(width, V, mass, per_energy, floor, top, terms):
+        first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)
+        cells = _ready(
+            width[first:last], V[first:last], mass[first:last], per_energy[first:last],
+            terms[first:last], floor, scale,
+        )  # fmt: skip
+        return cells, np.empty((0, _HEAD)), left, right, _deepest(cells[1])
     parts = _cut(width, V, mass, per_energy, floor, top)
     if parts.shape[0] > MOST_PARTS:
         nothing = np.empty(0, np.uint8)
         cells = _ready(width[:0], V[:0], mass[:0], per_energy[:0], nothing, floor, scale)
         return cells, parts, left, right, 0
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
-    first, last = 0, parts.shape[0]
-    if not whole and per_energy.shape[1] == 0:
-        first, last = _matter(parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], top)
-    inside, inside_right = np.zeros(4), np.zeros(4)
-    if first > 0:
-        inside[0], inside[1], inside[2] = 1.0, parts[first, _HEAD], parts[first, V_end]
-        left = _read(inside)
-    if last < parts.shape[0]:
-        row = parts[last - 1]
-        inside_right[0], inside_right[1] = 1.0, _sum(row[_HEAD:V_end])
-        inside_right[2] = _sum(row[V_end:m_end])
-        right = _read(inside_right)
+    first, last, left, right = _kept(
+        parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], parts[:, m_end:], left, right,
+        top, whole,
+    )  # fmt: skip
     parts = parts[first:last]
     terms = np.empty(parts.shape[0], np.uint8)
     for i in range(terms.size):
@@ -405,4 +441,4 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
         parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], parts[:, m_end:],
         terms, floor, scale,
     )  # fmt: skip
-    return cells, parts, left, right, _deepest(parts[:, _HEAD:V_end])
+    return cells, parts, left, right, _deepest(cells[1])

@@ -14,7 +14,7 @@ from numba import types
 
 from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, kernel
 
-_ORDERS = (6, 12)  # powers of u: two kinds of cells
+_ORDERS = (6, 8, 12)  # powers of u: three kinds of cells
 
 
 @kernel
@@ -24,7 +24,9 @@ def orders(terms, with_alpha):
     phi' = 2 (V - E) psi brings one power for every two terms, a mass that depends on E one more.
     """
     reached = terms + 1 if with_alpha else (terms + 1) // 2 + 1
-    return _ORDERS[0] if reached <= _ORDERS[0] else _ORDERS[1]
+    if reached <= _ORDERS[0]:
+        return _ORDERS[0]
+    return _ORDERS[1] if reached <= _ORDERS[1] else _ORDERS[2]
 
 
 def _step(powers):
@@ -58,17 +60,26 @@ def _step(powers):
     return step
 
 
-_few, _many = _step(_ORDERS[0]), _step(_ORDERS[1])
+_few, _some, _many = _step(_ORDERS[0]), _step(_ORDERS[1]), _step(_ORDERS[2])
 
 
 @kernel
 def propagated(state, table, start, backward, powers):
     """Cross a cell whose propagator begins at `start`; `state` as for `straight`."""
     first, last = (3, 0) if backward else (0, 3)
+    cell = table[start : start + 4 * powers]
     if powers == _ORDERS[0]:
-        _few(state, table[start : start + 4 * _ORDERS[0]], first, last)
+        _few(state, cell, first, last)
+    elif powers == _ORDERS[1]:
+        _some(state, cell, first, last)
     else:
-        _many(state, table[start : start + 4 * _ORDERS[1]], first, last)
+        _many(state, cell, first, last)
+
+
+@kernel(fused=True)
+def _set(out, row, c, i, series, k):
+    for lane in range(LANES):
+        out[row, lane] = c[i, lane] * series[k, lane]
 
 
 @kernel(fused=True)
@@ -77,7 +88,7 @@ def _add(out, row, c, i, series, k):
         out[row, lane] += c[i, lane] * series[k, lane]
 
 
-@kernel(fused=True)
+@kernel
 def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
     """Continue both series from order 0, in rows: power i of u at order k is row k powers + i.
 
@@ -89,18 +100,17 @@ def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
         share = 1.0 / (k + 1.0)
         reach = k + 2 if with_alpha else (k + 2) // 2 + 1
         for i in range(min(reach, powers)):
-            row = (k + 1) * powers + i
-            for lane in range(LANES):
-                psi[row, lane] = 0.0
-                phi[row, lane] = 0.0
-            for j in range(min(k + 1, m_size)):
-                _add(psi, row, m, j, phi, (k - j) * powers + i)
-            for j in range(min(k + 1, w_size)):
-                _add(phi, row, w, j, psi, (k - j) * powers + i)
+            row, before = (k + 1) * powers + i, k * powers + i
+            _set(psi, row, m, 0, phi, before)
+            for j in range(1, min(k + 1, m_size)):
+                _add(psi, row, m, j, phi, before - j * powers)
+            _set(phi, row, w, 0, psi, before)
+            for j in range(1, min(k + 1, w_size)):
+                _add(phi, row, w, j, psi, before - j * powers)
             if i > 0:
                 for j in range(min(k + 1, q_size)):
-                    _add(psi, row, q, j, phi, (k - j) * powers + i - 1)
-                _add(phi, row, w, w_size, psi, k * powers + i - 1)
+                    _add(psi, row, q, j, phi, before - j * powers - 1)
+                _add(phi, row, w, w_size, psi, before - 1)
             for lane in range(LANES):
                 psi[row, lane] *= share
                 phi[row, lane] *= share

@@ -16,6 +16,7 @@ from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, given, kernel
 from ._kernels import is_positive, sweep
 
 _SAMPLES = 128  # places at which V is looked at for a first guess
+_NODES = 4096  # at which the place of a state is looked for
 _STEPS = 24  # energies at which the phase is known for it
 _NEAREST = 7  # samples that one interpolation uses at most
 # A guess is sure enough for two counts around it if its error is below this part of their distance.
@@ -316,9 +317,9 @@ def _converge(
     samples, turn, angle, points, new_turn, new_angle = room
     floor, size = cells[7][0], energy.size
     target, place = np.empty(size), np.empty(size, np.int64)
-    width, missed = np.empty(size), np.zeros(size, np.bool_)
+    width, before, missed = np.empty(size), np.empty(size), np.zeros(size, np.bool_)
     for i in range(size):
-        width[i] = np.inf
+        width[i], before[i] = np.inf, np.inf
     for _ in range(rounds):
         active = 0
         for i in range(size):
@@ -347,10 +348,10 @@ def _converge(
             elif k != previous:
                 inside = _count(turn[k + 1], angle[k + 1]) - _count(turn[k], angle[k])
                 several = each
-                if inside > 1 or high - low > 0.5 * width[i]:
+                if inside > 1 or (high - low > 0.5 * width[i] and error > 0.1 * before[i]):
                     several = max(each, min(inside + 2, LANES - 1))
                 new += _cuts(points[new:], low, high, guess, error, several)
-            width[i], previous = high - low, k
+            width[i], before[i], previous = high - low, error, k
         angles(cells, left, right, stop, points[:new], new_turn, new_angle)
         for i in range(size):
             if place[i] >= 0:
@@ -376,6 +377,65 @@ def _room(used, levels, rounds):
         np.empty(total), np.empty(total, np.int64), np.empty(total),
         np.empty(most), np.empty(most, np.int64), np.empty(most),
     )  # fmt: skip
+
+
+@kernel(entry=True, signature=INTEGERS(CELLS, EDGE, EDGE, FLOATS))
+def homes(cells, left, right, energies):
+    """The node where the state nearest to each energy is largest.
+
+    The product of both solutions is the Green function on the diagonal, which near a level follows
+    its psi^2. Joined there, both run in the direction in which they grow.
+    """
+    count = cells[0].size
+    stride = -(-(count + 1) // _NODES)
+    out = np.empty(energies.size, np.int64)
+    psi, phi, zeros = np.empty(LANES), np.empty(LANES), np.empty(LANES, np.int64)
+    for first in range(0, energies.size, LANES):
+        lanes = min(LANES, energies.size - first)
+        part = energies[first : first + lanes]
+        trail = np.zeros((count // stride + 1, 3, lanes))
+        trail_r = np.zeros((count // stride + 1, 3, lanes))
+        sweep(cells, left, False, part, count, psi, phi, zeros, trail, stride)
+        sweep(cells, right, True, part, 0, psi, phi, zeros, trail_r, stride)
+        for lane in range(lanes):
+            sigma = np.sqrt(2.0 * max(part[lane] - cells[7][0], _TINY) / cells[2][0, 0])
+            largest = -np.inf
+            for i in range(trail.shape[0]):
+                size = np.log(np.hypot(sigma * trail[i, 0, lane], trail[i, 1, lane]))
+                size += np.log(np.hypot(sigma * trail_r[i, 0, lane], trail_r[i, 1, lane]))
+                size += trail[i, 2, lane] + trail_r[i, 2, lane]
+                if size > largest:
+                    largest, out[first + lane] = size, i * stride
+    return out
+
+
+@kernel
+def _settle(cells, left, right, edge, first, resolution, energy, bracket, done):
+    """Close brackets that are still wide, one by one, with solutions that meet where states live."""
+    todo = np.empty(done.size)
+    count = 0
+    for i in range(done.size):
+        if done[i] == 0:
+            todo[count] = energy[i]
+            count += 1
+    if count == 0:
+        return
+    stops = homes(cells, left, right, todo[:count])
+    room = _room(LANES, 1, _MORE_ROUNDS)
+    samples, turn, angle = room[:3]
+    count = 0
+    for i in range(done.size):
+        if done[i] != 0:
+            continue
+        for k in range(LANES):
+            samples[k] = bracket[i, 0] + (bracket[i, 1] - bracket[i, 0]) * (k / (LANES - 1.0))
+        samples[LANES - 1] = bracket[i, 1]
+        angles(cells, left, right, stops[count], samples[:LANES], turn, angle)
+        _converge(
+            cells, left, right, stops[count], edge, first + i, resolution, room, LANES,
+            energy[i : i + 1], bracket[i : i + 1], done[i : i + 1], _MORE_ROUNDS,
+        )  # fmt: skip
+        count += 1
 
 
 @kernel(
@@ -438,40 +498,5 @@ def levels(cells, left, right, stop, bottom, top, edge, first, last, resolution)
             cells, left, right, stop, edge, first, resolution, room, size + 1, energy, bracket,
             done, _ROUNDS,
         )  # fmt: skip
+        _settle(cells, left, right, edge, first, resolution, energy, bracket, done)
     return below, sure, energy, bracket, done
-
-
-@kernel(
-    entry=True,
-    signature=types.int64(
-        CELLS, EDGE, EDGE, types.int64, types.float64, types.int64, types.float64, FLOATS,
-        types.float64[:, ::1],
-    ),
-)  # fmt: skip
-def settle(cells, left, right, stop, edge, n, resolution, energy, bracket):
-    """Close the bracket of one level that `levels` left wide, with solutions that meet elsewhere.
-
-    Parameters
-    ----------
-    stop : int
-        A node where the state is large.
-    energy, bracket : ndarray, shapes (1,) and (1, 2)
-        Of level n; overwritten.
-
-    Returns
-    -------
-    int
-        As `done` of `levels`.
-    """
-    room = _room(LANES, 1, _MORE_ROUNDS)
-    samples, turn, angle = room[:3]
-    for i in range(LANES):
-        samples[i] = bracket[0, 0] + (bracket[0, 1] - bracket[0, 0]) * (i / (LANES - 1.0))
-    samples[LANES - 1] = bracket[0, 1]
-    angles(cells, left, right, stop, samples[:LANES], turn, angle)
-    done = np.zeros(1, np.int64)
-    _converge(
-        cells, left, right, stop, edge, n, resolution, room, LANES, energy, bracket, done,
-        _MORE_ROUNDS,
-    )  # fmt: skip
-    return done[0]

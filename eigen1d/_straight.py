@@ -6,7 +6,7 @@ mass that is a straight line (in t, and at each energy), psi' = (m_0 + m_1 t) ph
 phi' = (w_0 + w_1 t) psi give both series side by side.
 """
 
-from ._compiled import GRADED_TERMS, LANES, STRAIGHT_TERMS, kernel
+from ._compiled import LANES, SERIES_TERMS, kernel
 
 
 def _straight_step(terms):
@@ -48,7 +48,8 @@ def _straight_step(terms):
     return step
 
 
-_straight_3, _straight_8 = _straight_step(3), _straight_step(STRAIGHT_TERMS)
+_straight_3, _straight_8 = _straight_step(3), _straight_step(8)
+_straight_13, _straight_22 = _straight_step(13), _straight_step(SERIES_TERMS)
 
 
 @kernel
@@ -61,8 +62,12 @@ def straight(state, v, slope, mass, h, terms):
     s = scale * slope
     if terms <= 3:
         _straight_3(state, v, scale, s, mass * h)
-    else:
+    elif terms <= 8:
         _straight_8(state, v, scale, s, mass * h)
+    elif terms <= 13:
+        _straight_13(state, v, scale, s, mass * h)
+    else:
+        _straight_22(state, v, scale, s, mass * h)
 
 
 def _graded_step(terms):
@@ -102,7 +107,8 @@ def _graded_step(terms):
     return step
 
 
-_graded_6, _graded_10 = _graded_step(6), _graded_step(GRADED_TERMS)
+_graded_6, _graded_12 = _graded_step(6), _graded_step(12)
+_graded_22 = _graded_step(SERIES_TERMS)
 
 
 @kernel
@@ -110,5 +116,7 @@ def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, t
     """Cross a cell of straight V and mass; `state` as for `straight`."""
     if terms <= 6:
         _graded_6(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+    elif terms <= 12:
+        _graded_12(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
     else:
-        _graded_10(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+        _graded_22(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)

@@ -33,7 +33,6 @@ EPS = np.finfo(float).eps
 # expectation values, together at most a few heights. 16 leaves room for a handful of operations a
 # cell; the worst error seen against the reference levels is quoted in tests/test_shooting.py.
 ROUNDING = 16 * EPS
-_SAMPLES = 4096  # nodes at which the place of a state is looked for
 # Levels of a group differ by less than _SAME of their height, some dozen roundings. Their waves are
 # computed _AWAY below: far against the group's width, near against other levels.
 _SAME, _AWAY = 1e-14, 1e-12
@@ -202,22 +201,12 @@ class Search:
             if below >= last or top == self.edge:
                 break
             top = min(self.edge, self.floor + 2 * (top - self.floor))
-        open_ = np.flatnonzero(done == 0)
-        if open_.size:
-            self._settle(first, open_, energy, bracket, ready)
+        if not done.all():
+            self._widen(first, np.flatnonzero(done == 0), energy, bracket)
         return energy, bracket
 
-    def _settle(self, first, todo, energy, bracket, ready):
-        """Close brackets that `levels` left wide, from where each state lives."""
-        homes = ready.homes(energy[todo])
-        failed = []
-        for i, home in zip(todo, homes, strict=True):
-            if not _search.settle(
-                ready.cells, ready.left, ready.right, home, self.edge, first + i,
-                self.resolution, energy[i : i + 1], bracket[i : i + 1],
-            ):  # fmt: skip
-                failed.append(i)
-        failed = np.array(failed, int)
+    def _widen(self, first, failed, energy, bracket):
+        """Widen brackets around energies that no method closes, until counts agree."""
         half = np.maximum(self.resolution * (energy - self.floor), 4 * np.spacing(np.abs(energy)))
         while failed.size:
             low = np.maximum(energy[failed] - half[failed], self.floor)
@@ -263,25 +252,6 @@ class Ready:
         _search.angles(self.cells, self.left, self.right, self.home, energies, turn, angle)
         return turn, angle
 
-    def homes(self, energies):
-        """The node where the state nearest to each energy is largest."""
-        stride = max(1, -(-(self.cells[0].size + 1) // _SAMPLES))
-        out = np.empty(energies.size, np.int64)
-        for low in range(0, energies.size, _kernels.LANES):
-            part = energies[low : low + _kernels.LANES]
-            size = 0.0
-            for backward in (False, True):
-                trail = self.trail(part, backward, stride)
-                size = size + np.log(np.hypot(self._sigma(part) * trail[:, 0], trail[:, 1]))
-                size += trail[:, 2]
-            out[low : low + part.size] = stride * np.argmax(size, axis=0)
-        return out
-
-    def _sigma(self, energies):
-        """A scale of phi / psi."""
-        height = np.maximum(energies - self.search.floor, np.finfo(float).tiny)
-        return np.sqrt(2 * height / self.cells[2][self.home, 0])
-
     def trail(self, energies, backward, stride=1):
         """psi, phi and the log of their factor at every `stride`-th node: (samples, 3, lanes)."""
         lanes, cells = energies.size, self.cells[0].size
@@ -316,7 +286,7 @@ class States:
         ready, count = self.ready, self.energy.size
         nodes = ready.x.size
         wave = np.empty((3, count, nodes))
-        stop = ready.homes(self._at) if self.stop is None else np.full(count, self.stop)
+        stop = _search.homes(ready.cells, ready.left, ready.right, self._at) if self.stop is None else np.full(count, self.stop)
         lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
         for low in range(0, count, lanes):
             part = slice(low, min(low + lanes, count))
