@@ -35,6 +35,14 @@ def number(name, value):
     return value
 
 
+def positive(name, value):
+    """One finite number above zero."""
+    value = number(name, value)
+    if value <= 0:
+        raise InputError(f"{name} must be positive; found {value:g}")
+    return value
+
+
 def per_row(name, values, count):
     """One number for all rows (as a view with no memory of its own), or one a row."""
     values = numbers(name, values)

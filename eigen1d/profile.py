@@ -9,7 +9,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _cells, _checks, _interpolation
+from . import _cells, _checks, _functions, _interpolation
 from ._checks import frozen
 from ._parts import Edge, Natural, Rows, edges
 from .errors import InputError
@@ -246,7 +246,7 @@ class Profile:
             x = np.union1d(x, mass.x[(mass.x > x[0]) & (mass.x < x[-1])])
             weight = _cells.from_ppoly(mass, x)
         else:
-            weight = np.broadcast_to(_checks.number("mass", mass), (x.size - 1, 1))
+            weight = _cells.repeated(_checks.positive("mass", mass), (x.size - 1, 1))
         V_cells = _cells.from_ppoly(V, x)
         if not (np.isfinite(V_cells).all() and np.isfinite(weight).all()):
             raise InputError("V and mass must be finite")
@@ -307,17 +307,17 @@ class Profile:
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
         if not 1e-15 <= _checks.number("tolerance", tolerance) < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
-        one = None if callable(mass) else _checks.number("mass", mass)
-        weight = _checks.sampler("mass", mass if one is None else lambda x: one, positive=True)
+        if callable(mass):
+            mass = _checks.sampler("mass", mass, positive=True)
+        else:
+            mass = _checks.positive("mass", mass)
         ends = np.concatenate([[low], breaks, [high]])
         try:
-            x, fields = _cells.from_callable(
-                _checks.sampler("V", V), weight, ends, tolerance, units.electron_mass
+            x, fields = _functions.cells(
+                _checks.sampler("V", V), mass, ends, tolerance, units.electron_mass
             )
-        except _cells.TooRough as fault:
+        except _functions.TooRough as fault:
             raise InputError(str(fault)) from None
-        if one is not None:  # to the last digit, and without memory of its own
-            fields[1] = np.broadcast_to(one, (x.size - 1, 1))
         return cls._from_fields(
             x, fields, left, right, units=units, kind="function", title=title, tolerance=tolerance
         )
