@@ -163,7 +163,8 @@ def test_halves_that_have_no_length_do_no_harm():
     """Near x = 1e15 doubles are 0.125 apart: a sixteenth of this span has no length left."""
     span = 1e15 + np.array([0.0, 1.0])
     x, (V, _) = _functions.cells(lambda x: 3 * (x - 1e15), 1.0, span, 1e-13)
-    assert x.tolist() == span.tolist() and V.tolist() == [[0.0, 3.0]]
+    assert x.tolist() == span.tolist()
+    np.testing.assert_allclose(table(V), 3 * T[None], atol=0.5)  # x itself is off by up to 1/16
 
 
 def test_a_smooth_function_is_asked_once():
