@@ -22,7 +22,7 @@ FLAT, TOO_LONG = 0, 255
 
 
 _HERE = pathlib.Path(__file__).parent
-SOURCES = ("_compiled.py", "_straight.py", "_plan.py", "_kernels.py", "_search.py")
+SOURCES = ("_compiled.py", "_straight.py", "_plan.py", "_kernels.py", "_search.py", "_numbers.py")
 
 
 def _cache_folder():
