@@ -153,6 +153,11 @@ def trimmed(cells):
     return cells if used == cells.shape[1] else np.ascontiguousarray(cells[:, :used])
 
 
+def least_width(x):
+    """Return the width of the narrowest cell, without an array of all widths."""
+    return min((x[b.start + 1 : b.stop + 1] - x[b]).min() for b in blocks(x.size - 1))
+
+
 def merged(x, fields):
     """Join neighbouring cells that carry the same polynomials.
 
@@ -173,88 +178,138 @@ def merged(x, fields):
     A run of cells is joined only if the polynomial through points spread over the whole run (for
     straight lines: the chord) passes within rounding of every cell in it. Comparing neighbours
     alone would let many small bends add up: a finely sampled parabola looks straight from one row
-    to the next. A run that fails is left as it was, which is always right.
+    to the next. A run that fails is left as it was, which is always right. So are all cells where
+    fewer than a quarter could be saved; half in a long table, whose copy takes memory.
     """
-    same = np.ones(x.size - 2, dtype=bool)
-    for field in fields:
-        same &= _neighbours_agree(x, field, same)
-    if not same.any():
+    count = x.size - 1
+    worth = max(count // (2 if count > _BLOCK else 4), 1)
+    varied = [field for field in fields if field.strides[0]]  # one number goes on by itself
+    same = np.ones(count - 1, dtype=bool)
+    for find in (_may_go_on, _go_on):
+        for block in blocks(count - 1):
+            ends, cells = slice(block.start, block.stop + 2), slice(block.start, block.stop + 1)
+            for field in varied:
+                find(x[ends], field[cells], same[block])
+        if np.count_nonzero(same) < worth:
+            return x, fields
+    # Runs of more than one cell, by the first and the last cell of each.
+    first, last = np.flatnonzero(np.diff(same, prepend=False, append=False)).reshape(-1, 2).T
+    good = [_runs_hold(x, varied, first[block], last[block]) for block in blocks(first.size)]
+    first, last = first[np.concatenate(good)], last[np.concatenate(good)]
+    saved = last - first
+    if saved.sum() < worth:
         return x, fields
-    run = np.concatenate([[0], np.cumsum(~same)])  # number of the run that each cell belongs to
-    first = np.searchsorted(run, np.arange(run[-1] + 1))
-    ends = np.append(x[first], x[-1])
-    good = np.ones(first.size, dtype=bool)
-    joined = []
-    for field in fields:
-        candidate = _through_run(x, field, ends)
-        offset = (x[:-1] - ends[run]) / (ends[run + 1] - ends[run])
-        ratio = np.diff(x) / (ends[run + 1] - ends[run])
-        miss = np.abs(reexpanded(candidate[run], offset, ratio) - field).max(axis=1)
-        good[run[miss > 8 * EPS * _size(ends, candidate)[run]]] = False
-        joined.append(candidate)
-    # Cells that stay: the first of every good run (with the joined polynomial), all of a bad one.
-    is_first = np.zeros(run.size, dtype=bool)
-    is_first[first] = True
-    keep = is_first | ~good[run]
-    single = np.bincount(run)[run] == 1  # alone in its run: keep its own digits
-    use_joined = (good[run] & ~single)[keep]
-    out = [
-        np.where(use_joined[:, None], candidate[run[keep]], field[keep])
-        for candidate, field in zip(joined, fields, strict=True)
-    ]
-    return np.append(x[:-1][keep], x[-1]), out
+    change = np.zeros(count + 1, dtype=np.int8)
+    change[first + 1] = 1
+    change[last + 1] -= 1
+    kept = np.cumsum(change[:-1], out=change[:-1]) == 0
+    for k, field in enumerate(fields):
+        if field.strides[0] == 0:
+            fields[k] = field[: count - saved.sum()]
+        else:
+            fields[k] = field[kept]
+            fields[k][first - np.cumsum(saved) + saved] = _through_runs(x, field, first, last)
+    return np.append(x[:-1][kept], x[-1]), fields
 
 
-def _neighbours_agree(x, field, candidates):
-    """Whether cell i + 1 continues the polynomial of cell i, for the candidate pairs."""
-    agree = np.zeros(x.size - 2, dtype=bool)
-    # A jump, or a different end value, decides most pairs at the cost of one comparison.
-    scale = _size(x, field)
-    close = np.abs(field.sum(axis=1)[:-1] - field[1:, 0]) <= 8 * EPS * np.maximum(
-        scale[:-1], scale[1:]
-    )
-    i = np.flatnonzero(candidates & close)
-    if i.size == 0:
-        return agree
-    if field.shape[1] == 1:
-        agree[i] = True
-        return agree
-    left, right = x[i + 1] - x[i], x[i + 2] - x[i + 1]
-    # The longer cell is carried on to the shorter one; the other way round would magnify rounding.
-    forward = left >= right
-    base = np.where(forward[:, None], field[i], field[i + 1])
-    offset = np.where(forward, 1.0, -left / right)
-    ratio = np.where(forward, right / left, left / right)
-    target = np.where(forward[:, None], field[i + 1], field[i])
-    miss = np.abs(reexpanded(base, offset, ratio) - target).max(axis=1)
-    agree[i] = miss <= 16 * EPS * np.maximum(scale[i], scale[i + 1])
-    return agree
+def _may_go_on(x, field, same):
+    """Clear `same` where a cell cannot continue the one before: most pairs, at little cost.
+
+    A jump, or what a change of the highest derivative does in the shorter cell, must be within the
+    rounding that `_go_on` allows, as far as the largest of all coefficients tell.
+    """
+    degree = field.shape[1] - 1
+    rounding = field.shape[1] * np.abs(field).max()
+    if degree:
+        width = x[1:] - x[:-1]
+        rounding += np.abs(field[:, 1]).max() * max(-x[0], x[-1]) / width.min()
+        highest = field[:, -1] / width**degree
+        bend = (highest[1:] - highest[:-1]) * np.minimum(width[1:], width[:-1]) ** degree
+        same &= np.abs(bend) <= 20 * EPS * rounding
+        if not same.any():
+            return
+    jump = field[1:, 0] - evaluated(field[:-1], 1.0)
+    same &= np.abs(jump) <= 20 * EPS * rounding
 
 
-def _size(x, field):
-    """What rounding is relative to: the values of each cell, and those of its slope times x."""
-    size = np.abs(field).sum(axis=1)
+def _go_on(x, field, same):
+    """Clear `same` where a cell does not continue the polynomial of the one before."""
+    pair = np.flatnonzero(same)
+    before, after = field[pair], field[pair + 1]
+    start, middle, end = x[pair], x[pair + 1], x[pair + 2]
+    scale = np.maximum(_size(start, middle, before), _size(middle, end, after))
+    close = np.abs(evaluated(before, 1.0) - after[:, 0]) <= 8 * EPS * scale
     if field.shape[1] > 1:
-        size += np.abs(field[:, 1]) * np.maximum(np.abs(x[:-1]), np.abs(x[1:])) / np.diff(x)
+        # The longer cell is carried on to the shorter one; the other way would magnify rounding.
+        left, right = middle - start, end - middle
+        forward = left >= right
+        base = np.where(forward[:, None], before, after)
+        offset = np.where(forward, 1.0, -left / right)
+        ratio = np.where(forward, right / left, left / right)
+        target = np.where(forward[:, None], after, before)
+        miss = _largest(reexpanded(base, offset, ratio) - target)
+        close &= miss <= 16 * EPS * scale
+    same[pair] = close
+
+
+def _size(start, end, field):
+    """What rounding is relative to: the values of each cell, and those of its slope times x."""
+    size = evaluated(np.abs(field), 1.0)
+    if field.shape[1] > 1:
+        size += np.abs(field[:, 1]) * np.maximum(np.abs(start), np.abs(end)) / (end - start)
     return size
 
 
-def _through_run(x, field, ends):
-    """The polynomial through degree + 1 equally spaced points of each run between `ends`."""
+def _largest(coefficients):
+    """The largest of each cell's coefficients; along so short an axis np.max takes ten times it."""
+    largest = np.abs(coefficients[:, 0])
+    for j in range(1, coefficients.shape[1]):
+        np.maximum(largest, np.abs(coefficients[:, j]), out=largest)
+    return largest
+
+
+def _runs_hold(x, fields, first, last):
+    """Whether one polynomial stands for all cells of each run, from `first` to `last`."""
+    start, end = x[first], x[last + 1]
+    joined = [_through_runs(x, field, first, last) for field in fields]
+    size = [_size(start, end, candidate) for candidate in joined]
+    good = np.ones(first.size, dtype=bool)
+    stop = np.cumsum(last - first + 1)
+    for block in blocks(stop[-1]):
+        step = np.arange(block.start, block.stop)
+        run = np.searchsorted(stop, step, side="right")
+        cell = step + (last + 1 - stop)[run]
+        length = (end - start)[run]
+        offset, ratio = (x[cell] - start[run]) / length, (x[cell + 1] - x[cell]) / length
+        for field, candidate, rounding in zip(fields, joined, size, strict=True):
+            miss = _largest(reexpanded(candidate[run], offset, ratio) - field[cell])
+            good[run[miss > 8 * EPS * rounding[run]]] = False
+        if not good.any():
+            break
+    return good
+
+
+# Powers 1, 2, ... of t that rise by one from t = 0 to 1/n, 2/n, ... 1, and by none to the others.
+_THROUGH = {
+    1: [[1.0]],
+    2: [[4.0, -4.0], [-1.0, 2.0]],
+    3: [[9.0, -22.5, 13.5], [-4.5, 18.0, -13.5], [1.0, -4.5, 4.5]],
+}
+
+
+def _through_runs(x, field, first, last):
+    """The polynomial through degree + 1 equally spaced points of each run of cells."""
     degree = field.shape[1] - 1
-    if degree == 0:
-        return field[np.searchsorted(x, ends[:-1])]
-    t = np.linspace(0.0, 1.0, degree + 1)
-    at = ends[:-1, None] + t * np.diff(ends)[:, None]
-    cell = np.clip(np.searchsorted(x, at, side="right") - 1, 0, x.size - 2)
-    # The end of a run is the right end of its last cell, not the left end of the next.
-    cell[:, -1] = np.searchsorted(x, ends[1:]) - 1
-    local = (at - x[cell]) / (x[cell + 1] - x[cell])
-    local[:, -1] = 1.0
-    values = evaluated(field[cell.ravel()], local.ravel()).reshape(cell.shape)
-    if degree == 1:
-        return np.column_stack([values[:, 0], values[:, 1] - values[:, 0]])
-    return np.linalg.solve(np.vander(t, increasing=True), values.T).T
+    out = np.empty((first.size, degree + 1))
+    out[:, 0] = field[first, 0]
+    if degree:
+        for k in range(1, degree):
+            at = x[first] + k / degree * (x[last + 1] - x[first])
+            cell = np.searchsorted(x, at, side="right") - 1
+            out[:, k] = evaluated(field[cell], (at - x[cell]) / (x[cell + 1] - x[cell]))
+        out[:, degree] = evaluated(field[last], 1.0)
+        out[:, 1:] = (out[:, 1:] - out[:, :1]) @ _THROUGH[degree]
+    return out
 
 
 def padded(fields):
@@ -266,7 +321,7 @@ def padded(fields):
 def scaled(coefficients, factor):
     """Return the cells times a number; one number for all cells stays one number."""
     if coefficients.strides[0] == 0:
-        return np.broadcast_to(coefficients[:1] * factor, coefficients.shape)
+        return repeated(coefficients[0, 0] * factor, coefficients.shape)
     return coefficients * factor
 
 
@@ -280,18 +335,21 @@ def product(a, b):
 
 def graded(start, end):
     """Return cells that run straight from `start` to `end`, shape (cells,); constant if equal."""
-    if np.array_equal(start, end):
-        return np.array(start)[:, None]
+    if start is end or np.array_equal(start, end):
+        return start[:, None]
     return np.column_stack([start, end - start])
 
 
 def from_ppoly(function, x):
     """Return the coefficients of a PPoly on cells with ends `x`, which refine its own."""
-    piece = np.clip(
-        np.searchsorted(function.x, x[:-1], side="right") - 1, 0, function.c.shape[1] - 1
-    )
-    power = np.arange(function.c.shape[0])[:, None]
+    if x is function.x:
+        piece = slice(None)
+    else:
+        piece = np.searchsorted(function.x, x[:-1], side="right") - 1
+        piece = np.clip(piece, 0, function.c.shape[1] - 1)
     width = np.diff(function.x)[piece]
+    power = np.arange(function.c.shape[0])[:, None]
     own = np.ascontiguousarray((function.c[::-1, piece] * width**power).T, dtype=float)
-    offset = (x[:-1] - function.x[piece]) / width
-    return reexpanded(own, offset, np.diff(x) / width)
+    if x is function.x:
+        return own
+    return reexpanded(own, (x[:-1] - function.x[:-1][piece]) / width, np.diff(x) / width)

@@ -28,7 +28,7 @@ class Profile:
     ----------
     x : ndarray, shape (cells + 1,)
         Breakpoints, in `units.length`, strictly ascending. Neighbouring cells with the same
-        polynomial have been joined.
+        polynomial have been joined, where that saves a quarter of all cells or more.
     V_cells : ndarray, shape (cells, degree + 1)
         Coefficients of V in powers of t, 0 to 1 across each cell, in `units.energy`.
     mass_cells : ndarray, shape (cells, degree + 1)
@@ -133,19 +133,26 @@ class Profile:
             sigma_V = _checks.per_row("sigma_V", sigma_V, x.size)
             if (sigma_V < 0).any():
                 raise InputError(f"sigma_V must not be negative; row {np.argmin(sigma_V)} is")
-        rows = Rows(x, V, interpolation, sigma_V)
         positive = "monotone" if interpolation == "smooth" else interpolation
-        fields = [rows.cells(V, interpolation), rows.cells(mass, positive)]
+        ends = x[:-1] < x[1:]
+        if interpolation == "linear" and ends.all():  # one copy of V for the rows and the cells
+            rises = _interpolation.rises(V)
+            V, V_cells = frozen(rises[:, 0]), rises[:-1]
+        else:
+            V_cells = _interpolation.cells(interpolation, x, V)
+        fields = [V_cells, _interpolation.cells(positive, x, mass)]
         if alpha is not None:
-            fields.append(rows.cells(alpha, positive))
+            fields.append(_interpolation.cells(positive, x, alpha))
+        sides = edges(left, right, V, V, mass, mass, alpha)
+        del mass, alpha  # memory: of a long table the cells are enough
         return cls._joined(
-            np.append(x[:-1][np.diff(x) > 0], x[-1]),
+            x if ends.all() else np.append(x[:-1][ends], x[-1]),
             fields,
-            edges(left, right, V, V, mass, mass, alpha),
+            sides,
             units=units,
             kind="rows",
             title=title,
-            rows=rows,
+            rows=Rows(x, V, interpolation, sigma_V),
             row_count=x.size,
         )
 
@@ -208,7 +215,7 @@ class Profile:
         _checks.check_mass(mass_end, None)
         fields = [_cells.graded(V, V_end), _cells.graded(mass, mass_end)]
         if alpha is not None:
-            fields.append(alpha[:, None].copy())
+            fields.append(alpha[:, None])
         return cls._joined(
             x,
             fields,
@@ -328,11 +335,12 @@ class Profile:
         cut = keywords["kind"] == "function" or max(f.shape[1] for f in fields) > 4
         if x.size > 2 and not cut:
             x, fields = _cells.merged(x, fields)
+        V, mass, *alpha = (frozen(_cells.trimmed(field)) for field in fields)
         return cls(
             x=frozen(x),
-            V_cells=frozen(fields[0]),
-            mass_cells=frozen(fields[1]),
-            alpha_cells=frozen(fields[2]) if len(fields) > 2 else None,
+            V_cells=V,
+            mass_cells=mass,
+            alpha_cells=alpha[0] if alpha else None,
             left=ends[0],
             right=ends[1],
             **keywords,
@@ -406,19 +414,14 @@ class Profile:
         Natural
         """
         unit = self.units.electron_mass
-        mass = _cells.scaled(self.mass_cells, unit)
-        per_energy = np.empty((self.cells, 0))
-        if self.alpha_cells is not None:
-            per_energy = _cells.product(mass, self.alpha_cells)
-            mass, taken = _cells.padded([np.array(mass), _cells.product(per_energy, self.V_cells)])
-            mass = mass - taken
         return Natural(
-            np.diff(self.x),
+            self.x,
             np.ascontiguousarray(self.V_cells),
-            mass,
-            per_energy,
-            replace(self.left, mass=self.left.mass * unit),
-            replace(self.right, mass=self.right.mass * unit),
+            self.mass_cells,
+            self.alpha_cells,
+            unit,
+            self.left.scaled(unit),
+            self.right.scaled(unit),
         )
 
     # Changing it --------------------------------------------------------------------------------

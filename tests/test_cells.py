@@ -201,7 +201,69 @@ def test_a_cell_that_is_alone_keeps_its_digits():
     assert joined.tolist() == [[0.1, 0.2, 0.7], [0.3, 0.0, 0.0]]
 
 
+def test_a_few_equal_cells_are_left_alone():
+    """Joining must pay: two cells of twelve save less than it takes to find and copy them."""
+    x, V = np.arange(13.0), np.random.default_rng(11).random((12, 1))
+    V[5] = V[4]
+    fields = [V]
+    assert _cells.merged(x, fields) == (x, fields)
+    V[6:8] = V[4]
+    assert _cells.merged(x, fields)[0].size == 10
+
+
+@pytest.mark.parametrize("block", [1, 2, 7, 100])
+def test_blocks_do_not_show(monkeypatch, block):
+    """Long tables are worked through in blocks; runs that reach across them are still one cell.
+
+    Steps, ramps, jumps and bends, the mass constant, straight or stepped, each in runs.
+    """
+    random = np.random.default_rng(12)
+    run = np.repeat(np.arange(12), random.integers(1, 15, 12))
+    x = np.append(0.0, np.cumsum(random.uniform(0.5, 1.5, run.size)))
+    slope = random.normal(size=12) * (np.arange(12) % 3 > 0)
+    start = random.normal(size=12)[run] + slope[run] * x[:-1]
+    V = np.column_stack([start, slope[run] * np.diff(x)])
+    mass = 1.0 + (run[:, None] > 5)
+    ends, (V_whole, mass_whole) = _cells.merged(x, [V, mass])
+    assert ends.tolist() == x[np.flatnonzero(np.diff(run, prepend=-1, append=99))].tolist()
+    monkeypatch.setattr(_cells, "_BLOCK", block)
+    for found, whole in zip(_cells.merged(x, [V, mass])[1], (V_whole, mass_whole), strict=True):
+        np.testing.assert_array_equal(found, whole)
+
+
+def test_a_long_table_that_keeps_most_cells_is_left_alone(monkeypatch):
+    """A second copy of it would take memory: from half of the cells on, joining pays."""
+    x, V = np.arange(41.0), np.random.default_rng(13).random((40, 1))
+    V[20:38] = V[19]
+    assert _cells.merged(x, [V])[0].size == 23
+    monkeypatch.setattr(_cells, "_BLOCK", 10)
+    assert _cells.merged(x, [V])[0] is x
+    V[20:] = V[19]
+    assert _cells.merged(x, [V])[0].size == 21
+
+
 # --- small tools ---------------------------------------------------------------------------------
+
+
+def test_one_number_for_all_cells_is_stored_once():
+    cells = _cells.repeated(0.067, (10**7, 1))
+    assert cells.strides == (0, 0) and cells[-1, 0] == 0.067
+    assert _cells.distinct(cells).tolist() == [[0.067]]
+    with pytest.raises(ValueError, match="read-only"):
+        cells[0] = 1.0
+    varied = np.array([[1.0], [1.0]])
+    assert _cells.distinct(varied) is varied
+
+
+def test_trimmed_drops_powers_that_none_has():
+    """A column of zeros costs every sweep a multiplication a cell."""
+    assert _cells.trimmed(np.array([[1.0, 0, 2, 0], [1, 0, 0, 0]])).tolist() == [
+        [1, 0, 2],
+        [1, 0, 0],
+    ]
+    assert _cells.trimmed(np.zeros((2, 3))).tolist() == [[0.0], [0.0]]
+    full = np.ones((2, 2))
+    assert _cells.trimmed(full) is full
 
 
 def test_padded_adds_zero_columns_only():
