@@ -5,30 +5,14 @@ cell's left end to 1 at its right end. All functions work on many cells at once.
 """
 
 import math
+from functools import lru_cache
+from itertools import pairwise
 
 import numpy as np
-from numpy.polynomial import chebyshev, polynomial
 
 EPS = np.finfo(float).eps
 
-# A function is cut into cells on which a polynomial of this degree meets the tolerance. 12 is where
-# a cell's smallest interpolation error is still rounding, yet its power coefficients on [0, 1]
-# (which grow as (6/rho)**j for a Bernstein ellipse rho) lose no digits: with rho > 15 or so, which
-# 1e-13 at degree 12 requires, they decay.
-DEGREE = 12
-# Chebyshev points of degree 2 * DEGREE: every second one interpolates, the others judge.
-_POINTS = 0.5 * (1.0 - np.cos(np.pi * np.arange(2 * DEGREE + 1) / (2 * DEGREE)))
-_TO_CHEBYSHEV = np.linalg.inv(chebyshev.chebvander(2 * _POINTS[::2] - 1, DEGREE))
-_JUDGE = chebyshev.chebvander(2 * _POINTS[1::2] - 1, DEGREE)
-_PHASE, _SLOPE = 4.0, 16.0  # a cell longer than this, with a top this much above its bottom, is cut
-# A function is too rough if a cell fails that is shorter than _SHORTEST times its x or the span: a
-# kink or a jump is cut for ever. Below that its own rounding, of x alone, hides what it is.
-_SHORTEST = 2.0**-40
-_MOST_CELLS = 1 << 18  # open at once, 50 MB an array: a function with noise everywhere comes here
-
-
-class TooRough(ValueError):
-    """A function that no polynomial follows near a place, or that too many would have to follow."""
+_BLOCK = 1 << 16
 
 
 def evaluated(coefficients, t):
@@ -65,41 +49,113 @@ def mirrored(coefficients):
 def minimum(coefficients):
     """Return the least value that any of the cell polynomials takes on its cell.
 
-    Ends and zeros of the derivative; the zeros are sought only in cells whose lower bound
-    c[0] - sum |c[j]| leaves room for a value below the least sample.
+    No value is below the least of a cell's Bernstein coefficients, the first and last of which are
+    its ends: only cells with one that is lower than all ends are looked into.
     """
-    ends = np.minimum(coefficients[:, 0], coefficients.sum(axis=1))
-    least = ends.min()
-    if coefficients.shape[1] <= 2:
-        return float(least)
-    bound = coefficients[:, 0] - np.abs(coefficients[:, 1:]).sum(axis=1)
-    for row in np.flatnonzero(bound < least):
-        if bound[row] < least:
-            t = _turning_points(coefficients[row])
-            least = min(least, polynomial.polyval(t, coefficients[row]).min(initial=least))
-    return float(least)
+    cells = distinct(coefficients)
+    degree = cells.shape[1] - 1
+    if degree == 0:
+        return float(cells.min())
+    least = np.inf
+    for block in blocks(cells.shape[0]):
+        bernstein = _to_bernstein(degree).T @ cells[block].T
+        least = min(least, float(bernstein[::degree].min()))
+        if degree == 1:
+            continue
+        bound = bernstein.min(axis=0)
+        low = np.flatnonzero(bound < least)
+        for row in low[np.argsort(bound[low])]:
+            if bound[row] < least:
+                inside = _least_inside(cells[block][row].tolist(), bernstein[:, row].tolist())
+                least = min(least, inside)
+    return least
 
 
-def _turning_points(c):
-    """Where the derivative of one cell polynomial vanishes, cut to 0..1.
+@lru_cache
+def _to_bernstein(degree):
+    """The matrix from powers of t to Bernstein polynomials: t^k = sum_i C(i,k) / C(n,k) B_i."""
+    size = range(degree + 1)
+    return np.array([[math.comb(i, k) / math.comb(degree, k) for i in size] for k in size])
 
-    A leading coefficient that is rounding of the others puts a root near infinity, whose size costs
-    the roots on the cell their digits: such terms are left out while roots are sought, and Newton's
-    method on the whole derivative makes up for it.
+
+def _least_inside(c, bernstein):
+    """The least value of one polynomial, given as both kinds of coefficients, plain floats.
+
+    A cell is halved by de Casteljau's scheme until the Bernstein coefficients of a part fall and
+    then rise: the slope has one zero there. A part that cannot hold less than was found is left.
     """
-    slope = polynomial.polyder(c)
-    large = np.flatnonzero(np.abs(slope) > 1e-10 * np.abs(slope).max(initial=0.0))
-    if not large.size:
-        return np.zeros(1)
-    # A double root may come out as a complex pair: its real part is as good a sample as any.
-    t = np.clip(polynomial.polyroots(slope[: large[-1] + 1]).real, 0.0, 1.0)
-    bend = polynomial.polyder(slope)
-    for _ in range(2):
-        change = polynomial.polyval(t, slope)
-        rate = polynomial.polyval(t, bend)
-        move = np.divide(change, rate, out=np.zeros_like(t), where=rate != 0)
-        t = np.clip(t - np.clip(move, -0.1, 0.1), 0.0, 1.0)
-    return t
+    rounding = EPS * sum(map(abs, c))
+    least = min(bernstein[0], bernstein[-1])
+    parts = [(0.0, 1.0, bernstein)]
+    while parts:
+        start, end, b = parts.pop()
+        if min(b) >= least - rounding:
+            continue
+        falls = [later < before for before, later in pairwise(b)]
+        if falls == sorted(falls, reverse=True):
+            least = min(least, _bottom(c, start, end))
+            continue
+        middle, left, right = 0.5 * (start + end), [], []
+        while b:
+            left.append(b[0])
+            right.append(b[-1])
+            b = [0.5 * (before + later) for before, later in pairwise(b)]
+        least = min(least, left[-1])
+        parts += [(start, middle, left), (middle, end, right[::-1])]
+    return least
+
+
+def _bottom(c, start, end):
+    """The least value between a fall and a rise, by Newton's method for the slope, in bounds."""
+    t = 0.5 * (start + end)
+    least = np.inf
+    while True:
+        value, slope, half_bend = c[-1], 0.0, 0.0
+        for coefficient in c[-2::-1]:
+            half_bend = half_bend * t + slope
+            slope = slope * t + value
+            value = value * t + coefficient
+        least = min(least, value)
+        start, end = (t, end) if slope < 0.0 else (start, t)
+        move = -0.5 * slope / half_bend if half_bend > 0.0 else np.inf
+        if not start <= t + move <= end:
+            move = 0.5 * (start + end) - t
+        if abs(move) <= 1e-9:  # its square is what the value still changes by
+            return least
+        t += move
+
+
+def distinct(cells):
+    """Return the cells, or one of them if they are one number for all."""
+    return cells[:1] if cells.strides[0] == 0 else cells
+
+
+def blocks(count):
+    """Slices that cover so many cells, short enough for temporary arrays to stay in the cache."""
+    return (slice(i, min(i + _BLOCK, count)) for i in range(0, count, _BLOCK))
+
+
+def repeated(value, shape):
+    """Return an array that is one number everywhere, with no memory of its own.
+
+    As np.broadcast_to, at a tenth of its time.
+    """
+    one = np.array(value, dtype=float)
+    one.flags.writeable = False
+    return np.ndarray(shape, float, one, 0, (0,) * len(shape))
+
+
+def trimmed(cells):
+    """Return the cells without powers that none of them has."""
+    used = cells.shape[1]
+    while used > 1 and not cells[:, used - 1].any():
+        used -= 1
+    return cells if used == cells.shape[1] else np.ascontiguousarray(cells[:, :used])
+
+
+def least_width(x):
+    """Return the width of the narrowest cell, without an array of all widths."""
+    return min((x[b.start + 1 : b.stop + 1] - x[b]).min() for b in blocks(x.size - 1))
 
 
 def merged(x, fields):
@@ -122,88 +178,138 @@ def merged(x, fields):
     A run of cells is joined only if the polynomial through points spread over the whole run (for
     straight lines: the chord) passes within rounding of every cell in it. Comparing neighbours
     alone would let many small bends add up: a finely sampled parabola looks straight from one row
-    to the next. A run that fails is left as it was, which is always right.
+    to the next. A run that fails is left as it was, which is always right. So are all cells where
+    fewer than a quarter could be saved; half in a long table, whose copy takes memory.
     """
-    same = np.ones(x.size - 2, dtype=bool)
-    for field in fields:
-        same &= _neighbours_agree(x, field, same)
-    if not same.any():
+    count = x.size - 1
+    worth = max(count // (2 if count > _BLOCK else 4), 1)
+    varied = [field for field in fields if field.strides[0]]  # one number goes on by itself
+    same = np.ones(count - 1, dtype=bool)
+    for find in (_may_go_on, _go_on):
+        for block in blocks(count - 1):
+            ends, cells = slice(block.start, block.stop + 2), slice(block.start, block.stop + 1)
+            for field in varied:
+                find(x[ends], field[cells], same[block])
+        if np.count_nonzero(same) < worth:
+            return x, fields
+    # Runs of more than one cell, by the first and the last cell of each.
+    first, last = np.flatnonzero(np.diff(same, prepend=False, append=False)).reshape(-1, 2).T
+    good = [_runs_hold(x, varied, first[block], last[block]) for block in blocks(first.size)]
+    first, last = first[np.concatenate(good)], last[np.concatenate(good)]
+    saved = last - first
+    if saved.sum() < worth:
         return x, fields
-    run = np.concatenate([[0], np.cumsum(~same)])  # number of the run that each cell belongs to
-    first = np.searchsorted(run, np.arange(run[-1] + 1))
-    ends = np.append(x[first], x[-1])
-    good = np.ones(first.size, dtype=bool)
-    joined = []
-    for field in fields:
-        candidate = _through_run(x, field, ends)
-        offset = (x[:-1] - ends[run]) / (ends[run + 1] - ends[run])
-        ratio = np.diff(x) / (ends[run + 1] - ends[run])
-        miss = np.abs(reexpanded(candidate[run], offset, ratio) - field).max(axis=1)
-        good[run[miss > 8 * EPS * _size(ends, candidate)[run]]] = False
-        joined.append(candidate)
-    # Cells that stay: the first of every good run (with the joined polynomial), all of a bad one.
-    is_first = np.zeros(run.size, dtype=bool)
-    is_first[first] = True
-    keep = is_first | ~good[run]
-    single = np.bincount(run)[run] == 1  # alone in its run: keep its own digits
-    use_joined = (good[run] & ~single)[keep]
-    out = [
-        np.where(use_joined[:, None], candidate[run[keep]], field[keep])
-        for candidate, field in zip(joined, fields, strict=True)
-    ]
-    return np.append(x[:-1][keep], x[-1]), out
+    change = np.zeros(count + 1, dtype=np.int8)
+    change[first + 1] = 1
+    change[last + 1] -= 1
+    kept = np.cumsum(change[:-1], out=change[:-1]) == 0
+    for k, field in enumerate(fields):
+        if field.strides[0] == 0:
+            fields[k] = field[: count - saved.sum()]
+        else:
+            fields[k] = field[kept]
+            fields[k][first - np.cumsum(saved) + saved] = _through_runs(x, field, first, last)
+    return np.append(x[:-1][kept], x[-1]), fields
 
 
-def _neighbours_agree(x, field, candidates):
-    """Whether cell i + 1 continues the polynomial of cell i, for the candidate pairs."""
-    agree = np.zeros(x.size - 2, dtype=bool)
-    # A jump, or a different end value, decides most pairs at the cost of one comparison.
-    scale = _size(x, field)
-    close = np.abs(field.sum(axis=1)[:-1] - field[1:, 0]) <= 8 * EPS * np.maximum(
-        scale[:-1], scale[1:]
-    )
-    i = np.flatnonzero(candidates & close)
-    if i.size == 0:
-        return agree
-    if field.shape[1] == 1:
-        agree[i] = True
-        return agree
-    left, right = x[i + 1] - x[i], x[i + 2] - x[i + 1]
-    # The longer cell is carried on to the shorter one; the other way round would magnify rounding.
-    forward = left >= right
-    base = np.where(forward[:, None], field[i], field[i + 1])
-    offset = np.where(forward, 1.0, -left / right)
-    ratio = np.where(forward, right / left, left / right)
-    target = np.where(forward[:, None], field[i + 1], field[i])
-    miss = np.abs(reexpanded(base, offset, ratio) - target).max(axis=1)
-    agree[i] = miss <= 16 * EPS * np.maximum(scale[i], scale[i + 1])
-    return agree
+def _may_go_on(x, field, same):
+    """Clear `same` where a cell cannot continue the one before: most pairs, at little cost.
+
+    A jump, or what a change of the highest derivative does in the shorter cell, must be within the
+    rounding that `_go_on` allows, as far as the largest of all coefficients tell.
+    """
+    degree = field.shape[1] - 1
+    rounding = field.shape[1] * np.abs(field).max()
+    if degree:
+        width = x[1:] - x[:-1]
+        rounding += np.abs(field[:, 1]).max() * max(-x[0], x[-1]) / width.min()
+        highest = field[:, -1] / width**degree
+        bend = (highest[1:] - highest[:-1]) * np.minimum(width[1:], width[:-1]) ** degree
+        same &= np.abs(bend) <= 20 * EPS * rounding
+        if not same.any():
+            return
+    jump = field[1:, 0] - evaluated(field[:-1], 1.0)
+    same &= np.abs(jump) <= 20 * EPS * rounding
 
 
-def _size(x, field):
-    """What rounding is relative to: the values of each cell, and those of its slope times x."""
-    size = np.abs(field).sum(axis=1)
+def _go_on(x, field, same):
+    """Clear `same` where a cell does not continue the polynomial of the one before."""
+    pair = np.flatnonzero(same)
+    before, after = field[pair], field[pair + 1]
+    start, middle, end = x[pair], x[pair + 1], x[pair + 2]
+    scale = np.maximum(_size(start, middle, before), _size(middle, end, after))
+    close = np.abs(evaluated(before, 1.0) - after[:, 0]) <= 8 * EPS * scale
     if field.shape[1] > 1:
-        size += np.abs(field[:, 1]) * np.maximum(np.abs(x[:-1]), np.abs(x[1:])) / np.diff(x)
+        # The longer cell is carried on to the shorter one; the other way would magnify rounding.
+        left, right = middle - start, end - middle
+        forward = left >= right
+        base = np.where(forward[:, None], before, after)
+        offset = np.where(forward, 1.0, -left / right)
+        ratio = np.where(forward, right / left, left / right)
+        target = np.where(forward[:, None], after, before)
+        miss = _largest(reexpanded(base, offset, ratio) - target)
+        close &= miss <= 16 * EPS * scale
+    same[pair] = close
+
+
+def _size(start, end, field):
+    """What rounding is relative to: the values of each cell, and those of its slope times x."""
+    size = evaluated(np.abs(field), 1.0)
+    if field.shape[1] > 1:
+        size += np.abs(field[:, 1]) * np.maximum(np.abs(start), np.abs(end)) / (end - start)
     return size
 
 
-def _through_run(x, field, ends):
-    """The polynomial through degree + 1 equally spaced points of each run between `ends`."""
+def _largest(coefficients):
+    """The largest of each cell's coefficients; along so short an axis np.max takes ten times it."""
+    largest = np.abs(coefficients[:, 0])
+    for j in range(1, coefficients.shape[1]):
+        np.maximum(largest, np.abs(coefficients[:, j]), out=largest)
+    return largest
+
+
+def _runs_hold(x, fields, first, last):
+    """Whether one polynomial stands for all cells of each run, from `first` to `last`."""
+    start, end = x[first], x[last + 1]
+    joined = [_through_runs(x, field, first, last) for field in fields]
+    size = [_size(start, end, candidate) for candidate in joined]
+    good = np.ones(first.size, dtype=bool)
+    stop = np.cumsum(last - first + 1)
+    for block in blocks(stop[-1]):
+        step = np.arange(block.start, block.stop)
+        run = np.searchsorted(stop, step, side="right")
+        cell = step + (last + 1 - stop)[run]
+        length = (end - start)[run]
+        offset, ratio = (x[cell] - start[run]) / length, (x[cell + 1] - x[cell]) / length
+        for field, candidate, rounding in zip(fields, joined, size, strict=True):
+            miss = _largest(reexpanded(candidate[run], offset, ratio) - field[cell])
+            good[run[miss > 8 * EPS * rounding[run]]] = False
+        if not good.any():
+            break
+    return good
+
+
+# Powers 1, 2, ... of t that rise by one from t = 0 to 1/n, 2/n, ... 1, and by none to the others.
+_THROUGH = {
+    1: [[1.0]],
+    2: [[4.0, -4.0], [-1.0, 2.0]],
+    3: [[9.0, -22.5, 13.5], [-4.5, 18.0, -13.5], [1.0, -4.5, 4.5]],
+}
+
+
+def _through_runs(x, field, first, last):
+    """The polynomial through degree + 1 equally spaced points of each run of cells."""
     degree = field.shape[1] - 1
-    if degree == 0:
-        return field[np.searchsorted(x, ends[:-1])]
-    t = np.linspace(0.0, 1.0, degree + 1)
-    at = ends[:-1, None] + t * np.diff(ends)[:, None]
-    cell = np.clip(np.searchsorted(x, at, side="right") - 1, 0, x.size - 2)
-    # The end of a run is the right end of its last cell, not the left end of the next.
-    cell[:, -1] = np.searchsorted(x, ends[1:]) - 1
-    local = (at - x[cell]) / (x[cell + 1] - x[cell])
-    local[:, -1] = 1.0
-    values = evaluated(field[cell.ravel()], local.ravel()).reshape(cell.shape)
-    if degree == 1:
-        return np.column_stack([values[:, 0], values[:, 1] - values[:, 0]])
-    return np.linalg.solve(np.vander(t, increasing=True), values.T).T
+    out = np.empty((first.size, degree + 1))
+    out[:, 0] = field[first, 0]
+    if degree:
+        for k in range(1, degree):
+            at = x[first] + k / degree * (x[last + 1] - x[first])
+            cell = np.searchsorted(x, at, side="right") - 1
+            out[:, k] = evaluated(field[cell], (at - x[cell]) / (x[cell + 1] - x[cell]))
+        out[:, degree] = evaluated(field[last], 1.0)
+        out[:, 1:] = (out[:, 1:] - out[:, :1]) @ _THROUGH[degree]
+    return out
 
 
 def padded(fields):
@@ -215,7 +321,7 @@ def padded(fields):
 def scaled(coefficients, factor):
     """Return the cells times a number; one number for all cells stays one number."""
     if coefficients.strides[0] == 0:
-        return np.broadcast_to(coefficients[:1] * factor, coefficients.shape)
+        return repeated(coefficients[0, 0] * factor, coefficients.shape)
     return coefficients * factor
 
 
@@ -229,139 +335,21 @@ def product(a, b):
 
 def graded(start, end):
     """Return cells that run straight from `start` to `end`, shape (cells,); constant if equal."""
-    if np.array_equal(start, end):
-        return np.array(start)[:, None]
+    if start is end or np.array_equal(start, end):
+        return start[:, None]
     return np.column_stack([start, end - start])
 
 
 def from_ppoly(function, x):
     """Return the coefficients of a PPoly on cells with ends `x`, which refine its own."""
-    piece = np.clip(
-        np.searchsorted(function.x, x[:-1], side="right") - 1, 0, function.c.shape[1] - 1
-    )
-    power = np.arange(function.c.shape[0])[:, None]
+    if x is function.x:
+        piece = slice(None)
+    else:
+        piece = np.searchsorted(function.x, x[:-1], side="right") - 1
+        piece = np.clip(piece, 0, function.c.shape[1] - 1)
     width = np.diff(function.x)[piece]
+    power = np.arange(function.c.shape[0])[:, None]
     own = np.ascontiguousarray((function.c[::-1, piece] * width**power).T, dtype=float)
-    offset = (x[:-1] - function.x[piece]) / width
-    return reexpanded(own, offset, np.diff(x) / width)
-
-
-def from_callable(V, mass, breaks, tolerance, unit=1.0):
-    """Cut functions into common polynomial cells, by Chebyshev interpolation and halving.
-
-    Parameters
-    ----------
-    V, mass : callable
-        Each maps an array to an array of the same shape, or to one number. The tolerance of V is
-        relative to the cell's own height above the least V sampled, that of the mass to its size.
-    breaks : ndarray
-        Ends of the span and points where a function is not smooth, ascending. Those inside are
-        approached from both sides, and the functions never asked exactly there.
-    tolerance : float
-        Accepted interpolation error. Rounding of the functions themselves is allowed on top.
-    unit : float, optional
-        Factor that brings the mass to units with hbar = 1.
-
-    Returns
-    -------
-    x, fields
-        Breakpoints and, for V and mass, coefficients of shape (cells, degree + 1).
-
-    Raises
-    ------
-    TooRough
-        A function that no short cell, or no reasonable number of cells, can follow.
-
-    Notes
-    -----
-    A cell that holds the bottom of a well and a high wall rounds by the height of the wall where
-    the lowest states live. Cells that are long against the wavelength at their own top, and whose
-    own bottom is low against it, are therefore halved even where one polynomial would do.
-
-    References
-    ----------
-    .. [1] L. N. Trefethen, Approximation Theory and Approximation Practice, SIAM (2013), ch. 3, 8.
-    """
-    left, right = np.array(breaks[:-1], dtype=float), np.array(breaks[1:], dtype=float)
-    span = breaks[-1] - breaks[0]
-    least = np.inf
-    done = []
-    while left.size:
-        at = left[:, None] + _POINTS * (right - left)[:, None]
-        at[:, -1] = right
-        for column, side in ((0, np.inf), (-1, -np.inf)):
-            inner = np.isin(at[:, column], breaks[1:-1])
-            at[inner, column] = np.nextafter(at[inner, column], side)
-        samples = [np.broadcast_to(f(at), at.shape) for f in (V, mass)]
-        least = min(least, samples[0].min())
-        top, bottom = samples[0].max(axis=1) - least, samples[0].min(axis=1) - least
-        phase = np.sqrt(2 * unit * samples[1].max(axis=1) * top) * (right - left)
-        good = (phase <= _PHASE) | (bottom * _SLOPE >= top)
-        spectra = []
-        for values, height in zip(samples, (top, np.abs(samples[1]).max(axis=1)), strict=True):
-            spectrum, miss, rounding = _fitted(at, values)
-            good &= miss <= 0.25 * tolerance * height + rounding
-            spectra.append(spectrum)
-        done.append((left[good], [s[good] for s in spectra]))
-        left, right = left[~good], right[~good]
-        short = right - left < _SHORTEST * np.maximum(span, np.minimum(np.abs(left), np.abs(right)))
-        if short.any() or left.size > _MOST_CELLS:
-            raise TooRough(_roughness(np.sort(left), np.sort(left[short]), breaks))
-        middle = 0.5 * (left + right)
-        left, right = np.concatenate([left, middle]), np.concatenate([middle, right])
-    start = np.concatenate([d[0] for d in done])
-    order = np.argsort(start)
-    x = np.append(start[order], breaks[-1])
-    fields = [np.concatenate([d[1][k] for d in done])[order] for k in (0, 1)]
-    return x, [_power(spectrum) for spectrum in fields]
-
-
-def _roughness(left, short, breaks):
-    """What is wrong with a function: left ends of the cells that fail, and of the short ones."""
-    if not short.size:
-        return (
-            f"the function asks for more than {_MOST_CELLS} cells, at x = {left[0]:.12g} and "
-            "elsewhere; if its values are noisy, give a larger tolerance, or rows to from_rows"
-        )
-    # The middle one of many on both sides, rounded to hide by how little it misses.
-    place = float(short[short.size // 2])
-    digits = 11 - math.ceil(math.log10(max(breaks[-1] - breaks[0], abs(place))))
-    place = round(place, digits) + 0.0
-    if np.abs(breaks - place).min() <= 10.0**-digits:
-        return (
-            f"no polynomial follows the function up to x = {place:.12g}, as where it has a root or "
-            "a pole; end the span some way off, or give rows to from_rows"
-        )
-    return (
-        f"no polynomial follows the function near x = {place:.12g}; if it jumps or has a kink "
-        f"there, write breaks=[{place:.12g}]"
-    )
-
-
-def _fitted(at, values):
-    """Chebyshev coefficients of each cell, their miss, and what rounding explains of it."""
-    base = values[:, :1]  # taken away first, so that a constant is met exactly
-    spectrum = (values[:, ::2] - base) @ _TO_CHEBYSHEV.T
-    size = np.abs(values).max(axis=1)
-    # Trailing coefficients below rounding are noise; dropping them lowers the degree.
-    tail = np.maximum.accumulate(np.abs(spectrum[:, ::-1]), axis=1)[:, ::-1]
-    spectrum[tail <= EPS * size[:, None]] = 0.0
-    spectrum[:, :1] += base
-    miss = np.abs(spectrum @ _JUDGE.T - values[:, 1::2]).max(axis=1)
-    # x is rounded before the function sees it: |x| eps times the slope, for a function of x - a.
-    slope = np.ptp(values, axis=1) / (at[:, -1] - at[:, 0])
-    rounding = 4 * EPS * (size + slope * np.abs(at).max(axis=1))
-    return spectrum, miss, rounding
-
-
-def _power(spectrum):
-    """Power coefficients in t of Chebyshev series in 2 t - 1."""
-    degree = spectrum.shape[1] - 1
-    to_power = np.zeros((degree + 1, degree + 1))
-    for j in range(degree + 1):
-        c = chebyshev.cheb2poly(np.eye(degree + 1)[j])
-        to_power[j, : c.size] = c
-    in_s = spectrum @ to_power
-    out = reexpanded(in_s, -1.0, 2.0)
-    used = np.flatnonzero(np.any(out != 0.0, axis=0))
-    return out[:, : used[-1] + 1] if used.size else out[:, :1]
+    if x is function.x:
+        return own
+    return reexpanded(own, (x[:-1] - function.x[:-1][piece]) / width, np.diff(x) / width)

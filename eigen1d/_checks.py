@@ -1,5 +1,7 @@
 """Validators: each checks one thing, raises `InputError`, returns the cleaned value if any."""
 
+import math
+
 import numpy as np
 
 from . import _cells
@@ -16,10 +18,12 @@ def numbers(name, values):
         raise InputError(f"{name} must be numbers; found {values!r:.80}") from None
     if values.ndim != 1:
         raise InputError(f"{name} must be one row of numbers; found shape {values.shape}")
-    bad = np.flatnonzero(~np.isfinite(values))
-    if bad.size:
-        raise InputError(f"{name} must be finite; row {bad[0]} has {values[bad[0]]}")
-    return frozen(values)
+    finite = np.isfinite(values)
+    if not finite.all():
+        bad = int(np.argmin(finite))
+        raise InputError(f"{name} must be finite; row {bad} has {values[bad]}")
+    values.flags.writeable = False
+    return values
 
 
 def number(name, value):
@@ -35,12 +39,22 @@ def number(name, value):
     return value
 
 
+def positive(name, value):
+    """One finite number above zero."""
+    value = number(name, value)
+    if value <= 0:
+        raise InputError(f"{name} must be positive; found {value:g}")
+    return value
+
+
 def per_row(name, values, count):
-    """One number for all rows (as a view with no memory of its own), or one a row."""
+    """One number a row; if it is the same for all, as a view with no memory of its own."""
     values = numbers(name, values)
     if values.size not in (1, count):
         raise InputError(f"{name} must be one number or {count} of them; found {values.size}")
-    return np.broadcast_to(values, (count,)) if values.size == 1 else values
+    if values.size == 1 or values.min() == values.max():
+        return _cells.repeated(values[0], (count,))
+    return values
 
 
 def choice(name, value, allowed):
@@ -51,6 +65,8 @@ def choice(name, value, allowed):
 
 def check_rows(x):
     """Positions that never descend, at most two at one place, and that cover a length."""
+    if _cells.least_width(x) > 0:
+        return
     step = np.diff(x)
     if (step < 0).any():
         bad = int(np.argmax(step < 0)) + 1
@@ -67,11 +83,13 @@ def check_rows(x):
 
 def layer_ends(thickness, start):
     """The ends of layers that are thick enough to be told apart, shape (layers + 1,)."""
-    if (thickness <= 0).any():
+    if thickness.min() <= 0:
         bad = int(np.argmin(thickness))
         raise InputError(f"thickness must be positive; layer {bad} has {thickness[bad]:g}")
-    x = np.concatenate([[0.0], np.cumsum(thickness)]) + start
-    if (np.diff(x) <= 0).any():
+    x = np.zeros(thickness.size + 1)
+    np.cumsum(thickness, out=x[1:])
+    x += start
+    if _cells.least_width(x) <= 0:
         bad = int(np.argmin(np.diff(x)))
         raise InputError(f"layer {bad} is too thin for its position to be told apart from the next")
     return x
@@ -108,10 +126,10 @@ def check_span(mass_x, x):
 
 def check_mass(mass, alpha):
     """A mass that is positive, and that does not fall with energy."""
-    if (mass <= 0).any():
+    if mass.min() <= 0:
         bad = int(np.argmin(mass))
         raise InputError(f"mass must be positive; row {bad} has {mass[bad]:g}")
-    if alpha is not None and (alpha < 0).any():
+    if alpha is not None and alpha.min() < 0:
         bad = int(np.argmin(alpha))
         raise InputError(
             f"alpha must not be negative; row {bad} has {alpha[bad]:g}. Levels are counted by "
@@ -124,13 +142,14 @@ MOST = 1e100  # of any size: its square is a double
 
 def check_range(profile):
     """Refuse sizes that no unit gives to a length, energy or mass: solvers would leave doubles."""
-    step, V, mass = np.diff(profile.x), np.abs(profile.V_cells), profile.mass_cells
-    if not (np.isfinite(V).all() and (step > 0).all()):
+    x, V, mass = profile.x, profile.V_cells, _cells.distinct(profile.mass_cells)
+    step, height = _cells.least_width(x), max(V.max(), -V.min())
+    if not (step > 0 and math.isfinite(height)):
         raise InputError("positions or energies leave the range of double precision")
     for name, allowed, least, most in (
-        ("steps of x", 1e-100, step.min(), np.abs(profile.x).max()),
-        ("V", 1e-250, V.max() or 1.0, V.max()),  # wells of any shallowness bind
-        ("the mass", 1e-100, np.abs(mass[:, 0]).min(), np.abs(mass).max()),
+        ("steps of x", 1e-100, step, max(-x[0], x[-1])),
+        ("V", 1e-250, height or 1.0, height),  # wells of any shallowness bind
+        ("the mass", 1e-100, mass[:, 0].min(), mass.max()),  # positive: none is larger by far
     ):
         if least < allowed or most > MOST:
             raise InputError(
@@ -178,7 +197,9 @@ def sampler(name, function, positive=False):
                 f"{name} must return one number for each x; for {x.size} of them, shape {x.shape}, "
                 f"it returned {values.dtype} of shape {values.shape}"
             )
-        usable = np.isfinite(values) & ((values > 0) | (not positive))
+        usable = np.isfinite(values)
+        if positive:
+            usable &= values > 0
         if not usable.all():
             bad = x.flat[np.argmin(np.broadcast_to(usable, x.shape))]
             wanted = "finite and positive" if positive else "finite"

@@ -21,7 +21,10 @@ FLAT, TOO_LONG = 0, 255
 
 
 _HERE = pathlib.Path(__file__).parent
-SOURCES = ("_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_search.py")
+SOURCES = (
+    "_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_search.py",
+    "_numbers.py",
+)  # fmt: skip
 
 
 def _cache_folder():

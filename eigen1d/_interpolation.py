@@ -1,10 +1,14 @@
 """The four ways to join the rows of a table, and how each answers to a change of one row.
 
-Adding an interpolation means one entry in CELLS and one in GRADIENTS; nothing else knows them.
-Each works on a stretch of rows without jumps, x strictly ascending, at least two rows.
+Adding an interpolation means one entry in _CELLS or _CURVES and one in _GRADIENTS; nothing else
+knows them. Curves and gradients work on a stretch of rows without jumps, at least two of them.
 """
 
+from itertools import pairwise
+
 import numpy as np
+
+from ._cells import padded, repeated
 
 INTERPOLATIONS = ("linear", "step", "smooth", "monotone")
 
@@ -16,13 +20,36 @@ def cells(name, x, values):
     ----------
     name : {"linear", "step", "smooth", "monotone"}
     x, values : ndarray, shape (rows,)
+        At two rows with the same x is a jump.
 
     Returns
     -------
-    ndarray, shape (rows - 1, degree + 1)
+    ndarray, shape (rows - 1 - jumps, degree + 1)
         Power coefficients in t, 0 to 1 across each cell.
     """
-    return _CELLS[name](x, values)
+    if values.strides == (0,):  # one number for all rows stays one number
+        return repeated(values[0], (np.count_nonzero(x[1:] > x[:-1]), 1))
+    if name in _CELLS:
+        found, real = _CELLS[name](values), x[1:] > x[:-1]
+        return found if real.all() else found[real]
+    curves = [_CURVES[name](x[part], values[part]) for part in stretches(x)]
+    return np.concatenate(padded(curves)) if len(curves) > 1 else curves[0]
+
+
+def stretches(x):
+    """Slices of rows between jumps: x strictly ascends in each; lone rows are left out."""
+    cuts = np.flatnonzero(x[1:] == x[:-1]) + 1
+    bounds = [0, *cuts.tolist(), x.size]
+    return [slice(a, b) for a, b in pairwise(bounds) if b - a > 1]
+
+
+def rises(values):
+    """Return each row's value beside its rise to the next row, none at the last: (rows, 2)."""
+    both = np.empty((values.size, 2))
+    both[:, 0] = values
+    np.subtract(values[1:], values[:-1], out=both[:-1, 1])
+    both[-1, 1] = 0.0
+    return both
 
 
 def gradient(name, x, values, moments):
@@ -42,12 +69,12 @@ def gradient(name, x, values, moments):
     return _GRADIENTS[name](x, values, moments)
 
 
-def _step_cells(x, values):
-    return values[:-1, None].copy()
+def _step_cells(values):
+    return values[:-1, None]
 
 
-def _linear_cells(x, values):
-    return np.column_stack([values[:-1], np.diff(values)])
+def _linear_cells(values):
+    return rises(values)[:-1]
 
 
 def _smooth_cells(x, values):
@@ -62,7 +89,7 @@ def _monotone_cells(x, values):
     from scipy.interpolate import PchipInterpolator
 
     if x.size == 2:
-        return _linear_cells(x, values)
+        return _linear_cells(values)
     return _from_ppoly(PchipInterpolator(x, values).c, np.diff(x))
 
 
@@ -172,12 +199,9 @@ def _monotone_gradient(x, values, moments):
     return by_value + _by_secants(x, by_secant)
 
 
-_CELLS = {
-    "linear": _linear_cells,
-    "step": _step_cells,
-    "smooth": _smooth_cells,
-    "monotone": _monotone_cells,
-}
+# Cells that depend on their two rows alone are drawn across jumps too, and left out there.
+_CELLS = {"linear": _linear_cells, "step": _step_cells}
+_CURVES = {"smooth": _smooth_cells, "monotone": _monotone_cells}
 _GRADIENTS = {
     "linear": _linear_gradient,
     "step": _step_gradient,

@@ -1,6 +1,7 @@
 """What a profile is made of: its edges, the rows behind it, and its cells as solvers see them."""
 
 from dataclasses import dataclass, replace
+from functools import cached_property
 
 import numpy as np
 
@@ -26,6 +27,10 @@ class Edge:
     V: float
     mass: float
     alpha: float = 0.0
+
+    def scaled(self, unit):
+        """Return the edge with its mass times `unit`."""
+        return Edge(self.kind, self.V, self.mass * unit, self.alpha)
 
 
 def edges(left, right, V, V_end, mass, mass_end, alpha=None):
@@ -59,18 +64,7 @@ class Rows:
 
     def stretches(self):
         """Slices of rows between jumps: x strictly ascends in each; lone rows are left out."""
-        cuts = np.flatnonzero(np.diff(self.x) == 0) + 1
-        bounds = np.concatenate([[0], cuts, [self.x.size]])
-        return [slice(a, b) for a, b in zip(bounds[:-1], bounds[1:], strict=True) if b - a > 1]
-
-    def cells(self, values, interpolation):
-        """Return the cell polynomials through `values`, one a row: shape (cells, degree + 1)."""
-        if values.strides == (0,):  # one number for all rows stays one number
-            return np.broadcast_to(values[:1, None], (np.count_nonzero(np.diff(self.x)), 1))
-        parts = [
-            _interpolation.cells(interpolation, self.x[s], values[s]) for s in self.stretches()
-        ]
-        return np.concatenate(_cells.padded(parts)) if len(parts) > 1 else parts[0]
+        return _interpolation.stretches(self.x)
 
     def tilted(self, field):
         """Return the rows with field * x added to V, or None where they no longer give the cells.
@@ -102,21 +96,47 @@ class Natural:
     """Cells in units with hbar = 1: the user's length and energy, masses scaled to match.
 
     The mass in a cell at energy E is the polynomial `mass` + E * `mass_per_energy`, which is how a
-    nonparabolicity alpha enters: m (1 + alpha (E - V)).
+    nonparabolicity alpha enters: m (1 + alpha (E - V)). Both, and `width`, are made when they are
+    first asked for: of a long table each is memory that not every solver needs.
 
     Attributes
     ----------
-    width : ndarray, shape (cells,)
-    V, mass : ndarray, shape (cells, degree + 1)
-        Power coefficients in t, 0 to 1 across each cell.
-    mass_per_energy : ndarray, shape (cells, degree + 1), no columns where alpha is zero
+    x : ndarray, shape (cells + 1,)
+    V, mass_cells : ndarray, shape (cells, degree + 1)
+        Power coefficients in t, 0 to 1 across each cell; masses in electron masses.
+    alpha_cells : ndarray, shape (cells, degree + 1), or None
+    unit : float
+        The electron mass.
     left, right : Edge
-        With masses in the same units.
+        With masses in the same units as `mass`.
     """
 
-    width: np.ndarray
+    x: np.ndarray
     V: np.ndarray
-    mass: np.ndarray
-    mass_per_energy: np.ndarray
+    mass_cells: np.ndarray
+    alpha_cells: np.ndarray | None
+    unit: float
     left: Edge
     right: Edge
+
+    @cached_property
+    def width(self):
+        """ndarray, shape (cells,): the length of each cell."""
+        return self.x[1:] - self.x[:-1]
+
+    @cached_property
+    def mass(self):
+        """ndarray, shape (cells, degree + 1): the mass at E = 0."""
+        mass = _cells.scaled(self.mass_cells, self.unit)
+        if self.alpha_cells is None:
+            return mass
+        taken = _cells.product(self.mass_per_energy, self.V)
+        mass, taken = _cells.padded([mass, taken])
+        return mass - taken
+
+    @cached_property
+    def mass_per_energy(self):
+        """ndarray, shape (cells, degree + 1): its rise with E; no columns where alpha is zero."""
+        if self.alpha_cells is None:
+            return np.empty((self.x.size - 1, 0))
+        return _cells.product(_cells.scaled(self.mass_cells, self.unit), self.alpha_cells)

@@ -11,6 +11,7 @@ The first line suffices alone. Lines and columns count from 1 as in an editor.
 """
 
 import re
+from collections.abc import Callable
 from dataclasses import dataclass
 from difflib import get_close_matches
 from functools import cached_property
@@ -29,15 +30,16 @@ NUMBER = re.compile(
 
 @dataclass(frozen=True)
 class Source:
-    """A file as the user named it, and its text with "\\n" between lines."""
+    """A file as the user named it, and how to get its bytes, which become text if they must."""
 
     path: str
-    text: str = ""
+    read: Callable = bytes
+    encoding: str = "utf-8-sig"
 
     @cached_property
     def lines(self):
         """list of str: the lines; `lines[0]` is line 1."""
-        return self.text.split("\n")
+        return with_plain_newlines(self.read().decode(self.encoding)).split("\n")
 
     def fault(
         self,
@@ -103,6 +105,11 @@ class Source:
             *(row.rstrip() for row in excerpt),
             f"    {'':>{gutter}} | {'':>{start - first}}{'^' * marks}",
         ]
+
+
+def with_plain_newlines(text):
+    """Return the text with "\\n" alone between lines."""
+    return text.replace("\r\n", "\n").replace("\r", "\n")
 
 
 def quoted(found):

@@ -81,14 +81,18 @@ class Column:
 
 @dataclass(frozen=True)
 class Table:
-    """A file cut into its parts; `body` holds the lines below the head, from `first_line` on."""
+    """A file cut into its parts; the body begins below the head, at line `first_line`."""
 
     source: Source
     settings: dict
     columns: tuple
     delimiter: str | None
-    body: list
     first_line: int
+
+    @property
+    def body(self):
+        """list of str: the lines below the head."""
+        return self.source.lines[self.first_line - 1 :]
 
 
 # Lines and cells ----------------------------------------------------------------------------------
@@ -159,10 +163,10 @@ def split(source, named, vocabulary):
     if is_header:
         delimiter = next((d for d in (";", ",", "\t") if d in line), None)
         columns = _header_columns(source, top, line, delimiter)
-        table = Table(source, settings, columns, delimiter, source.lines[top:], top + 1)
+        table = Table(source, settings, columns, delimiter, top + 1)
     else:
         delimiter = _delimiter_of_row(line, len(named))
-        table = Table(source, settings, named, delimiter, source.lines[top - 1 :], top)
+        table = Table(source, settings, named, delimiter, top)
     _check_late_settings(table, vocabulary)
     return table
 

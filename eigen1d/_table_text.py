@@ -3,7 +3,7 @@
 import os
 from difflib import get_close_matches
 
-from ._table_faults import Source
+from ._table_faults import Source, with_plain_newlines
 
 
 def read_bytes(path):
@@ -43,9 +43,9 @@ _MAGIC = {
 }
 
 
-def decoded(path, data):
+def text_source(path, data):
     """Return the Source of a file's bytes: text in UTF-8, with or without a byte order mark."""
-    source = Source(path)
+    source = Source(path, lambda: data)
     for magic, (what, remedy) in _MAGIC.items():
         if data.startswith(magic):
             raise source.fault(f"expected a text table, found {what}", remedy)
@@ -57,22 +57,17 @@ def decoded(path, data):
             "expected a text table, found a binary file", "Export the columns x and V as CSV text."
         )
     try:
-        text = data.decode("utf-8-sig")
+        data.decode(source.encoding)
     except UnicodeDecodeError as fault:
-        # Latin-1 gives every byte a character, so the line can be shown.
-        text = _with_plain_newlines(data.decode("latin-1"))
-        before = _with_plain_newlines(data[: fault.start].decode("latin-1"))
+        before = with_plain_newlines(data[: fault.start].decode("latin-1"))
         start = len(before) - before.rfind("\n") - 1
         found = f"0x{data[fault.start]:02x}"
-        raise Source(path, text).fault(
+        # Latin-1 gives every byte a character, so the line can be shown.
+        raise Source(path, lambda: data, "latin-1").fault(
             f"expected text in UTF-8, found the byte {found}",
             f"{utf8} LATIN1 if the line above reads right.",
             line=before.count("\n") + 1,
             found=found,
             span=(start, start + 1),
         ) from None
-    return Source(path, _with_plain_newlines(text))
-
-
-def _with_plain_newlines(text):
-    return text.replace("\r\n", "\n").replace("\r", "\n")
+    return source

@@ -9,7 +9,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _cells, _checks, _interpolation
+from . import _cells, _checks, _functions, _interpolation
 from ._checks import frozen
 from ._parts import Edge, Natural, Rows, edges
 from .errors import InputError
@@ -28,7 +28,7 @@ class Profile:
     ----------
     x : ndarray, shape (cells + 1,)
         Breakpoints, in `units.length`, strictly ascending. Neighbouring cells with the same
-        polynomial have been joined.
+        polynomial have been joined, where that saves a quarter of all cells or more.
     V_cells : ndarray, shape (cells, degree + 1)
         Coefficients of V in powers of t, 0 to 1 across each cell, in `units.energy`.
     mass_cells : ndarray, shape (cells, degree + 1)
@@ -133,19 +133,26 @@ class Profile:
             sigma_V = _checks.per_row("sigma_V", sigma_V, x.size)
             if (sigma_V < 0).any():
                 raise InputError(f"sigma_V must not be negative; row {np.argmin(sigma_V)} is")
-        rows = Rows(x, V, interpolation, sigma_V)
         positive = "monotone" if interpolation == "smooth" else interpolation
-        fields = [rows.cells(V, interpolation), rows.cells(mass, positive)]
+        ends = x[:-1] < x[1:]
+        if interpolation == "linear" and ends.all():  # one copy of V for the rows and the cells
+            rises = _interpolation.rises(V)
+            V, V_cells = frozen(rises[:, 0]), rises[:-1]
+        else:
+            V_cells = _interpolation.cells(interpolation, x, V)
+        fields = [V_cells, _interpolation.cells(positive, x, mass)]
         if alpha is not None:
-            fields.append(rows.cells(alpha, positive))
+            fields.append(_interpolation.cells(positive, x, alpha))
+        sides = edges(left, right, V, V, mass, mass, alpha)
+        del mass, alpha  # memory: of a long table the cells are enough
         return cls._joined(
-            np.append(x[:-1][np.diff(x) > 0], x[-1]),
+            x if ends.all() else np.append(x[:-1][ends], x[-1]),
             fields,
-            edges(left, right, V, V, mass, mass, alpha),
+            sides,
             units=units,
             kind="rows",
             title=title,
-            rows=rows,
+            rows=Rows(x, V, interpolation, sigma_V),
             row_count=x.size,
         )
 
@@ -208,7 +215,7 @@ class Profile:
         _checks.check_mass(mass_end, None)
         fields = [_cells.graded(V, V_end), _cells.graded(mass, mass_end)]
         if alpha is not None:
-            fields.append(alpha[:, None].copy())
+            fields.append(alpha[:, None])
         return cls._joined(
             x,
             fields,
@@ -246,7 +253,7 @@ class Profile:
             x = np.union1d(x, mass.x[(mass.x > x[0]) & (mass.x < x[-1])])
             weight = _cells.from_ppoly(mass, x)
         else:
-            weight = np.broadcast_to(_checks.number("mass", mass), (x.size - 1, 1))
+            weight = _cells.repeated(_checks.positive("mass", mass), (x.size - 1, 1))
         V_cells = _cells.from_ppoly(V, x)
         if not (np.isfinite(V_cells).all() and np.isfinite(weight).all()):
             raise InputError("V and mass must be finite")
@@ -307,17 +314,17 @@ class Profile:
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
         if not 1e-15 <= _checks.number("tolerance", tolerance) < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
-        one = None if callable(mass) else _checks.number("mass", mass)
-        weight = _checks.sampler("mass", mass if one is None else lambda x: one, positive=True)
+        if callable(mass):
+            mass = _checks.sampler("mass", mass, positive=True)
+        else:
+            mass = _checks.positive("mass", mass)
         ends = np.concatenate([[low], breaks, [high]])
         try:
-            x, fields = _cells.from_callable(
-                _checks.sampler("V", V), weight, ends, tolerance, units.electron_mass
+            x, fields = _functions.cells(
+                _checks.sampler("V", V), mass, ends, tolerance, units.electron_mass
             )
-        except _cells.TooRough as fault:
+        except _functions.TooRough as fault:
             raise InputError(str(fault)) from None
-        if one is not None:  # to the last digit, and without memory of its own
-            fields[1] = np.broadcast_to(one, (x.size - 1, 1))
         return cls._from_fields(
             x, fields, left, right, units=units, kind="function", title=title, tolerance=tolerance
         )
@@ -328,11 +335,12 @@ class Profile:
         cut = keywords["kind"] == "function" or max(f.shape[1] for f in fields) > 4
         if x.size > 2 and not cut:
             x, fields = _cells.merged(x, fields)
+        V, mass, *alpha = (frozen(_cells.trimmed(field)) for field in fields)
         return cls(
             x=frozen(x),
-            V_cells=frozen(fields[0]),
-            mass_cells=frozen(fields[1]),
-            alpha_cells=frozen(fields[2]) if len(fields) > 2 else None,
+            V_cells=V,
+            mass_cells=mass,
+            alpha_cells=alpha[0] if alpha else None,
             left=ends[0],
             right=ends[1],
             **keywords,
@@ -406,19 +414,14 @@ class Profile:
         Natural
         """
         unit = self.units.electron_mass
-        mass = _cells.scaled(self.mass_cells, unit)
-        per_energy = np.empty((self.cells, 0))
-        if self.alpha_cells is not None:
-            per_energy = _cells.product(mass, self.alpha_cells)
-            mass, taken = _cells.padded([np.array(mass), _cells.product(per_energy, self.V_cells)])
-            mass = mass - taken
         return Natural(
-            np.diff(self.x),
+            self.x,
             np.ascontiguousarray(self.V_cells),
-            mass,
-            per_energy,
-            replace(self.left, mass=self.left.mass * unit),
-            replace(self.right, mass=self.right.mass * unit),
+            self.mass_cells,
+            self.alpha_cells,
+            unit,
+            self.left.scaled(unit),
+            self.right.scaled(unit),
         )
 
     # Changing it --------------------------------------------------------------------------------

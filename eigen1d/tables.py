@@ -3,20 +3,23 @@
     x [nm], V [eV], m [m_e]      # rows, or  thickness [nm], V [eV], m [m_e]  for layers
     0.0, 0.280, 0.092
 
-The way is: bytes -> text -> settings and columns -> numbers -> Profile. A clean body is parsed by
-numpy's C parser. Only where that fails is it read again line by line, to find and describe faults;
+The way is: bytes -> text -> settings and columns -> numbers -> Profile. A clean body is parsed at
+once: by numpy, or, if it is large, by kernels that take its bytes as they are, so that it never
+becomes text. Only where that fails is it read again line by line, to find and describe faults;
 line numbers exist on that second way alone.
 """
 
 import hashlib
 import os
 import re
+from contextlib import suppress
+from dataclasses import replace
 
 import numpy as np
 
 from ._interpolation import INTERPOLATIONS
 from ._parts import EDGES
-from ._table_faults import NUMBER, number_remedy, quoted
+from ._table_faults import NUMBER, Source, number_remedy, quoted
 from ._table_header import (
     DELIMITERS,
     KINDS,
@@ -27,10 +30,15 @@ from ._table_header import (
     split,
     without_comment,
 )
-from ._table_text import decoded, read_bytes
-from .errors import InputError
+from ._table_text import read_bytes, text_source
+from .errors import InputError, TableError
 from .profile import Profile
 from .units import Units, energy_in_hartree
+
+# Bytes of a file from which on kernels pay. To compile them takes 1.3 s, once; numpy reads a file of
+# this size in 0.5 s.
+_LARGE = 1 << 23
+_HEAD = 1 << 16  # bytes at the top of a large file, its head among them
 
 # What `# key: value` lines may set, and the words they may set it to.
 SETTINGS = {"title": None, "left": EDGES, "right": EDGES, "interpolation": INTERPOLATIONS}
@@ -87,10 +95,9 @@ def read_profile(
             raise InputError(f"unknown {key} {value!r}; write one of: {', '.join(SETTINGS[key])}")
     named = named_columns(columns, units)
     path = os.fsdecode(path)
-    data = read_bytes(path)
-    table = split(decoded(path, data), named, SETTINGS)
-    values = _numbers(table)
+    table, values, sha256 = _large_table(path, named) or _table(path, named)
     _check_values(table, values)
+    table = replace(table, source=Source(path))  # the text of the file is not needed any more
     if is_layers(table.columns) and "interpolation" in table.settings | given:
         raise table.source.fault(
             "interpolation has no meaning for a table of layers",
@@ -99,7 +106,7 @@ def read_profile(
             found=(table.settings | given)["interpolation"],
         )
     profile = _profile(table, values, table.settings | given)
-    return profile.with_source(path, hashlib.sha256(data).hexdigest())
+    return profile.with_source(path, sha256)
 
 
 # Numbers ----------------------------------------------------------------------------------------
@@ -117,10 +124,56 @@ def _has_decimal_commas(numbers):
     )
 
 
-def _numbers(table):
-    """Return the numbers of a table, shape (rows, columns); a text column is NaN."""
+def _table(path, named):
+    """Return a table, its numbers, shape (rows, columns), text being NaN, and the file's digest."""
+    data = read_bytes(path)
+    table = split(text_source(path, data), named, SETTINGS)
     values = _numbers_at_once(table)
-    return _numbers_by_line(table) if values is None else values
+    if values is None:
+        values = _numbers_by_line(table)
+    return table, values, hashlib.sha256(data).hexdigest()
+
+
+def _large_table(path, named):
+    """Return the same of a large file that has numbers alone below its head, else None."""
+    if not os.path.isfile(path) or os.path.getsize(path) < _LARGE:
+        return None
+    # Whatever is wrong, the other way meets it again and describes it.
+    with suppress(OSError, TableError), open(path, "rb", buffering=0) as file:
+        head = file.read(_HEAD)
+        head = head[: head.rfind(b"\n") + 1]
+        if b"\r" in head.replace(b"\r\n", b""):
+            return None  # it ends some lines, but not in what follows
+        table = split(text_source(path, head), named, SETTINGS)
+        if any(c.name == "layer" for c in table.columns):
+            return None
+        start = sum(len(line) + 1 for line in head.split(b"\n")[: table.first_line - 1])
+        commas = table.delimiter != "," and _has_decimal_commas(_bare(table.body))
+        marks = table.delimiter, "," if commas else "."
+        file.seek(start)
+        digest = hashlib.sha256(head[:start])
+        from ._numbers import numbers  # loads numba
+
+        values = numbers(file, len(table.columns), *marks, digest)
+        if values is not None:
+            sha256 = digest.hexdigest()
+            source = Source(path, lambda: _read_again(path, sha256))
+            return replace(table, source=source), values, sha256
+    return None
+
+
+def _read_again(path, sha256):
+    data = read_bytes(path)
+    if hashlib.sha256(data).hexdigest() != sha256:
+        raise Source(path).fault(
+            "the file was changed while it was read", "Wait until it is complete, then try again."
+        )
+    return data
+
+
+def _bare(body):
+    """Return lines as one text without comments."""
+    return re.sub("#[^\n]*", "", "\n".join(body))
 
 
 def _numbers_at_once(table):
@@ -130,7 +183,7 @@ def _numbers_at_once(table):
     if not any(without_comment(line).strip() for line in table.body):
         return None  # loadtxt would warn
     body = table.body
-    if table.delimiter != "," and "," in (bare := re.sub("#[^\n]*", "", "\n".join(body))):
+    if table.delimiter != "," and "," in (bare := _bare(body)):
         if not _has_decimal_commas(bare):
             return None
         body = bare.replace(",", ".").split("\n")
@@ -144,23 +197,24 @@ def _numbers_at_once(table):
 
 
 def _rows(table):
-    """Yield the line number and the cells of each row."""
+    """Yield the line number of each row, and the row without its comment."""
     for number, line in enumerate(table.body, table.first_line):
         bare = without_comment(line)
         if bare.strip():
-            yield number, cells_of(bare, table.delimiter)
+            yield number, bare
 
 
 def _numbers_by_line(table):
     count = len(table.columns)
     numeric = [k for k, c in enumerate(table.columns) if KINDS[c.name] != "text"]
-    rows = list(_rows(table))
+    rows = (cells_of(bare, table.delimiter) for _, bare in _rows(table))
     commas = table.delimiter != "," and _has_decimal_commas(
-        "\n".join(cells[k] for _, cells in rows for k in numeric if k < len(cells))
+        "\n".join(cells[k] for cells in rows for k in numeric if k < len(cells))
     )
-    values = np.full((len(rows), count), np.nan)
+    values = np.full((sum(1 for _ in _rows(table)), count), np.nan)
     faults = []  # (kind, line, column)
-    for row, (number, cells) in enumerate(rows):
+    for row, (number, bare) in enumerate(_rows(table)):
+        cells = cells_of(bare, table.delimiter)
         if len(cells) != count:
             faults.append(("row", number, min(len(cells), count) + 1))
             continue
@@ -323,18 +377,20 @@ def _raise_where(bad, table, k, what, remedy, above=False):
     rows = np.flatnonzero(bad)
     if not rows.size:
         return
-    every = list(_rows(table))
-    number, cells = every[rows[0]]
+    lines = np.fromiter((number for number, _ in _rows(table)), np.int64)
+    number = int(lines[rows[0]])
+    bare = without_comment(table.source.lines[number - 1])
+    found = cells_of(bare, table.delimiter)[k]
     raise table.source.fault(
-        f"expected {what}, found {quoted(cells[k])}",
+        f"expected {what}, found {quoted(found)}",
         remedy,
         line=number,
         column=k + 1,
         name=str(table.columns[k]),
-        found=cells[k],
-        span=spans_of(without_comment(table.source.lines[number - 1]), table.delimiter)[k],
-        before=every[rows[0] - 1][0] if above else None,
-        same=[every[row][0] for row in rows[1:]],
+        found=found,
+        span=spans_of(bare, table.delimiter)[k],
+        before=int(lines[rows[0] - 1]) if above else None,
+        same=lines[rows[1:]].tolist(),
     )
 
 

@@ -85,7 +85,7 @@ UNITS = 'units must be Units("nm", "eV") or the like; found '
         (lambda: from_ppoly(LINE, PPoly(np.array([[-1.0], [1.0]]), [0, 2])),
          "mass must be positive everywhere"),
         (lambda: from_ppoly(LINE, [1, 2]), "mass must be one number; found [1, 2]"),
-        (lambda: from_ppoly(LINE, -1.0), "mass must be positive everywhere"),
+        (lambda: from_ppoly(LINE, -1.0), "mass must be positive; found -1"),
         # functions
         (lambda: from_function(1.0, (0, 1)), "V must be a function of x; found 1.0"),
         (lambda: from_function(np.cos, (1, 0)),
@@ -104,15 +104,14 @@ UNITS = 'units must be Units("nm", "eV") or the like; found '
          "V must be finite on the span; it is not at x = 0"),
         (lambda: from_function(np.cos, (0, 1), lambda x: x),
          "mass must be finite and positive on the span; it is not at x = 0"),
-        (lambda: from_function(np.cos, (0, 1), -1.0),
-         "mass must be finite and positive on the span; it is not at x = 0"),
+        (lambda: from_function(np.cos, (0, 1), -1.0), "mass must be positive; found -1"),
         (lambda: from_function(np.cos, (0, 1), [1, 2]), "mass must be one number; found [1, 2]"),
-        (lambda: from_function(lambda x: 0 * x[:1, :3], (0, 1)),
-         "V must return one number for each x; for 25 of them, shape (1, 25), it returned float64 "
-         "of shape (1, 3)"),
+        (lambda: from_function(lambda x: 0 * x[:3], (0, 1)),
+         "V must return one number for each x; for 775 of them, shape (775,), it returned float64 "
+         "of shape (3,)"),
         (lambda: from_function(lambda x: 1j * x, (0, 1)),
-         "V must return one number for each x; for 25 of them, shape (1, 25), it returned "
-         "complex128 of shape (1, 25)"),
+         "V must return one number for each x; for 775 of them, shape (775,), it returned "
+         "complex128 of shape (775,)"),
         (lambda: from_function(lambda x: float("deep"), (0, 1)),
          "V failed on an array of positions: could not convert string to float: 'deep'; write it "
          "with numpy functions, or wrap it in np.vectorize"),

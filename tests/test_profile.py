@@ -1,6 +1,7 @@
 """Profile: what a table, a sheet of layers, a spline or a function means, exactly."""
 
 import dataclasses
+import tracemalloc
 
 import numpy as np
 import pytest
@@ -195,6 +196,57 @@ def test_one_mass_for_all_rows_takes_no_memory():
     """Ten million rows with one mass: 80 MB saved a field."""
     profile = Profile.from_rows(np.arange(10**5), np.random.default_rng(0).random(10**5), 0.067)
     assert profile.mass_cells.strides[0] == 0 and profile.natural().mass.strides[0] == 0
+
+
+def test_a_mass_column_of_one_value_is_one_number():
+    """Most tables repeat one mass in every row: solvers should know that it is constant."""
+    x, V = np.arange(9), np.arange(9) ** 2
+    for profile in (
+        Profile.from_rows(x, V, np.full(9, 0.067)),
+        Profile.from_layers(np.ones(9), V, np.full(9, 0.067), mass_end=0.067),
+    ):
+        assert profile.mass_cells.strides[0] == 0
+        assert profile.mass_cells.tolist() == [[0.067]] * profile.cells
+
+
+def test_a_stepped_mass_of_linear_rows_is_constant_in_each_cell():
+    """Heterostructures written as rows: no cell pays for a slope of the mass that is zero."""
+    profile = Profile.from_rows(X, V, np.repeat([0.1, 0.06, 0.1], [3, 4, 3]))
+    assert profile.V_cells.shape[1] == 2
+    assert profile.mass_cells.tolist() == [[0.1]] * 2 + [[0.06]] * 3 + [[0.1]] * 2
+
+
+@pytest.mark.parametrize(
+    ("mass", "interpolation", "held"),
+    [(False, "linear", 3), (True, "linear", 5), (True, "step", 3)],
+)
+def test_long_tables_take_little_memory(mass, interpolation, held):
+    """In arrays of the table's length, beyond the table: x, V, and for straight lines each rise.
+
+    While it is made a copy of the mass may stand beside its cells, and blocks of temporary arrays.
+    """
+    rows = 10**6
+    x = np.linspace(0.0, 100.0, rows)
+    values = np.sin(x), 0.1 + 0.01 * np.cos(x) if mass else 0.1
+    Profile.from_rows(x[:9], x[:9])  # so that all modules are imported
+    tracemalloc.start()
+    profile = Profile.from_rows(x, *values, interpolation=interpolation)
+    size, peak = np.array(tracemalloc.get_traced_memory()) / x.nbytes
+    tracemalloc.stop()
+    assert profile.cells == rows - 1
+    assert size < held + 0.1
+    assert peak < held + 1.4
+
+
+def test_solvers_see_views():
+    """What solvers do not ask for is not computed, nor are the arrays of a long table copied."""
+    profile = Profile.from_rows(X, V, MASS)
+    natural = profile.natural()
+    assert np.shares_memory(natural.V, profile.V_cells)
+    assert not np.shares_memory(natural.V, profile.rows.V)  # jumps: cells of their own
+    assert natural.x is profile.x and natural.mass_cells is profile.mass_cells
+    smooth = Profile.from_rows(np.arange(9), np.arange(9) ** 2)
+    assert np.shares_memory(smooth.V_cells, smooth.rows.V) and smooth.rows.x is smooth.x
 
 
 # --- layers --------------------------------------------------------------------------------------

@@ -10,8 +10,9 @@ PACKAGE = ROOT / "eigen1d"
 
 # A file imports only from floors below its own. A new file is placed here first.
 FLOORS = [
-    {"errors", "_cells", "_interpolation", "_compiled"},
-    {"units", "_files", "_checks", "_straight", "_table_faults"},
+    {"errors", "_cells", "_compiled"},
+    {"units", "_files", "_checks", "_functions", "_interpolation"}
+    | {"_straight", "_table_faults", "_numbers"},
     {"_parts", "_plan", "_table_text", "_table_header"},
     {"profile", "_kernels"},
     {"_search", "_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},

@@ -384,7 +384,7 @@ def test_source_and_digest_are_those_of_the_file(write, tmp_path):
 
 
 def by_both_ways(path, named=None):
-    source = tables.decoded(path, tables.read_bytes(path))
+    source = tables.text_source(path, tables.read_bytes(path))
     table = tables.split(source, named, tables.SETTINGS)
     return tables._numbers_at_once(table), tables._numbers_by_line(table)
 
@@ -426,7 +426,7 @@ NO_NUMBERS = (
 def test_both_ways_agree_on_what_a_number_is(token, write):
     """If one way took text that the other refuses, a fault elsewhere would change the verdict."""
     path = write(f"x [nm], V [eV]\n0, 1\n1, {token}\n")
-    source = tables.decoded(path, tables.read_bytes(path))
+    source = tables.text_source(path, tables.read_bytes(path))
     table = tables.split(source, None, tables.SETTINGS)
     at_once = tables._numbers_at_once(table)
     if token in NUMBERS:
@@ -446,7 +446,7 @@ def test_faulty_files_are_not_read_at_once(write):
             named = tables.named_columns(
                 fault.arguments.get("columns"), fault.arguments.get("units")
             )
-            source = tables.decoded(path, tables.read_bytes(path))
+            source = tables.text_source(path, tables.read_bytes(path))
             table = tables.split(source, named, tables.SETTINGS)
             assert tables._numbers_at_once(table) is None, fault.id
             refused += 1
