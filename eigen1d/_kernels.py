@@ -142,7 +142,7 @@ def _advance(cells, constant, cell, backward, state, lanes, log):
         q = per_energy[cell, 0] if per_energy.shape[1] > 0 else 0.0
         _flat(V[cell, 0], mass[cell, 0], q, h, state, lanes, log)
         return _AGE
-    if at.size > 0:
+    if at.size > 0 and at[cell] >= 0:
         powers = orders(count, per_energy.shape[1] > 0)
         propagated(state, table, at[cell], backward, powers)
         return 1

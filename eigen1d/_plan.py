@@ -6,6 +6,8 @@ closed form, at any width. All this depends on the energies that will be tried; 
 done once, for the lowest and the highest of them, and not in the sweeps.
 """
 
+import math
+
 import numpy as np
 from numba import types
 
@@ -34,6 +36,9 @@ _HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, ma
 # Decay lengths from the outermost place that an energy reaches: what lies further out changes the
 # solution there by exp(-2 * 20) = 4e-18 of itself.
 _FAR = 20.0
+# So many terms of a cell of each `shape` are summed in each sweep: that is about as fast as a
+# propagator. With more cells than _FEW, more, for the sake of memory.
+_FEW, _READY, _READY_MANY = 1 << 15, (13, 6, 0), (13, 12, 0)
 MOST_PARTS = 1 << 21  # of all cells together; their propagators fill 0.8 GB
 _WORK = types.Tuple((FLOATS, FLOATS, FLOATS, types.float64[:, ::1]))  # w, m, q, majorant
 
@@ -365,16 +370,19 @@ def _deepest(V):
 
 @kernel(signature=CELLS(given(1), given(2), given(2), given(2), COUNTS, types.float64, types.float64))
 def _ready(width, V, mass, per_energy, terms, floor, scale):
-    """Return short cells as `CELLS` says, propagators where a sweep does not do without."""
-    curved = shape(V, mass, per_energy) == 2
-    at = np.empty(terms.size if curved else 0, np.int64)
-    total = 0
+    """Return short cells as `CELLS` says, with propagators where they are worth their memory."""
+    kind = shape(V, mass, per_energy)
+    ready = _READY[kind] if terms.size <= _FEW else _READY_MANY[kind]
+    total, any_table = 0, False
+    for cell in range(terms.size):
+        any_table = any_table or terms[cell] > ready
+    at = np.empty(terms.size if any_table else 0, np.int64)
     for cell in range(at.size):
-        at[cell] = total if terms[cell] != FLAT else -1
-        if terms[cell] != FLAT:
+        at[cell] = total if terms[cell] > ready else -1
+        if terms[cell] > ready:
             total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
     table = np.empty(total)
-    if curved:
+    if any_table:
         tabulate(width, V, mass, per_energy, terms, at, floor, scale, table)
     span = np.empty(2)
     span[0], span[1] = floor, scale
@@ -385,10 +393,10 @@ def _ready(width, V, mass, per_energy, terms, floor, scale):
     entry=True,
     signature=types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE, types.int64))(
         given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
-        types.float64, types.boolean,
+        types.boolean,
     ),
 )  # fmt: skip
-def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
+def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
     """Make cells ready for sweeps at energies from floor to top.
 
     Parameters
@@ -398,8 +406,6 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
     left, right : ndarray, shape (4,)
         The edges, see `_kernels._start`.
     floor, top : float
-    scale : float
-        At least top - floor; a power of two rounds nothing.
     whole : bool
         Keep also what lies too deep in a barrier to matter for the energies.
 
@@ -415,6 +421,8 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, scale, whole):
     home : int
         The deepest cell.
     """
+    # A power of two: energies in its units round nothing.
+    scale = math.ldexp(1.0, math.frexp(top - floor)[1])
     terms = np.empty(width.size, np.uint8)
     if shape(V, mass, per_energy) < 2 and _plan(width, V, mass, per_energy, floor, top, terms):
         first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)

@@ -14,7 +14,9 @@ from numba import types
 
 from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, given, kernel
 from ._kernels import is_positive, sweep
+from ._plan import MOST_PARTS, prepare
 
+_SPARE = 1.5  # levels that the first guess of the highest energy allows beyond those wanted
 _SAMPLES = 128  # places at which V is looked at for a first guess
 _NODES = 4096  # at which the place of a state is looked for
 _STEPS = 24  # energies at which the phase is known for it
@@ -114,21 +116,25 @@ def _phases(width, V, mass, per_energy, floor, energies):
     return phases
 
 
-@kernel(
-    entry=True,
-    signature=types.float64(
-        given(1), given(2), given(2), given(2), types.float64, types.float64, types.float64
-    ),
-)
-def top_for(width, V, mass, per_energy, floor, step, count):
-    """Guess an energy above which the phase allows `count` levels, from floor + step upwards."""
+@kernel
+def _top_for(width, V, mass, per_energy, floor, edge, count):
+    """Guess an energy, at most the edge, below which the phase allows `count` levels."""
+    span, heaviest = 0.0, 0.0
+    for cell in range(width.size):
+        m = mass[cell, 0]
+        if per_energy.shape[1] > 0:
+            m += floor * per_energy[cell, 0]
+        span, heaviest = span + width[cell], max(heaviest, m)
+    # So high it lies if V is flat, between walls; no lower otherwise.
+    low, high = 0.0, (np.pi * max(count - 1.0, 1.0) / span) ** 2 / (2.0 * heaviest)
     energy = np.empty(1)
-    low, high = 0.0, step
-    while True:
+    while floor + high < edge:
         energy[0] = floor + high
         if not _phases(width, V, mass, per_energy, floor, energy)[0] < count:
             break
         low, high = high, 4.0 * high
+    if not floor + high < edge:
+        return edge
     for _ in range(5):
         middle = 0.5 * (low + high)
         energy[0] = floor + middle
@@ -152,7 +158,8 @@ def _spread(cells, bottom, top, most):
     points = np.empty(size)
     k = 0
     for i in range(size):
-        wanted = phases[0] + total * (i + 1.0) / size
+        x = (i + 1.0) / size
+        wanted = phases[0] + total * (0.5 * x + 0.25 * (1.0 - np.cos(np.pi * x)))
         while k < _STEPS - 1 and phases[k + 1] < wanted:
             k += 1
         rise = phases[k + 1] - phases[k]
@@ -438,42 +445,9 @@ def _settle(cells, left, right, edge, first, resolution, energy, bracket, done):
         count += 1
 
 
-@kernel(
-    entry=True,
-    signature=types.Tuple((types.int64, types.boolean, FLOATS, types.float64[:, ::1], INTEGERS))(
-        CELLS, EDGE, EDGE, types.int64, types.float64, types.float64, types.float64,
-        types.int64, types.int64, types.float64,
-    ),
-)  # fmt: skip
-def levels(cells, left, right, stop, bottom, top, edge, first, last, resolution):
-    """Find the levels first <= n < last, as many as lie below `top`.
-
-    Parameters
-    ----------
-    cells, left, right
-        From `_plan.prepare`, for energies up to `top`.
-    stop : int
-        Node where solutions meet.
-    bottom : float
-        The floor of the energies, or one with no more than `first` levels below it.
-    top, edge : float
-        top <= edge: where the continuum begins, infinity between walls.
-    first, last : int
-    resolution : float
-        Half width of a bracket, relative to the height above the floor.
-
-    Returns
-    -------
-    below : int
-        Number of levels below `top`.
-    sure : bool
-        False if that depends on rounding, which happens at the edge only.
-    energy : ndarray, shape (count,)
-    bracket : ndarray, shape (count, 2)
-    done : ndarray of int64, shape (count,)
-        1: bracket and energy are final. 2: so is the bracket, which holds several levels. 0: the
-        bracket is by counts, but it is wide.
-    """
+@kernel
+def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, resolution):
+    """As `find`, for cells that are ready."""
     floor = cells[7][0]
     points = _spread(cells, bottom, top, 4.0 * (last - first))
     size = points.size
@@ -491,6 +465,8 @@ def levels(cells, left, right, stop, bottom, top, edge, first, last, resolution)
         moved = (turn[size] - turn[size - 1]) * np.pi + angle[size] - angle[size - 1]
         sure = below == _count(turn[size - 1], angle[size - 1]) and abs(angle[size]) > 4.0 * moved
     count = max(min(last, below) - first, 0)
+    if count > most:
+        count = 0
     energy, bracket = np.empty(count), np.empty((count, 2))
     done = np.zeros(count, np.int64)
     if count > 0:
@@ -500,3 +476,58 @@ def levels(cells, left, right, stop, bottom, top, edge, first, last, resolution)
         )  # fmt: skip
         _settle(cells, left, right, edge, first, resolution, energy, bracket, done)
     return below, sure, energy, bracket, done
+
+
+@kernel(
+    entry=True,
+    signature=types.Tuple((types.int64, types.boolean, FLOATS, types.float64[:, ::1], INTEGERS))(
+        given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
+        types.int64, types.int64, types.int64, types.float64, types.float64, types.float64,
+    ),
+)  # fmt: skip
+def find(
+    width, V, mass, per_energy, left, right, floor, edge, first, last, most, bottom, top, resolution
+):
+    """Find the levels first <= n < last, as many as are bound.
+
+    Parameters
+    ----------
+    width, V, mass, per_energy, left, right
+        As for `_plan.prepare`.
+    floor, edge : float
+        The least V, and where the continuum begins: infinity between walls.
+    first, last : int
+    most : int
+        If more levels are found, they are counted, but not sought.
+    bottom, top : float
+        Energies between which they lie: at most `first` levels below the one, `last` below the
+        other. Not a number for top: some energy is guessed, and raised until that is so.
+    resolution : float
+        Half width of a bracket, relative to the height above the floor.
+
+    Returns
+    -------
+    below : int
+        Number of levels below `top`; -1 if the cells are too long, see `_plan.prepare`.
+    sure : bool
+        False if that depends on rounding, which happens at the edge only.
+    energy : ndarray, shape (count,)
+    bracket : ndarray, shape (count, 2)
+    done : ndarray of int64, shape (count,)
+        1: bracket and energy are final. 2: so is the bracket, which holds several levels. 0: the
+        bracket is by counts, but it is wide.
+    """
+    if np.isnan(top):
+        top = _top_for(width, V, mass, per_energy, floor, edge, last + _SPARE)
+    while True:
+        cells, parts, new_left, new_right, home = prepare(
+            width, V, mass, per_energy, left, right, floor, top, False
+        )
+        if parts.shape[0] > MOST_PARTS:
+            return -1, True, np.empty(0), np.empty((0, 2)), np.empty(0, np.int64)
+        found = _levels(
+            cells, new_left, new_right, home, bottom, top, edge, first, last, most, resolution
+        )
+        if found[0] >= last or top >= edge:
+            return found
+        top = min(edge, floor + 2.0 * (top - floor))

@@ -6,7 +6,7 @@ mass that is a straight line (in t, and at each energy), psi' = (m_0 + m_1 t) ph
 phi' = (w_0 + w_1 t) psi give both series side by side.
 """
 
-from ._compiled import LANES, SERIES_TERMS, kernel
+from ._compiled import LANES, kernel
 
 
 def _straight_step(terms):
@@ -49,7 +49,7 @@ def _straight_step(terms):
 
 
 _straight_3, _straight_8 = _straight_step(3), _straight_step(8)
-_straight_13, _straight_22 = _straight_step(13), _straight_step(SERIES_TERMS)
+_straight_13 = _straight_step(13)
 
 
 @kernel
@@ -64,10 +64,8 @@ def straight(state, v, slope, mass, h, terms):
         _straight_3(state, v, scale, s, mass * h)
     elif terms <= 8:
         _straight_8(state, v, scale, s, mass * h)
-    elif terms <= 13:
-        _straight_13(state, v, scale, s, mass * h)
     else:
-        _straight_22(state, v, scale, s, mass * h)
+        _straight_13(state, v, scale, s, mass * h)
 
 
 def _graded_step(terms):
@@ -108,7 +106,6 @@ def _graded_step(terms):
 
 
 _graded_6, _graded_12 = _graded_step(6), _graded_step(12)
-_graded_22 = _graded_step(SERIES_TERMS)
 
 
 @kernel
@@ -116,7 +113,5 @@ def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, t
     """Cross a cell of straight V and mass; `state` as for `straight`."""
     if terms <= 6:
         _graded_6(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
-    elif terms <= 12:
-        _graded_12(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
     else:
-        _graded_22(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+        _graded_12(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)

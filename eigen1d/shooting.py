@@ -16,7 +16,6 @@ References
 .. [2] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
 """
 
-import math
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -38,7 +37,11 @@ ROUNDING = 16 * EPS
 _SAME, _AWAY = 1e-14, 1e-12
 # Where the earlier waves of a group leave room for the next: in another well they reach 1e-2.
 _SMALL = 0.1
-_SPARE = 1.5  # levels that the first guess of the highest energy allows for beyond those wanted
+_NONE = np.empty(0), np.empty((0, 2))
+_TOO_LONG = (
+    "this profile is over a million wavelengths or decay lengths long, which is more than can be "
+    "solved. Is the unit right?"
+)
 
 
 def find(profile, request):
@@ -79,72 +82,75 @@ class Search:
     """One profile, with the questions that a search asks it."""
 
     def __init__(self, profile):
+        natural = profile.natural()
         self.profile = profile
-        self.natural = profile.natural()
-        self.given = (
-            self.natural.width, self.natural.V, self.natural.mass, self.natural.mass_per_energy
-        )  # fmt: skip
-        self.edges = _edge(self.natural.left), _edge(self.natural.right)
+        self.cells = natural.width, natural.V, natural.mass, natural.mass_per_energy
+        self.left, self.right = _edge(natural.left), _edge(natural.right)
         self.floor = profile.V_min
         self.edge = profile.open_edge
         self.resolution = ROUNDING + profile.tolerance
         self.notes = ()
-        self.ready = None
-
-    def reach(self, top):
-        """Return the cells ready for energies up to `top` or more."""
-        if self.ready is None or top > self.ready.top:
-            self.ready = Ready(self, top, False)
-        return self.ready
-
-    # Which levels -------------------------------------------------------------------------------
 
     def requested(self, request):
         """Return (first, energy, bracket) of the levels that a `Request` asks for."""
         if request.window is not None:
             return self._in_window(*request.window)
         if not self.edge > self.floor:
-            return 0, np.empty(0), np.empty((0, 2))
+            return 0, *_NONE
         last = MOST_LEVELS + 1 if request.count is None else request.count
-        top = self._top(last + _SPARE)
-        energy, bracket = self.levels(0, last, self.floor, top)
-        if energy.size > MOST_LEVELS:
+        below, *found = self._find(0, last, self.floor, np.nan)
+        if below > MOST_LEVELS and request.count is None:
             raise InputError(
-                f"more than {MOST_LEVELS:,} levels are bound; ask for at most that many of them"
+                f"{below:,} levels are bound; ask for at most {MOST_LEVELS:,} of them"
             )
-        return 0, energy, bracket
+        return 0, *found
 
     def _in_window(self, low, high):
-        if min(high, self.edge) > self.floor and self._top(1e15) < min(high, self.edge):
-            raise InputError(f"far too many levels lie below {high:g}; lower the window")
+        low, high = max(low, self.floor), min(high, self.edge)
+        if not low < high:
+            return 0, *_NONE
         first, last = self.count([low, high])
         if last - first > MOST_LEVELS:
             raise InputError(
                 f"{last - first:,} levels lie in the window; ask for at most {MOST_LEVELS:,}"
             )
         if last <= first:
-            return first, np.empty(0), np.empty((0, 2))
-        bottom, top = max(low, self.floor), min(high, self.edge)
-        return first, *self.levels(first, last, bottom, top)
+            return first, *_NONE
+        return first, *self._find(first, last, low, high)[1:]
 
-    def _top(self, count):
-        """An energy up to which about so many levels lie; at most the edge."""
-        span = self.profile.x[-1] - self.profile.x[0]
-        mass = self.natural.mass[:, 0].max()
-        if self.natural.mass_per_energy.shape[1]:
-            mass = (self.natural.mass[:, 0] + self.floor * self.natural.mass_per_energy[:, 0]).max()
-        # No level lies lower than it would if V were flat, between the ends.
-        step = (np.pi * max(count - 1, 1) / span) ** 2 / (2 * mass)
-        if self.floor + step >= self.edge:
-            return self.edge
-        return min(self.edge, _search.top_for(*self.given, self.floor, step, count))
+    def _find(self, first, last, bottom, top):
+        """Return (below, energies, brackets), see `_search.find`, with what it leaves open."""
+        below, sure, energy, bracket, done = _search.find(
+            *self.cells, self.left, self.right, self.floor, self.edge, first, last,
+            MOST_LEVELS, bottom, top, self.resolution,
+        )  # fmt: skip
+        if below < 0:
+            raise InputError(_TOO_LONG)
+        if not sure and self.threshold < below:
+            below = self.threshold
+            keep = slice(max(below - first, 0))
+            energy, bracket, done = energy[keep], bracket[keep], done[keep]
+        if not done.all():
+            self._widen(first, np.flatnonzero(done == 0), energy, bracket)
+        return below, energy, bracket
+
+    def _widen(self, first, failed, energy, bracket):
+        """Widen brackets around energies that no method closes, until counts agree."""
+        half = np.maximum(self.resolution * (energy - self.floor), 4 * np.spacing(np.abs(energy)))
+        while failed.size:
+            low = np.maximum(energy[failed] - half[failed], self.floor)
+            high = np.minimum(energy[failed] + half[failed], self.edge)
+            bracket[failed] = np.column_stack([low, high])
+            n = first + failed
+            failed = failed[(self.count(low) > n) | (self.count(high) <= n)]
+            half[failed] *= 4
 
     # Counting -----------------------------------------------------------------------------------
 
     def count(self, energies):
         """Number of levels below each energy; energies at or above the open edge are cut to it."""
         energies = np.clip(np.atleast_1d(energies).astype(float), self.floor, self.edge)
-        turn, angle = self.reach(energies.max()).angles(energies)
+        turn, angle = Ready(self, energies.max(), False).angles(energies)
         count = turn - (angle < 0)
         at_edge = energies == self.edge
         if at_edge.any():
@@ -163,10 +169,10 @@ class Search:
         """
         whole, energy = Ready(self, self.edge, True), np.array([self.edge])
         (turn,), (angle,) = whole.angles(energy)
-        psi, phi = States(self, energy, whole.home, whole).at_nodes()
-        psi, phi = psi[0], phi[0]
-        sigma = abs(phi[whole.home]) / abs(psi[whole.home]) or 1.0
-        meet = sigma * psi[whole.home] ** 2 + phi[whole.home] ** 2 / sigma
+        (psi,), (phi,) = States(self, energy, whole.home).at_nodes()
+        home = whole.home
+        sigma = abs(phi[home] / psi[home]) or 1.0
+        meet = sigma * psi[home] ** 2 + phi[home] ** 2 / sigma
         middle_psi = np.maximum(np.abs(psi[1:]), np.abs(psi[:-1]))
         middle_phi = np.maximum(np.abs(phi[1:]), np.abs(phi[:-1]))
         turned = np.abs(np.diff(phi)) * middle_psi + np.abs(np.diff(psi)) * middle_phi
@@ -180,42 +186,6 @@ class Search:
             return int(turn) - 1
         return int(turn - (angle < 0))
 
-    # Finding ------------------------------------------------------------------------------------
-
-    def levels(self, first, last, bottom, top):
-        """Return energies, shape (count,), and brackets, shape (count, 2), of first <= n < last.
-
-        Fewer where fewer are bound. `bottom` has at most `first` levels below it; `top` is raised
-        until `last` are below it, or to the edge.
-        """
-        while True:
-            ready = self.reach(top)
-            below, sure, energy, bracket, done = _search.levels(
-                ready.cells, ready.left, ready.right, ready.home, bottom, top, self.edge, first,
-                last, self.resolution,
-            )  # fmt: skip
-            if not sure and self.threshold < below:
-                last = min(last, self.threshold)
-                below, energy, bracket = last, energy[: last - first], bracket[: last - first]
-                done = done[: last - first]
-            if below >= last or top == self.edge:
-                break
-            top = min(self.edge, self.floor + 2 * (top - self.floor))
-        if not done.all():
-            self._widen(first, np.flatnonzero(done == 0), energy, bracket)
-        return energy, bracket
-
-    def _widen(self, first, failed, energy, bracket):
-        """Widen brackets around energies that no method closes, until counts agree."""
-        half = np.maximum(self.resolution * (energy - self.floor), 4 * np.spacing(np.abs(energy)))
-        while failed.size:
-            low = np.maximum(energy[failed] - half[failed], self.floor)
-            high = np.minimum(energy[failed] + half[failed], self.edge)
-            bracket[failed] = np.column_stack([low, high])
-            n = first + failed
-            failed = failed[(self.count(low) > n) | (self.count(high) <= n)]
-            half[failed] *= 4
-
 
 class Ready:
     """The cells of a search, short enough for energies up to `top`.
@@ -224,17 +194,12 @@ class Ready:
     """
 
     def __init__(self, search, top, whole):
-        self.search, self.top = search, top
-        span = top - search.floor
-        scale = 2.0 ** math.ceil(math.log2(span)) if span > 0 else 1.0
+        self.search = search
         self.cells, self.parts, self.left, self.right, self.home = _plan.prepare(
-            *search.given, *search.edges, search.floor, top, scale, whole
+            *search.cells, search.left, search.right, search.floor, top, whole
         )
         if self.parts.shape[0] > _plan.MOST_PARTS:
-            raise InputError(
-                "this profile is over a million wavelengths or decay lengths long, which is more "
-                "than can be solved. Is the unit right?"
-            )
+            raise InputError(_TOO_LONG)
 
     @cached_property
     def x(self):
@@ -242,7 +207,7 @@ class Ready:
         if not self.parts.size:
             return self.search.profile.x
         owner = self.parts[:, 0].astype(int)
-        start, width = self.search.profile.x[owner], self.search.natural.width[owner]
+        start, width = self.search.profile.x[owner], self.search.cells[0][owner]
         nodes = start + self.parts[:, 1] * width
         return np.append(nodes, start[-1] + (self.parts[-1, 1] + self.parts[-1, 2]) * width[-1])
 
@@ -269,12 +234,11 @@ class States:
     search: Search
     energy: np.ndarray
     stop: int | None = None
-    given: Ready | None = None
 
     @cached_property
     def ready(self):
         """All cells, for the energies of these states."""
-        return self.given or Ready(self.search, self.search.ready.top, True)
+        return Ready(self.search, self.energy.max(initial=self.search.floor), True)
 
     @cached_property
     def _nodes(self):
@@ -286,7 +250,10 @@ class States:
         ready, count = self.ready, self.energy.size
         nodes = ready.x.size
         wave = np.empty((3, count, nodes))
-        stop = _search.homes(ready.cells, ready.left, ready.right, self._at) if self.stop is None else np.full(count, self.stop)
+        if self.stop is None:
+            stop = _search.homes(ready.cells, ready.left, ready.right, self._at)
+        else:
+            stop = np.full(count, self.stop)
         lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
         for low in range(0, count, lanes):
             part = slice(low, min(low + lanes, count))
