@@ -15,6 +15,7 @@ __version__ = "0.1.0"
 # `import eigen1d` and `eigen1d --help` load neither numba nor scipy nor matplotlib.
 _HOME = {
     "CheckError": "errors",
+    "Ensemble": "ensembles",
     "InputError": "errors",
     "Levels": "levels",
     "Profile": "profile",
@@ -22,6 +23,7 @@ _HOME = {
     "Units": "units",
     "read_profile": "tables",
     "solve": "solve",
+    "solve_many": "ensembles",
 }
 # Modules that are public as a whole: levels in closed form.
 _MODULES = ("closed_forms", "square_well")

@@ -22,7 +22,8 @@ FLAT, TOO_LONG = 0, 255
 
 _HERE = pathlib.Path(__file__).parent
 SOURCES = (
-    "_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_search.py",
+    "_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_angles.py",
+    "_search.py", "_ensemble.py",
     "_numbers.py",
 )  # fmt: skip
 
@@ -38,16 +39,17 @@ def _cache_folder():
 _FOLDER = _cache_folder()
 
 
-def kernel(function=None, signature=None, fused=False, entry=False):
+def kernel(function=None, signature=None, fused=False, entry=False, inline=False):
     """Compile: cached, division by zero as IEEE says, and no fast-math, which compensated sums
     would not survive; `fused` allows a product and a sum to be rounded once. A signature makes one
     version serve arrays that are read-only, strided or neither. Only an `entry` can be called from
-    Python: unpacking its arguments is a large part of what compiling costs.
+    Python: unpacking its arguments is a large part of what compiling costs. `inline`: in loops over
+    cells, where passing arrays takes as long as crossing one.
     """
     if function is None:
-        return lambda function: kernel(function, signature, fused, entry)
+        return lambda function: kernel(function, signature, fused, entry, inline)
     options = {"cache": True, "error_model": "numpy", "nogil": True}
-    options |= {"no_cpython_wrapper": not entry, "no_cfunc_wrapper": True}
+    options |= {"no_cpython_wrapper": not entry, "no_cfunc_wrapper": True, "forceinline": inline}
     if fused:
         options["fastmath"] = {"contract"}
     others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER

@@ -119,7 +119,7 @@ def _flat(v, mass, per_energy, h, state, lanes, log):
         log[lane] += grown
 
 
-@kernel
+@kernel(inline=True)
 def _line(coefficients, cell, backward):
     """Value and slope of a straight line over a cell, from its left or its right end."""
     size = coefficients.shape[1]
@@ -130,13 +130,14 @@ def _line(coefficients, cell, backward):
     return value, slope
 
 
-@kernel
-def _advance(cells, constant, cell, backward, state, lanes, log):
+@kernel(inline=True)
+def _advance(
+    width, V, mass, per_energy, terms, at, table, constant, cell, backward, state, lanes, log
+):
     """Carry `state` (see `straight`) across a cell, from its left or its right end.
 
     Returns about how many steps amplitudes may have grown by.
     """
-    width, V, mass, per_energy, terms, at, table, _ = cells
     h, count = width[cell], int(terms[cell])
     if count == FLAT:
         q = per_energy[cell, 0] if per_energy.shape[1] > 0 else 0.0
@@ -196,8 +197,8 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     lanes, count = energies.size, cells[0].size
     # All lanes are carried along, also unused ones: loops of a fixed length are vectors.
     state, log = np.zeros(7 * LANES), np.zeros(LANES)
-    constant = shape(cells[1], cells[2], cells[3]) == 0
-    floor, scale = cells[7]
+    width, V, mass, per_energy, terms, at, table, span = cells
+    constant, floor, scale = shape(V, mass, per_energy) == 0, span[0], span[1]
     node = count if backward else 0
     for lane in range(LANES):
         energy = energies[lane] if lane < lanes else energies[0]
@@ -214,7 +215,10 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         if node == stop:
             break
         cell = node - 1 if backward else node
-        age += _advance(cells, constant, cell, backward, state, lanes, log)
+        age += _advance(
+            width, V, mass, per_energy, terms, at, table, constant, cell, backward, state, lanes,
+            log,
+        )  # fmt: skip
         if age >= _AGE:
             _rescale(state, log)
             age = 0

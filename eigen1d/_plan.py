@@ -28,17 +28,17 @@ from ._compiled import (
 from ._propagators import orders, tabulate
 
 _FINEST = 2.0**-26  # of a cell: halves of halves stay exact in the products of `_part`
-# Terms are dropped below this part of what a cell changes psi and phi by, so that what is lost in
-# a million cells stays below rounding too.
-_LOST = 0.03 * EPS
+# Terms are dropped below this part of what a cell changes psi and phi by. All that is lost in many
+# cells is then the same part of all that changes.
+_LOST = 0.25 * EPS
 _RUN = 64  # neighbouring cells whose terms are looked for together, by their largest coefficients
 _HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, mass and per_energy
 # Decay lengths from the outermost place that an energy reaches: what lies further out changes the
 # solution there by exp(-2 * 20) = 4e-18 of itself.
 _FAR = 20.0
-# So many terms of a cell of each `shape` are summed in each sweep: that is about as fast as a
-# propagator. With more cells than _FEW, more, for the sake of memory.
-_FEW, _READY, _READY_MANY = 1 << 15, (13, 6, 0), (13, 12, 0)
+# So many terms of a cell of each `shape` are summed in each sweep: about as fast as a propagator,
+# which is worth its memory beyond.
+_READY = (13, 12, 0)
 MOST_PARTS = 1 << 21  # of all cells together; their propagators fill 0.8 GB
 _WORK = types.Tuple((FLOATS, FLOATS, FLOATS, types.float64[:, ::1]))  # w, m, q, majorant
 
@@ -175,6 +175,12 @@ def _work(V, mass, per_energy):
 
 
 @kernel
+def _most(per_energy):
+    """Terms for which a propagator has powers enough, see `_propagators.orders`."""
+    return SERIES_TERMS if per_energy.shape[1] == 0 else SERIES_TERMS // 2
+
+
+@kernel
 def _plan(width, V, mass, per_energy, low, high, terms):
     """Write the terms of cells that all are short, and whether they are.
 
@@ -186,7 +192,7 @@ def _plan(width, V, mass, per_energy, low, high, terms):
         _clear(work)
         for cell in range(first, last):
             _sizes(V[cell], mass[cell], per_energy[cell], width[cell], low, high, work)
-        shared = _series_terms(work, SERIES_TERMS)
+        shared = _series_terms(work, _most(per_energy))
         if shared == TOO_LONG:
             return False
         for cell in range(first, last):
@@ -260,9 +266,7 @@ def _cut(width, V, mass, per_energy, low, high):
     parts = np.empty((2 * width.size + 64, columns))
     starts, shares = np.empty(64), np.empty(64)
     count = 0
-    # A power of u for each term where alpha brings one: so many fit into a propagator.
-    full = per_energy.shape[1] == 0 or shape(V, mass, per_energy) < 2
-    most = SERIES_TERMS if full else SERIES_TERMS // 2
+    most = _most(per_energy)
     for cell in range(width.size):
         largest = _first_share(V[cell], mass[cell], per_energy[cell], width[cell], low, high)
         begin, waiting = 0.0, 0
@@ -372,7 +376,7 @@ def _deepest(V):
 def _ready(width, V, mass, per_energy, terms, floor, scale):
     """Return short cells as `CELLS` says, with propagators where they are worth their memory."""
     kind = shape(V, mass, per_energy)
-    ready = _READY[kind] if terms.size <= _FEW else _READY_MANY[kind]
+    ready = _READY[kind]
     total, any_table = 0, False
     for cell in range(terms.size):
         any_table = any_table or terms[cell] > ready

@@ -63,7 +63,7 @@ def _step(powers):
 _few, _some, _many = _step(_ORDERS[0]), _step(_ORDERS[1]), _step(_ORDERS[2])
 
 
-@kernel
+@kernel(inline=True)
 def propagated(state, table, start, backward, powers):
     """Cross a cell whose propagator begins at `start`; `state` as for `straight`."""
     first, last = (3, 0) if backward else (0, 3)
@@ -76,13 +76,13 @@ def propagated(state, table, start, backward, powers):
         _many(state, cell, first, last)
 
 
-@kernel(fused=True)
+@kernel(fused=True, inline=True)
 def _set(out, row, c, i, series, k):
     for lane in range(LANES):
         out[row, lane] = c[i, lane] * series[k, lane]
 
 
-@kernel(fused=True)
+@kernel(fused=True, inline=True)
 def _add(out, row, c, i, series, k):
     for lane in range(LANES):
         out[row, lane] += c[i, lane] * series[k, lane]

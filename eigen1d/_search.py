@@ -12,85 +12,18 @@ fails, brackets are cut evenly, and whoever calls chooses another node for what 
 import numpy as np
 from numba import types
 
+from ._angles import angles, homes
 from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, given, kernel
-from ._kernels import is_positive, sweep
 from ._plan import MOST_PARTS, prepare
 
 _SPARE = 1.5  # levels that the first guess of the highest energy allows beyond those wanted
-_SAMPLES = 128  # places at which V is looked at for a first guess
-_NODES = 4096  # at which the place of a state is looked for
-_STEPS = 24  # energies at which the phase is known for it
+_SAMPLES = 64  # places at which V is looked at for a first guess
+_STEPS = 16  # energies at which the phase is known for it
 _NEAREST = 7  # samples that one interpolation uses at most
 # A guess is sure enough for two counts around it if its error is below this part of their distance.
 _SURE = 0.1
 _ROUNDS, _MORE_ROUNDS = 7, 60  # before another node is tried, and then
-_TINY = 1e-300
 _BESIDE = 1e-10  # of the height: so close to the edge only the tail changes
-
-
-@kernel
-def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
-    """turn and angle of `angles` from the two solutions and the zeros that both have passed."""
-    sine = sigma * (psi * phi_r + phi * psi_r)
-    cosine = phi * phi_r - sigma * psi * (sigma * psi_r)
-    if is_positive(psi, phi) != is_positive(psi_r, phi_r):
-        sine, cosine = -sine, -cosine
-    # Both angles lie in [0, pi), their sum in [0, 2 pi): sine < 0 is its upper half.
-    if cosine <= 0.0:
-        return zeros + 1, np.arctan2(-sine, -cosine) if sine != 0.0 else 0.0
-    return zeros + (2 if sine < 0.0 else 0), np.arctan(sine / cosine)
-
-
-@kernel
-def _scale(cells, stop, energy):
-    """A scale of phi / psi at a node: any positive number is right, the local wave number smooth."""
-    _, V, mass, per_energy, _, _, _, span = cells
-    cell = min(stop, V.shape[0] - 1)
-    m = mass[cell, 0]
-    if per_energy.shape[1] > 0:
-        m += energy * per_energy[cell, 0]
-    height = energy - span[0]
-    return np.sqrt(2.0 * max(energy - V[cell, 0], 0.01 * height, _TINY) / m)
-
-
-@kernel(
-    entry=True,
-    signature=types.void(CELLS, EDGE, EDGE, types.int64, FLOATS, INTEGERS, FLOATS),
-)
-def angles(cells, left, right, stop, energies, turn, angle):
-    """Shoot from both edges and compare the two solutions where they meet.
-
-    With psi_L = A sin(theta) / sigma, phi_L = A cos(theta), and the same for the mirror image of
-    the right solution, the sum of both Pruefer angles D grows steadily with E and is (n + 1) pi at
-    the level with n nodes.
-
-    Parameters
-    ----------
-    stop : int
-        Node where they meet.
-    energies : ndarray, shape (k,), any number
-    turn : ndarray of int64, shape (k,)
-        Result.
-    angle : ndarray, shape (k,)
-        Result: D = turn pi + angle, with angle in (-pi/2, pi/2], precise near zero.
-
-    References
-    ----------
-    .. [1] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
-    """
-    trail = np.empty((0, 3, 0))
-    psi, phi, psi_r, phi_r = np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
-    zeros, zeros_r = np.empty(LANES, np.int64), np.empty(LANES, np.int64)
-    for low in range(0, energies.size, LANES):
-        lanes = min(LANES, energies.size - low)
-        part = energies[low : low + lanes]
-        sweep(cells, left, False, part, stop, psi, phi, zeros, trail, 1)
-        sweep(cells, right, True, part, stop, psi_r, phi_r, zeros_r, trail, 1)
-        for lane in range(lanes):
-            turn[low + lane], angle[low + lane] = _joined(
-                psi[lane], phi[lane], psi_r[lane], phi_r[lane], zeros[lane] + zeros_r[lane],
-                _scale(cells, stop, part[lane]),
-            )  # fmt: skip
 
 
 # First guesses ----------------------------------------------------------------------------------
@@ -102,7 +35,9 @@ def _phases(width, V, mass, per_energy, floor, energies):
     stride = -(-width.size // _SAMPLES)
     inside = max(1, _SAMPLES // width.size)
     phases = np.zeros(energies.size)
-    for cell in range(0, width.size, stride):
+    for start in range(0, width.size, stride):
+        # Not at even distances: a table may have a period.
+        cell = min(start + 13 * (start // stride) % stride, width.size - 1)
         m = mass[cell, 0]
         if per_energy.shape[1] > 0:
             m += floor * per_energy[cell, 0]
@@ -378,42 +313,12 @@ def _converge(
 @kernel
 def _room(used, levels, rounds):
     """Arrays for all samples of some rounds, and for the points of one."""
-    most = 3 * levels + 4 * LANES
+    most = 6 * levels + 4 * LANES  # two counts each, or cuts of each bracket and its levels
     total = used + rounds * most
     return (
         np.empty(total), np.empty(total, np.int64), np.empty(total),
         np.empty(most), np.empty(most, np.int64), np.empty(most),
     )  # fmt: skip
-
-
-@kernel(entry=True, signature=INTEGERS(CELLS, EDGE, EDGE, FLOATS))
-def homes(cells, left, right, energies):
-    """The node where the state nearest to each energy is largest.
-
-    The product of both solutions is the Green function on the diagonal, which near a level follows
-    its psi^2. Joined there, both run in the direction in which they grow.
-    """
-    count = cells[0].size
-    stride = -(-(count + 1) // _NODES)
-    out = np.empty(energies.size, np.int64)
-    psi, phi, zeros = np.empty(LANES), np.empty(LANES), np.empty(LANES, np.int64)
-    for first in range(0, energies.size, LANES):
-        lanes = min(LANES, energies.size - first)
-        part = energies[first : first + lanes]
-        trail = np.zeros((count // stride + 1, 3, lanes))
-        trail_r = np.zeros((count // stride + 1, 3, lanes))
-        sweep(cells, left, False, part, count, psi, phi, zeros, trail, stride)
-        sweep(cells, right, True, part, 0, psi, phi, zeros, trail_r, stride)
-        for lane in range(lanes):
-            sigma = np.sqrt(2.0 * max(part[lane] - cells[7][0], _TINY) / cells[2][0, 0])
-            largest = -np.inf
-            for i in range(trail.shape[0]):
-                size = np.log(np.hypot(sigma * trail[i, 0, lane], trail[i, 1, lane]))
-                size += np.log(np.hypot(sigma * trail_r[i, 0, lane], trail_r[i, 1, lane]))
-                size += trail[i, 2, lane] + trail_r[i, 2, lane]
-                if size > largest:
-                    largest, out[first + lane] = size, i * stride
-    return out
 
 
 @kernel
@@ -453,20 +358,22 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
     size = points.size
     if top == edge:
         points[size - 2] = max(points[size - 3], edge - _BESIDE * (edge - floor))
-    room = _room(size + 1, min(last - first, 4 * size), _ROUNDS)
-    samples, turn, angle = room[:3]
-    samples[0], turn[0], angle[0] = bottom, 0, 0.0
-    for i in range(size):
-        samples[i + 1] = points[i]
-    skip = 1 if bottom == floor else 0
-    angles(cells, left, right, stop, samples[skip : size + 1], turn[skip:], angle[skip:])
-    below, sure = _count(turn[size], angle[size]), True
+    turn, angle = np.empty(size, np.int64), np.empty(size)
+    angles(cells, left, right, stop, points, turn, angle)
+    below, sure = _count(turn[size - 1], angle[size - 1]), True
     if top == edge:
-        moved = (turn[size] - turn[size - 1]) * np.pi + angle[size] - angle[size - 1]
-        sure = below == _count(turn[size - 1], angle[size - 1]) and abs(angle[size]) > 4.0 * moved
+        moved = (turn[size - 1] - turn[size - 2]) * np.pi + angle[size - 1] - angle[size - 2]
+        sure = below == _count(turn[size - 2], angle[size - 2])
+        sure = sure and abs(angle[size - 1]) > 4.0 * moved
     count = max(min(last, below) - first, 0)
     if count > most:
         count = 0
+    room = _room(size + 1, count, _ROUNDS)
+    room[0][0], room[1][0], room[2][0] = bottom, 0, 0.0
+    if bottom > floor:
+        angles(cells, left, right, stop, room[0][:1], room[1], room[2])
+    for i in range(size):
+        room[0][i + 1], room[1][i + 1], room[2][i + 1] = points[i], turn[i], angle[i]
     energy, bracket = np.empty(count), np.empty((count, 2))
     done = np.zeros(count, np.int64)
     if count > 0:

@@ -48,11 +48,11 @@ def _straight_step(terms):
     return step
 
 
-_straight_3, _straight_8 = _straight_step(3), _straight_step(8)
-_straight_13 = _straight_step(13)
+_straight_3, _straight_6 = _straight_step(3), _straight_step(6)
+_straight_10, _straight_13 = _straight_step(10), _straight_step(13)
 
 
-@kernel
+@kernel(inline=True)
 def straight(state, v, slope, mass, h, terms):
     """Cross a cell of straight V and constant mass.
 
@@ -62,8 +62,10 @@ def straight(state, v, slope, mass, h, terms):
     s = scale * slope
     if terms <= 3:
         _straight_3(state, v, scale, s, mass * h)
-    elif terms <= 8:
-        _straight_8(state, v, scale, s, mass * h)
+    elif terms <= 6:
+        _straight_6(state, v, scale, s, mass * h)
+    elif terms <= 10:
+        _straight_10(state, v, scale, s, mass * h)
     else:
         _straight_13(state, v, scale, s, mass * h)
 
@@ -108,7 +110,7 @@ def _graded_step(terms):
 _graded_6, _graded_12 = _graded_step(6), _graded_step(12)
 
 
-@kernel
+@kernel(inline=True)
 def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, terms):
     """Cross a cell of straight V and mass; `state` as for `straight`."""
     if terms <= 6:

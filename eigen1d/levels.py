@@ -43,11 +43,7 @@ class Request:
         if count is not None and window is not None:
             raise InputError("give count or window, not both: a window returns all levels in it")
         if count is not None:
-            if isinstance(count, bool) or not hasattr(count, "__index__") or count < 1:
-                raise InputError(f"count must be a whole number from 1; found {count!r}")
-            if count > MOST_LEVELS:
-                raise InputError(f"count must be at most {MOST_LEVELS:,}; found {count:,}")
-            return cls(count=int(count))
+            return cls.lowest(count)
         if window is not None:
             try:
                 low, high = (float(value) for value in window)
@@ -66,6 +62,15 @@ class Request:
         if np.isinf(profile.open_edge):
             return cls(count=DEFAULT_COUNT)
         return cls()
+
+    @classmethod
+    def lowest(cls, count):
+        """Return the request for so many levels; `InputError` if that is no number of levels."""
+        if isinstance(count, bool) or not hasattr(count, "__index__") or count < 1:
+            raise InputError(f"count must be a whole number from 1; found {count!r}")
+        if count > MOST_LEVELS:
+            raise InputError(f"count must be at most {MOST_LEVELS:,}; found {count:,}")
+        return cls(count=int(count))
 
 
 @dataclass(frozen=True, eq=False)

@@ -21,7 +21,7 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _kernels, _plan, _search
+from . import _angles, _kernels, _plan, _search
 from .errors import InputError
 from .levels import MOST_LEVELS, Budget, Levels
 
@@ -214,7 +214,7 @@ class Ready:
     def angles(self, energies):
         """turn and angle of `_search.angles` for some energies, at `home`."""
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        _search.angles(self.cells, self.left, self.right, self.home, energies, turn, angle)
+        _angles.angles(self.cells, self.left, self.right, self.home, energies, turn, angle)
         return turn, angle
 
     def trail(self, energies, backward, stride=1):
@@ -251,7 +251,7 @@ class States:
         nodes = ready.x.size
         wave = np.empty((3, count, nodes))
         if self.stop is None:
-            stop = _search.homes(ready.cells, ready.left, ready.right, self._at)
+            stop = _angles.homes(ready.cells, ready.left, ready.right, self._at)
         else:
             stop = np.full(count, self.stop)
         lanes = max(1, min(_kernels.LANES, (1 << 22) // nodes))  # bounds the memory of the trails
