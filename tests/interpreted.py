@@ -2,8 +2,6 @@
 
 from types import FunctionType
 
-from numba.core.dispatcher import Dispatcher
-
 
 def interpreted(module, **instead):
     """Return the names of a module of kernels, none of them compiled, all calling each other.
@@ -27,7 +25,7 @@ def interpreted(module, **instead):
             return spaces[names["__name__"]]
         space = spaces[names["__name__"]] = dict(names)
         for name, value in names.items():
-            if isinstance(value, Dispatcher):
+            if hasattr(value, "py_func"):
                 space[name] = plain(value.py_func)
         space.update(instead)
         return space

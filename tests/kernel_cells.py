@@ -52,9 +52,7 @@ def ready(given, low, high):
     return _plan.prepare(*given, WALL, WALL, float(low), float(high), True)[0]
 
 
-def sweep(
-    cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, run=_kernels.sweep
-):
+def sweep(cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, run=_kernels.sweep):
     """Results of the kernel: psi, phi, zeros, trail."""
     energies = np.array(energies, dtype=float, ndmin=1)
     count = cells[0].size
