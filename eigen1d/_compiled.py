@@ -5,12 +5,16 @@ after a change in one kernel file, those above would silently run old code. The 
 kept in a folder named after what stands in all kernel files together.
 """
 
+import contextlib
 import hashlib
 import pathlib
 
+import llvmlite.binding
 import numba
 import numpy as np
-from numba import types
+from llvmlite import ir
+from numba import extending, types
+from numba.core import cgutils
 
 LANES = 16  # trial energies side by side: four AVX2 registers, enough to hide their latency
 LARGEST = 2.25  # of 2 m |V - E| h^2 in a short cell; < pi^2: at most one zero of psi in it
@@ -28,15 +32,8 @@ SOURCES = (
 )  # fmt: skip
 
 
-def _cache_folder():
-    digest = hashlib.sha256()
-    for name in SOURCES:
-        digest.update((_HERE / name).read_bytes())
-    base = numba.config.CACHE_DIR or _HERE / "__pycache__"
-    return str(pathlib.Path(base) / f"eigen1d-{digest.hexdigest()[:16]}")
-
-
-_FOLDER = _cache_folder()
+_DIGEST = hashlib.sha256(b"".join((_HERE / name).read_bytes() for name in SOURCES)).hexdigest()[:16]
+_FOLDER = str(pathlib.Path(numba.config.CACHE_DIR or _HERE / "__pycache__") / f"eigen1d-{_DIGEST}")
 
 
 def kernel(function=None, signature=None, fused=False, entry=False, inline=False):
@@ -52,13 +49,57 @@ def kernel(function=None, signature=None, fused=False, entry=False, inline=False
     options |= {"no_cpython_wrapper": not entry, "no_cfunc_wrapper": True, "forceinline": inline}
     if fused:
         options["fastmath"] = {"contract"}
-    others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER
-    try:
+    with _cache():
         if signature is None:
             return numba.njit(**options)(function)
         return numba.njit(signature, **options)(function)
+
+
+@contextlib.contextmanager
+def _cache():
+    """Let numba write to the folder of these sources."""
+    others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER
+    try:
+        yield
     finally:
         numba.config.CACHE_DIR = others
+
+
+def apart(signature):
+    """Compile for kernels that call it by its address, with arguments that fit `signature`.
+
+    Numba optimises a kernel together with all that it calls, and so sweeps once for each kernel
+    above them. What is behind an address is compiled once, which halves the first start. The name
+    that the address goes by is bound anew at each start.
+    """
+
+    def compiled(function):
+        with _cache():
+            code = numba.cfunc(signature, cache=True, error_model="numpy")(function)
+        name = f"eigen1d_{function.__name__}_{_DIGEST}"
+        llvmlite.binding.add_symbol(name, code.address)
+
+        @extending.intrinsic
+        def call(context, *given):
+            def generate(context, builder, given, arguments):
+                values = [
+                    context.cast(builder, value, kind, wanted)
+                    for value, kind, wanted in zip(
+                        cgutils.unpack_tuple(builder, arguments[0]), given.args[0], signature.args,
+                        strict=True,
+                    )
+                ]  # fmt: skip
+                kinds = [context.get_value_type(kind) for kind in signature.args]
+                kind = ir.FunctionType(context.get_value_type(signature.return_type), kinds)
+                target = cgutils.get_or_insert_function(builder.module, kind, name)
+                return builder.call(target, values)
+
+            return signature.return_type(types.StarArgTuple(given)), generate
+
+        call.py_func = function
+        return call
+
+    return compiled
 
 
 def given(dimensions):

@@ -16,7 +16,7 @@ Sweeping to the left is sweeping to the right through the mirror image, where ph
 import numpy as np
 from numba import types
 
-from ._compiled import CELLS, EDGE, FLAT, FLOATS, INTEGERS, LANES, SERIES_TERMS, kernel
+from ._compiled import CELLS, EDGE, FLAT, FLOATS, INTEGERS, LANES, SERIES_TERMS, apart, kernel
 from ._plan import shape
 from ._propagators import orders, propagated
 from ._straight import graded, straight
@@ -157,21 +157,13 @@ def _advance(
     return 1
 
 
-@kernel(
-    entry=True,
-    signature=types.void(
-        CELLS,
-        EDGE,
-        types.boolean,
-        FLOATS,
-        types.int64,
-        FLOATS,
-        FLOATS,
-        INTEGERS,
-        types.float64[:, :, ::1],
-        types.int64,
-    ),
-)
+_SWEEP = types.void(
+    CELLS, EDGE, types.boolean, FLOATS, types.int64, FLOATS, FLOATS, INTEGERS,
+    types.float64[:, :, ::1], types.int64,
+)  # fmt: skip
+
+
+@apart(_SWEEP)
 def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
     """Shoot from one edge to the node `stop`, for up to LANES energies at once.
 
@@ -226,6 +218,12 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     for lane in range(lanes):
         psi[lane], phi[lane] = state[lane], state[LANES + lane]
         zeros[lane] = int(state[4 * LANES + lane])
+
+
+@kernel(signature=_SWEEP, entry=True)
+def swept(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
+    """`sweep`, to be called from Python."""
+    sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
 
 
 @kernel

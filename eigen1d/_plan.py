@@ -22,6 +22,7 @@ from ._compiled import (
     LARGEST,
     SERIES_TERMS,
     TOO_LONG,
+    apart,
     given,
     kernel,
 )
@@ -393,13 +394,12 @@ def _ready(width, V, mass, per_energy, terms, floor, scale):
     return width, V, mass, per_energy, terms, at, table, span
 
 
-@kernel(
-    entry=True,
-    signature=types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE, types.int64))(
-        given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
-        types.boolean,
-    ),
-)  # fmt: skip
+_PREPARE = types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE, types.int64))(
+    given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64, types.boolean
+)
+
+
+@apart(_PREPARE)
 def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
     """Make cells ready for sweeps at energies from floor to top.
 
@@ -454,3 +454,9 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
         terms, floor, scale,
     )  # fmt: skip
     return cells, parts, left, right, _deepest(cells[1])
+
+
+@kernel(signature=_PREPARE, entry=True)
+def prepared(width, V, mass, per_energy, left, right, floor, top, whole):
+    """`prepare`, to be called from Python."""
+    return prepare(width, V, mass, per_energy, left, right, floor, top, whole)

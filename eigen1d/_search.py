@@ -13,7 +13,7 @@ import numpy as np
 from numba import types
 
 from ._angles import angles, homes
-from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, given, kernel
+from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, apart, given, kernel
 from ._plan import MOST_PARTS, prepare
 
 _SPARE = 1.5  # levels that the first guess of the highest energy allows beyond those wanted
@@ -385,13 +385,13 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
     return below, sure, energy, bracket, done
 
 
-@kernel(
-    entry=True,
-    signature=types.Tuple((types.int64, types.boolean, FLOATS, types.float64[:, ::1], INTEGERS))(
-        given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
-        types.int64, types.int64, types.int64, types.float64, types.float64, types.float64,
-    ),
+_FIND = types.Tuple((types.int64, types.boolean, FLOATS, types.float64[:, ::1], INTEGERS))(
+    given(1), given(2), given(2), given(2), EDGE, EDGE, types.float64, types.float64,
+    types.int64, types.int64, types.int64, types.float64, types.float64, types.float64,
 )  # fmt: skip
+
+
+@apart(_FIND)
 def find(
     width, V, mass, per_energy, left, right, floor, edge, first, last, most, bottom, top, resolution
 ):
@@ -432,9 +432,20 @@ def find(
         )
         if parts.shape[0] > MOST_PARTS:
             return -1, True, np.empty(0), np.empty((0, 2)), np.empty(0, np.int64)
-        found = _levels(
+        levels = _levels(
             cells, new_left, new_right, home, bottom, top, edge, first, last, most, resolution
         )
-        if found[0] >= last or top >= edge:
-            return found
+        if levels[0] >= last or top >= edge:
+            return levels
         top = min(edge, floor + 2.0 * (top - floor))
+
+
+@kernel(signature=_FIND, entry=True)
+def found(
+    width, V, mass, per_energy, left, right, floor, edge, first, last, most, bottom, top, resolution
+):
+    """`find`, to be called from Python."""
+    return find(
+        width, V, mass, per_energy, left, right, floor, edge, first, last, most, bottom, top,
+        resolution,
+    )  # fmt: skip

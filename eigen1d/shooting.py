@@ -120,7 +120,7 @@ class Search:
 
     def _find(self, first, last, bottom, top):
         """Return (below, energies, brackets), see `_search.find`, with what it leaves open."""
-        below, sure, energy, bracket, done = _search.find(
+        below, sure, energy, bracket, done = _search.found(
             *self.cells, self.left, self.right, self.floor, self.edge, first, last,
             MOST_LEVELS, bottom, top, self.resolution,
         )  # fmt: skip
@@ -195,7 +195,7 @@ class Ready:
 
     def __init__(self, search, top, whole):
         self.search = search
-        self.cells, self.parts, self.left, self.right, self.home = _plan.prepare(
+        self.cells, self.parts, self.left, self.right, self.home = _plan.prepared(
             *search.cells, search.left, search.right, search.floor, top, whole
         )
         if self.parts.shape[0] > _plan.MOST_PARTS:
@@ -223,7 +223,7 @@ class Ready:
         trail = np.empty((cells // stride + 1, 3, lanes))
         psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
         edge, stop = (self.right, 0) if backward else (self.left, cells)
-        _kernels.sweep(self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
+        _kernels.swept(self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         return trail
 
 
