@@ -49,10 +49,10 @@ def padded(given, way):
 
 def ready(given, low, high):
     """Cells as a sweep wants them, for energies from low to high."""
-    return _plan.prepare(*given, WALL, WALL, float(low), float(high), True)[0]
+    return _plan.prepared(*given, WALL, WALL, float(low), float(high), True)[0]
 
 
-def sweep(cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, run=_kernels.sweep):
+def sweep(cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, run=_kernels.swept):
     """Results of the kernel: psi, phi, zeros, trail."""
     energies = np.array(energies, dtype=float, ndmin=1)
     count = cells[0].size
@@ -65,7 +65,7 @@ def sweep(cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, ru
     return psi, phi, zeros, trail
 
 
-def swept(given, energies, **keywords):
+def crossed(given, energies, **keywords):
     """The same for cells that are not ready."""
     return sweep(ready(given, np.min(energies), np.max(energies)), energies, **keywords)
 

@@ -201,7 +201,7 @@ def test_a_table_does_not_depend_on_its_neighbours(kind):
 def test_tables_are_what_their_python_says(kind):
     """Coverage cannot see compiled lines; interpreted they must come to the same numbers."""
     given = padded(rough_cells(6, kind, count=3, longest=0.5), "propagated")
-    compiled = _plan.prepare(*given, WALL, WALL, LOW, HIGH, True)[0]
+    compiled = _plan.prepared(*given, WALL, WALL, LOW, HIGH, True)[0]
     python = PLAIN["prepare"](*given, WALL, WALL, LOW, HIGH, True)[0]
     np.testing.assert_array_equal(compiled[5], python[5])
     np.testing.assert_array_equal(compiled[7], python[7])
