@@ -6,7 +6,7 @@ Like `_kernels`, these know arrays only, in units with hbar = 1.
 import numpy as np
 from numba import types
 
-from ._compiled import CELLS, EDGE, FLOATS, INTEGERS, LANES, kernel
+from ._compiled import CELLS, EDGE, FLOATS, INTEGERS, LANES, block, floats, integers, kernel
 from ._kernels import is_positive, sweep
 
 _NODES = 4096  # at which the place of a state is looked for
@@ -63,9 +63,9 @@ def angles(cells, left, right, stop, energies, turn, angle):
     ----------
     .. [1] J. D. Pryce, Numerical Solution of Sturm-Liouville Problems (1993), ch. 5.
     """
-    trail = np.empty((0, 3, 0))
-    psi, phi, psi_r, phi_r = np.empty(LANES), np.empty(LANES), np.empty(LANES), np.empty(LANES)
-    zeros, zeros_r = np.empty(LANES, np.int64), np.empty(LANES, np.int64)
+    trail = block(0, 3, 0)
+    psi, phi, psi_r, phi_r = floats(LANES), floats(LANES), floats(LANES), floats(LANES)
+    zeros, zeros_r = integers(LANES), integers(LANES)
     for low in range(0, energies.size, LANES):
         lanes = min(LANES, energies.size - low)
         part = energies[low : low + lanes]
@@ -87,13 +87,13 @@ def homes(cells, left, right, energies):
     """
     count = cells[0].size
     stride = -(-(count + 1) // _NODES)
-    out = np.empty(energies.size, np.int64)
-    psi, phi, zeros = np.empty(LANES), np.empty(LANES), np.empty(LANES, np.int64)
+    out = integers(energies.size)
+    psi, phi, zeros = floats(LANES), floats(LANES), integers(LANES)
     for first in range(0, energies.size, LANES):
         lanes = min(LANES, energies.size - first)
         part = energies[first : first + lanes]
-        trail = np.zeros((count // stride + 1, 3, lanes))
-        trail_r = np.zeros((count // stride + 1, 3, lanes))
+        trail = block(count // stride + 1, 3, lanes)
+        trail_r = block(count // stride + 1, 3, lanes)
         sweep(cells, left, False, part, count, psi, phi, zeros, trail, stride)
         sweep(cells, right, True, part, 0, psi, phi, zeros, trail_r, stride)
         for lane in range(lanes):

@@ -112,3 +112,36 @@ FLOATS, INTEGERS, COUNTS = types.float64[::1], types.int64[::1], types.uint8[::1
 # Of cells: width, V, mass, mass_per_energy, terms; where in `table` the propagator of each begins
 # (-1: none; empty: none at all), `table`, and the span of energies (floor, scale) that it is for.
 CELLS = types.Tuple((given(1), *[given(2)] * 3, COUNTS, INTEGERS, FLOATS, FLOATS))
+
+
+# Arrays are made by these alone: np.empty compiles anew for each way in which a shape is written.
+
+
+@kernel(signature=FLOATS(types.int64))
+def floats(size):
+    """Numbers, not set."""
+    return np.empty(size)
+
+
+@kernel(signature=types.float64[:, ::1](types.int64, types.int64))
+def grid(rows, columns):
+    """Numbers in rows, not set."""
+    return np.empty((rows, columns))
+
+
+@kernel(signature=types.float64[:, :, ::1](types.int64, types.int64, types.int64))
+def block(planes, rows, columns):
+    """Numbers in planes of rows, not set."""
+    return np.empty((planes, rows, columns))
+
+
+@kernel(signature=INTEGERS(types.int64))
+def integers(size):
+    """Integers, not set."""
+    return np.empty(size, np.int64)
+
+
+@kernel(signature=COUNTS(types.int64))
+def counts(size):
+    """Small integers, not set."""
+    return np.empty(size, np.uint8)

@@ -3,7 +3,7 @@
 import numpy as np
 from numba import types
 
-from ._compiled import INTEGERS, given, kernel
+from ._compiled import INTEGERS, floats, given, grid, kernel
 from ._search import find
 
 _FLAGS = types.UniTuple(types.boolean, 3)
@@ -11,8 +11,8 @@ _FLAGS = types.UniTuple(types.boolean, 3)
 
 @kernel
 def _edge(is_open, V, mass):
-    edge = np.zeros(4)
-    edge[0], edge[1], edge[2] = 1.0 if is_open else 0.0, V, mass
+    edge = floats(4)
+    edge[0], edge[1], edge[2], edge[3] = 1.0 if is_open else 0.0, V, mass, 0.0
     return edge
 
 
@@ -47,8 +47,8 @@ def find_many(width, row, V, mass, flags, resolution, energy, bracket, done):
     last_row = V.shape[1] - 1
     columns = 1 if steps else 2
     m_columns = 1 if steps or mass.shape[1] == 1 else 2
-    V_cells, m_cells = np.empty((cells, columns)), np.empty((cells, m_columns))
-    no_alpha = np.empty((cells, 0))
+    V_cells, m_cells = grid(cells, columns), grid(cells, m_columns)
+    no_alpha = grid(cells, 0)
     for p in range(V.shape[0]):
         q = p if mass.shape[0] > 1 else 0
         m_last = mass.shape[1] - 1

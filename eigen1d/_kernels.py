@@ -16,7 +16,18 @@ Sweeping to the left is sweeping to the right through the mirror image, where ph
 import numpy as np
 from numba import types
 
-from ._compiled import CELLS, EDGE, FLAT, FLOATS, INTEGERS, LANES, SERIES_TERMS, apart, kernel
+from ._compiled import (
+    CELLS,
+    EDGE,
+    FLAT,
+    FLOATS,
+    INTEGERS,
+    LANES,
+    SERIES_TERMS,
+    apart,
+    floats,
+    kernel,
+)
 from ._plan import shape
 from ._propagators import orders, propagated
 from ._straight import graded, straight
@@ -188,7 +199,11 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     """
     lanes, count = energies.size, cells[0].size
     # All lanes are carried along, also unused ones: loops of a fixed length are vectors.
-    state, log = np.zeros(7 * LANES), np.zeros(LANES)
+    state, log = floats(7 * LANES), floats(LANES)
+    for i in range(7 * LANES):
+        state[i] = 0.0
+    for lane in range(LANES):
+        log[lane] = 0.0
     width, V, mass, per_energy, terms, at, table, span = cells
     constant, floor, scale = shape(V, mass, per_energy) == 0, span[0], span[1]
     node = count if backward else 0
@@ -313,7 +328,7 @@ def along(cells, energies, start_psi, start_phi, start_log, cell, fraction, back
     psi, phi : ndarray, shape (levels, points)
         Result.
     """
-    a, b = np.empty(SERIES_TERMS + 1), np.empty(SERIES_TERMS + 1)
+    a, b = floats(SERIES_TERMS + 1), floats(SERIES_TERMS + 1)
     for level in range(energies.size):
         last, terms = -1, 0
         for point in range(cell.size):

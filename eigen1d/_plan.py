@@ -18,12 +18,15 @@ from ._compiled import (
     EPS,
     FLAT,
     FLOATS,
-    INTEGERS,
     LARGEST,
     SERIES_TERMS,
     TOO_LONG,
     apart,
+    counts,
+    floats,
     given,
+    grid,
+    integers,
     kernel,
 )
 from ._propagators import orders, tabulate
@@ -131,7 +134,7 @@ def _sizes(V, mass, per_energy, h, low, high, work):
         q[j] = max(q[j], h * far * abs(per_energy[j]))
 
 
-@kernel
+@kernel(signature=types.boolean(given(1)))
 def _is_flat(c):
     for j in range(1, c.size):
         if c[j] != 0.0:
@@ -170,8 +173,8 @@ def _first_share(V, mass, per_energy, h, low, high):
 def _work(V, mass, per_energy):
     columns = max(V.shape[1], mass.shape[1], per_energy.shape[1])
     return (
-        np.empty(V.shape[1]), np.empty(mass.shape[1]), np.empty(per_energy.shape[1]),
-        np.empty((2, SERIES_TERMS + columns + 2)),
+        floats(V.shape[1]), floats(mass.shape[1]), floats(per_energy.shape[1]),
+        grid(2, SERIES_TERMS + columns + 2),
     )  # fmt: skip
 
 
@@ -246,7 +249,7 @@ def _trim(c, size):
 
 @kernel
 def _longer(rows):
-    out = np.empty((2 * rows.shape[0], rows.shape[1]))
+    out = grid(2 * rows.shape[0], rows.shape[1])
     for i in range(rows.shape[0]):
         for j in range(rows.shape[1]):
             out[i, j] = rows[i, j]
@@ -263,9 +266,9 @@ def _cut(width, V, mass, per_energy, low, high):
     work = _work(V, mass, per_energy)
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
     columns = m_end + per_energy.shape[1]
-    pairs = np.empty((2, columns))
-    parts = np.empty((2 * width.size + 64, columns))
-    starts, shares = np.empty(64), np.empty(64)
+    pairs = grid(2, columns)
+    parts = grid(2 * width.size + 64, columns)
+    starts, shares = floats(64), floats(64)
     count = 0
     most = _most(per_energy)
     for cell in range(width.size):
@@ -300,7 +303,7 @@ def _cut(width, V, mass, per_energy, low, high):
     return parts[:count]
 
 
-@kernel
+@kernel(signature=types.float64(given(1), given(2), given(2), types.int64, types.float64))
 def _decay(width, V, mass, cell, top):
     """Decay lengths at least of energies up to `top` in a cell; 0 if one may reach it."""
     V_low, m_low = V[cell, 0], mass[cell, 0]
@@ -316,8 +319,8 @@ def _decay(width, V, mass, cell, top):
 @kernel(signature=EDGE(given(2), given(2), types.int64, types.boolean))
 def _edge_inside(V, mass, cell, at_end):
     """An open edge at one end of a cell, where the barrier beyond is cut off."""
-    edge = np.zeros(4)
-    edge[0] = 1.0
+    edge = floats(4)
+    edge[0], edge[1], edge[2], edge[3] = 1.0, 0.0, 0.0, 0.0
     for j in range(V.shape[1] if at_end else 1):
         edge[1] += V[cell, j]
     for j in range(mass.shape[1] if at_end else 1):
@@ -381,15 +384,15 @@ def _ready(width, V, mass, per_energy, terms, floor, scale):
     total, any_table = 0, False
     for cell in range(terms.size):
         any_table = any_table or terms[cell] > ready
-    at = np.empty(terms.size if any_table else 0, np.int64)
+    at = integers(terms.size if any_table else 0)
     for cell in range(at.size):
         at[cell] = total if terms[cell] > ready else -1
         if terms[cell] > ready:
             total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
-    table = np.empty(total)
+    table = floats(total)
     if any_table:
         tabulate(width, V, mass, per_energy, terms, at, floor, scale, table)
-    span = np.empty(2)
+    span = floats(2)
     span[0], span[1] = floor, scale
     return width, V, mass, per_energy, terms, at, table, span
 
@@ -427,17 +430,17 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
     """
     # A power of two: energies in its units round nothing.
     scale = math.ldexp(1.0, math.frexp(top - floor)[1])
-    terms = np.empty(width.size, np.uint8)
+    terms = counts(width.size)
     if shape(V, mass, per_energy) < 2 and _plan(width, V, mass, per_energy, floor, top, terms):
         first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)
         cells = _ready(
             width[first:last], V[first:last], mass[first:last], per_energy[first:last],
             terms[first:last], floor, scale,
         )  # fmt: skip
-        return cells, np.empty((0, _HEAD)), left, right, _deepest(cells[1])
+        return cells, grid(0, _HEAD), left, right, _deepest(cells[1])
     parts = _cut(width, V, mass, per_energy, floor, top)
     if parts.shape[0] > MOST_PARTS:
-        nothing = np.empty(0, np.uint8)
+        nothing = counts(0)
         cells = _ready(width[:0], V[:0], mass[:0], per_energy[:0], nothing, floor, scale)
         return cells, parts, left, right, 0
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
@@ -446,7 +449,7 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
         top, whole,
     )  # fmt: skip
     parts = parts[first:last]
-    terms = np.empty(parts.shape[0], np.uint8)
+    terms = counts(parts.shape[0])
     for i in range(terms.size):
         terms[i] = int(parts[i, 3])
     cells = _ready(

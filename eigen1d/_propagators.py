@@ -9,15 +9,14 @@ The table of a cell with K powers holds T_11 - 1, T_12, T_21, T_22 - 1 for u^0, 
 Seen from the right, T_11 and T_22 change places: the determinant is 1, and phi changes its sign.
 """
 
-import numpy as np
 from numba import types
 
-from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, kernel
+from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, grid, integers, kernel
 
 _ORDERS = (6, 8, 12)  # powers of u: three kinds of cells
 
 
-@kernel
+@kernel(signature=types.int64(types.int64, types.boolean))
 def orders(terms, with_alpha):
     """How many powers of u a series of so many terms reaches, rounded up to what is compiled.
 
@@ -76,6 +75,15 @@ def propagated(state, table, start, backward, powers):
         _many(state, cell, first, last)
 
 
+@kernel
+def _zeros(rows, columns):
+    out = grid(rows, columns)
+    for i in range(rows):
+        for j in range(columns):
+            out[i, j] = 0.0
+    return out
+
+
 @kernel(fused=True, inline=True)
 def _set(out, row, c, i, series, k):
     for lane in range(LANES):
@@ -116,7 +124,7 @@ def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
                 phi[row, lane] *= share
 
 
-@kernel
+@kernel(signature=types.int64(given(2), types.int64))
 def _used(coefficients, cell):
     """How many coefficients a cell has up to the last that is not zero."""
     size = coefficients.shape[1]
@@ -150,12 +158,12 @@ def tabulate(width, V, mass, per_energy, terms, at, floor, scale, table):
         if at[cell] >= 0:
             most = max(most, terms[cell])
     powers = orders(most, columns > 0)
-    psi = np.zeros(((most + 1) * powers, LANES))
-    phi = np.zeros(((most + 1) * powers, LANES))
-    w = np.empty((V.shape[1] + 1, LANES))
-    m = np.empty((max(mass.shape[1], columns), LANES))
-    q = np.empty((columns, LANES))
-    members = np.zeros(LANES, np.int64)
+    psi = _zeros((most + 1) * powers, LANES)
+    phi = _zeros((most + 1) * powers, LANES)
+    w = grid(V.shape[1] + 1, LANES)
+    m = grid(max(mass.shape[1], columns), LANES)
+    q = grid(columns, LANES)
+    members = integers(LANES)
     cell = 0
     while cell < count:
         size, longest = 0, 1

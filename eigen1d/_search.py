@@ -13,7 +13,20 @@ import numpy as np
 from numba import types
 
 from ._angles import angles, homes
-from ._compiled import CELLS, EDGE, EPS, FLOATS, INTEGERS, LANES, apart, given, kernel
+from ._compiled import (
+    CELLS,
+    EDGE,
+    EPS,
+    FLOATS,
+    INTEGERS,
+    LANES,
+    apart,
+    floats,
+    given,
+    grid,
+    integers,
+    kernel,
+)
 from ._plan import MOST_PARTS, prepare
 
 _SPARE = 1.5  # levels that the first guess of the highest energy allows beyond those wanted
@@ -23,6 +36,9 @@ _NEAREST = 7  # samples that one interpolation uses at most
 # A guess is sure enough for two counts around it if its error is below this part of their distance.
 _SURE = 0.1
 _ROUNDS, _MORE_ROUNDS = 7, 60  # before another node is tried, and then
+_ROOM = types.Tuple((FLOATS, INTEGERS, FLOATS) * 2)  # samples, turn, angle; of a round, the same
+_OFF_CENTRE = 3  # beside the values of `done`, see `_verified`
+_FAILED, _RECENTRED = 1, 2  # what became of two counts around a level that did not settle it
 _BESIDE = 1e-10  # of the height: so close to the edge only the tail changes
 
 
@@ -34,7 +50,9 @@ def _phases(width, V, mass, per_energy, floor, energies):
     """Levels below each energy by the semiclassical phase, at a sample of places."""
     stride = -(-width.size // _SAMPLES)
     inside = max(1, _SAMPLES // width.size)
-    phases = np.zeros(energies.size)
+    phases = floats(energies.size)
+    for k in range(energies.size):
+        phases[k] = 0.0
     for start in range(0, width.size, stride):
         # Not at even distances: a table may have a period.
         cell = min(start + 13 * (start // stride) % stride, width.size - 1)
@@ -62,7 +80,7 @@ def _top_for(width, V, mass, per_energy, floor, edge, count):
         span, heaviest = span + width[cell], max(heaviest, m)
     # So high it lies if V is flat, between walls; no lower otherwise.
     low, high = 0.0, (np.pi * max(count - 1.0, 1.0) / span) ** 2 / (2.0 * heaviest)
-    energy = np.empty(1)
+    energy = floats(1)
     while floor + high < edge:
         energy[0] = floor + high
         if not _phases(width, V, mass, per_energy, floor, energy)[0] < count:
@@ -84,13 +102,13 @@ def _top_for(width, V, mass, per_energy, floor, edge, count):
 def _spread(cells, bottom, top, most):
     """Energies above bottom, the last at top, evenly by phase: two a level, at least LANES."""
     width, V, mass, per_energy = cells[:4]
-    energies = np.empty(_STEPS + 1)
+    energies = floats(_STEPS + 1)
     for k in range(_STEPS + 1):
         energies[k] = bottom + (top - bottom) * (k / _STEPS) ** 2
     phases = _phases(width, V, mass, per_energy, cells[7][0], energies)
     total = phases[_STEPS] - phases[0]
     size = LANES * int(np.ceil(max(min(2.0 * total, most), 1.0) / LANES))
-    points = np.empty(size)
+    points = floats(size)
     k = 0
     for i in range(size):
         x = (i + 1.0) / size
@@ -143,7 +161,7 @@ def _guess(samples, turn, angle, used, i, n, edge):
     Inverse interpolation by E. H. Neville's scheme, with the angle as abscissa and the nearest
     samples first. The error is the last correction; infinite where the angle is no help.
     """
-    x, y = np.empty(_NEAREST), np.empty(_NEAREST)
+    x, y = floats(_NEAREST), floats(_NEAREST)
     low, high = i, i + 1
     value, error = 0.0, np.inf
     for size in range(min(_NEAREST, used)):
@@ -236,7 +254,8 @@ def _merge(samples, turn, angle, used, points, new_turn, new_angle, size):
 def _verified(turn, angle, points, k, n, target, energy, bracket, i):
     """Take two counts around a target, at points k and k + 1, as the bracket of level n.
 
-    Returns whether that closes the matter: 1 for a level alone, 2 for one of several, else 0.
+    Returns whether that closes the matter: 1 for a level alone, 2 for one of several, 0 if not,
+    _OFF_CENTRE if the level lies near an end.
     """
     below, above = _count(turn[k], angle[k]), _count(turn[k + 1], angle[k + 1])
     if below > n or above <= n:
@@ -248,20 +267,25 @@ def _verified(turn, angle, points, k, n, target, energy, bracket, i):
     f, f_high = _above(turn[k], angle[k], n), _above(turn[k + 1], angle[k + 1], n)
     if f_high > f:
         energy[i] = low + (high - low) * (-f / (f_high - f))
-    return 1 if abs(energy[i] - target) <= 0.15 * (high - low) else 0
+    return 1 if abs(energy[i] - target) <= 0.15 * (high - low) else _OFF_CENTRE
 
 
-@kernel
+@kernel(
+    signature=types.void(
+        CELLS, EDGE, EDGE, types.int64, types.float64, types.int64, types.float64, _ROOM,
+        types.int64, FLOATS, types.float64[:, :], INTEGERS, types.int64,
+    )
+)  # fmt: skip
 def _converge(
     cells, left, right, stop, edge, first, resolution, room, used, energy, bracket, done, rounds
 ):
     """Close the brackets of levels first, first + 1, ... from the samples in `room`."""
     samples, turn, angle, points, new_turn, new_angle = room
     floor, size = cells[7][0], energy.size
-    target, place = np.empty(size), np.empty(size, np.int64)
-    width, before, missed = np.empty(size), np.empty(size), np.zeros(size, np.bool_)
+    target, place = floats(size), integers(size)
+    width, before, missed = floats(size), floats(size), integers(size)
     for i in range(size):
-        width[i], before[i] = np.inf, np.inf
+        width[i], before[i], missed[i] = np.inf, np.inf, 0
     for _ in range(rounds):
         active = 0
         for i in range(size):
@@ -279,9 +303,12 @@ def _converge(
             low, high = samples[k], samples[k + 1]
             guess, error = _guess(samples, turn, angle, used, k, n, edge)
             half = _half_width(guess, resolution, floor)
-            if missed[i]:
+            if missed[i] == _RECENTRED:
+                guess, error = energy[i], 0.0
+            elif missed[i] == _FAILED:
                 error = np.inf
-            missed[i] = False
+            if missed[i] != _RECENTRED:
+                missed[i] = 0
             if high - low <= half or error <= _SURE * half:
                 target[i], place[i] = guess, new
                 points[new] = max(guess - half, floor)
@@ -300,7 +327,12 @@ def _converge(
                 done[i] = _verified(
                     new_turn, new_angle, points, place[i], first + i, target[i], energy, bracket, i
                 )
-                missed[i] = done[i] == 0
+                if done[i] == _OFF_CENTRE:
+                    # Once more around the root of the two angles; they may be steep, not straight.
+                    done[i] = 1 if missed[i] == _RECENTRED else 0
+                    missed[i] = _RECENTRED
+                else:
+                    missed[i] = _FAILED
         _merge(samples, turn, angle, used, points, new_turn, new_angle, new)
         used += new
     for i in range(size):
@@ -310,44 +342,49 @@ def _converge(
             energy[i] = 0.5 * (samples[k] + samples[k + 1])
 
 
-@kernel
+@kernel(signature=_ROOM(types.int64, types.int64, types.int64))
 def _room(used, levels, rounds):
     """Arrays for all samples of some rounds, and for the points of one."""
     most = 6 * levels + 4 * LANES  # two counts each, or cuts of each bracket and its levels
     total = used + rounds * most
     return (
-        np.empty(total), np.empty(total, np.int64), np.empty(total),
-        np.empty(most), np.empty(most, np.int64), np.empty(most),
+        floats(total), integers(total), floats(total),
+        floats(most), integers(most), floats(most),
     )  # fmt: skip
 
 
 @kernel
 def _settle(cells, left, right, edge, first, resolution, energy, bracket, done):
-    """Close brackets that are still wide, one by one, with solutions that meet where states live."""
-    todo = np.empty(done.size)
-    count = 0
-    for i in range(done.size):
-        if done[i] == 0:
-            todo[count] = energy[i]
-            count += 1
-    if count == 0:
-        return
-    stops = homes(cells, left, right, todo[:count])
+    """Close brackets that are still wide, one by one, with solutions that meet where states live.
+
+    A wide bracket may name the place of a neighbour. It is asked for again when it is narrower.
+    """
+    todo = floats(done.size)
     room = _room(LANES, 1, _MORE_ROUNDS)
     samples, turn, angle = room[:3]
-    count = 0
-    for i in range(done.size):
-        if done[i] != 0:
-            continue
-        for k in range(LANES):
-            samples[k] = bracket[i, 0] + (bracket[i, 1] - bracket[i, 0]) * (k / (LANES - 1.0))
-        samples[LANES - 1] = bracket[i, 1]
-        angles(cells, left, right, stops[count], samples[:LANES], turn, angle)
-        _converge(
-            cells, left, right, stops[count], edge, first + i, resolution, room, LANES,
-            energy[i : i + 1], bracket[i : i + 1], done[i : i + 1], _MORE_ROUNDS,
-        )  # fmt: skip
-        count += 1
+    for rounds in (_ROUNDS, _ROUNDS, _MORE_ROUNDS):
+        count = 0
+        for i in range(done.size):
+            if done[i] == 0:
+                todo[count] = energy[i]
+                count += 1
+        if count == 0:
+            return
+        stops = homes(cells, left, right, todo[:count])
+        count = 0
+        for i in range(done.size):
+            if done[i] != 0:
+                continue
+            for k in range(LANES):
+                share = k / (LANES - 1.0)
+                samples[k] = bracket[i, 0] + (bracket[i, 1] - bracket[i, 0]) * share
+            samples[LANES - 1] = bracket[i, 1]
+            angles(cells, left, right, stops[count], samples[:LANES], turn, angle)
+            _converge(
+                cells, left, right, stops[count], edge, first + i, resolution, room, LANES,
+                energy[i : i + 1], bracket[i : i + 1], done[i : i + 1], rounds,
+            )  # fmt: skip
+            count += 1
 
 
 @kernel
@@ -358,7 +395,7 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
     size = points.size
     if top == edge:
         points[size - 2] = max(points[size - 3], edge - _BESIDE * (edge - floor))
-    turn, angle = np.empty(size, np.int64), np.empty(size)
+    turn, angle = integers(size), floats(size)
     angles(cells, left, right, stop, points, turn, angle)
     below, sure = _count(turn[size - 1], angle[size - 1]), True
     if top == edge:
@@ -374,14 +411,19 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
         angles(cells, left, right, stop, room[0][:1], room[1], room[2])
     for i in range(size):
         room[0][i + 1], room[1][i + 1], room[2][i + 1] = points[i], turn[i], angle[i]
-    energy, bracket = np.empty(count), np.empty((count, 2))
-    done = np.zeros(count, np.int64)
+    energy, bracket = floats(count), grid(count, 2)
+    done = integers(count)
+    for i in range(count):
+        done[i] = 0
     if count > 0:
         _converge(
             cells, left, right, stop, edge, first, resolution, room, size + 1, energy, bracket,
             done, _ROUNDS,
         )  # fmt: skip
         _settle(cells, left, right, edge, first, resolution, energy, bracket, done)
+        # Of levels that doubles cannot part, rounding may put the upper one first.
+        for i in range(1, count):
+            energy[i] = min(max(energy[i], energy[i - 1]), max(bracket[i, 1], energy[i]))
     return below, sure, energy, bracket, done
 
 
@@ -431,7 +473,7 @@ def find(
             width, V, mass, per_energy, left, right, floor, top, False
         )
         if parts.shape[0] > MOST_PARTS:
-            return -1, True, np.empty(0), np.empty((0, 2)), np.empty(0, np.int64)
+            return -1, True, floats(0), grid(0, 2), integers(0)
         levels = _levels(
             cells, new_left, new_right, home, bottom, top, edge, first, last, most, resolution
         )
