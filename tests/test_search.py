@@ -223,9 +223,16 @@ def test_counts_at_the_edge_are_sure_or_say_so():
             continue
         below, sure, *_ = well.find(0, 1000)
         assert below == problem.bound or not sure
-    box = table([1.0, 2.0, 1.0], [[0.0], [-((np.pi / 4) ** 2) / 2], [0.0]], [[1.0]] * 3)
     edge = np.array([1.0, 0.0, 1.0, 0.0])
-    exact = Wells(box, edge, edge, box[1][1, 0], 0.0)  # level 1 exactly at the edge
-    assert not exact.find(0, 10)[1]
+    for beyond in (-0.1, -1e-9, -1e-14, 0.0, 1e-14, 1e-9, 0.1):
+        # Level 1 is bound from k = pi / 2 on, for a well of half width 1.
+        depth = (np.pi / 2 * (1 + beyond)) ** 2 / 2
+        box = table([1.0, 2.0, 1.0], [[0.0], [-depth], [0.0]], [[1.0]] * 3)
+        below, sure, *_ = Wells(box, edge, edge, -depth, 0.0).find(0, 10)
+        assert below == (2 if beyond > 0 else 1) or not sure
+        if abs(beyond) < 1e-12:
+            assert not sure
+        if abs(beyond) > 1e-2:
+            assert sure
     for name in ("rough", "stack-of-20", "alpha"):
         assert Wells.of(NAMED[name].make()).find(0, 1000)[1]
