@@ -28,7 +28,7 @@ def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
 
 @kernel
 def _scale(cells, stop, energy):
-    """A scale of phi / psi at a node: any positive number is right, the local wave number smooth."""
+    """A scale of phi / psi at a node: any positive one is right, the local wave number smooth."""
     _, V, mass, per_energy, _, _, _, span = cells
     cell = min(stop, V.shape[0] - 1)
     m = mass[cell, 0]
@@ -40,7 +40,7 @@ def _scale(cells, stop, energy):
 
 @kernel(
     entry=True,
-    signature=types.void(CELLS, EDGE, EDGE, types.int64, FLOATS, INTEGERS, FLOATS),
+    signature=types.void(CELLS, EDGE, EDGE, INTEGERS, FLOATS, INTEGERS, FLOATS),
 )
 def angles(cells, left, right, stop, energies, turn, angle):
     """Shoot from both edges and compare the two solutions where they meet.
@@ -51,7 +51,7 @@ def angles(cells, left, right, stop, energies, turn, angle):
 
     Parameters
     ----------
-    stop : int
+    stop : ndarray of int64, shape (k,)
         Node where they meet.
     energies : ndarray, shape (k,), any number
     turn : ndarray of int64, shape (k,)
@@ -69,12 +69,13 @@ def angles(cells, left, right, stop, energies, turn, angle):
     for low in range(0, energies.size, LANES):
         lanes = min(LANES, energies.size - low)
         part = energies[low : low + lanes]
-        sweep(cells, left, False, part, stop, psi, phi, zeros, trail, 1)
-        sweep(cells, right, True, part, stop, psi_r, phi_r, zeros_r, trail, 1)
+        stops = stop[low : low + lanes]
+        sweep(cells, left, False, part, stops, psi, phi, zeros, trail, 1)
+        sweep(cells, right, True, part, stops, psi_r, phi_r, zeros_r, trail, 1)
         for lane in range(lanes):
             turn[low + lane], angle[low + lane] = _joined(
                 psi[lane], phi[lane], psi_r[lane], phi_r[lane], zeros[lane] + zeros_r[lane],
-                _scale(cells, stop, part[lane]),
+                _scale(cells, stops[lane], part[lane]),
             )  # fmt: skip
 
 
@@ -87,15 +88,17 @@ def homes(cells, left, right, energies):
     """
     count = cells[0].size
     stride = -(-(count + 1) // _NODES)
-    out = integers(energies.size)
+    out, starts, ends = integers(energies.size), integers(LANES), integers(LANES)
     psi, phi, zeros = floats(LANES), floats(LANES), integers(LANES)
     for first in range(0, energies.size, LANES):
         lanes = min(LANES, energies.size - first)
         part = energies[first : first + lanes]
         trail = block(count // stride + 1, 3, lanes)
         trail_r = block(count // stride + 1, 3, lanes)
-        sweep(cells, left, False, part, count, psi, phi, zeros, trail, stride)
-        sweep(cells, right, True, part, 0, psi, phi, zeros, trail_r, stride)
+        for lane in range(lanes):
+            ends[lane], starts[lane] = count, 0
+        sweep(cells, left, False, part, ends[:lanes], psi, phi, zeros, trail, stride)
+        sweep(cells, right, True, part, starts[:lanes], psi, phi, zeros, trail_r, stride)
         for lane in range(lanes):
             sigma = np.sqrt(2.0 * max(part[lane] - cells[7][0], _TINY) / cells[2][0, 0])
             largest = -np.inf

@@ -168,15 +168,30 @@ def _advance(
     return 1
 
 
+@kernel
+def _taken(state, stop, node, backward, psi, phi, zeros):
+    """Take the results of lanes that end at a node; the next such node, -1 if there is none."""
+    due = -1
+    for lane in range(stop.size):
+        if stop[lane] == node:
+            psi[lane], phi[lane] = state[lane], state[LANES + lane]
+            zeros[lane] = int(state[4 * LANES + lane])
+        elif backward and stop[lane] < node:
+            due = max(due, stop[lane])
+        elif not backward and stop[lane] > node:
+            due = stop[lane] if due < 0 else min(due, stop[lane])
+    return due
+
+
 _SWEEP = types.void(
-    CELLS, EDGE, types.boolean, FLOATS, types.int64, FLOATS, FLOATS, INTEGERS,
+    CELLS, EDGE, types.boolean, FLOATS, INTEGERS, FLOATS, FLOATS, INTEGERS,
     types.float64[:, :, ::1], types.int64,
 )  # fmt: skip
 
 
 @apart(_SWEEP)
 def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride):
-    """Shoot from one edge to the node `stop`, for up to LANES energies at once.
+    """Shoot from one edge to the nodes `stop`, for up to LANES energies at once.
 
     Parameters
     ----------
@@ -187,8 +202,8 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
     backward : bool
         From the right edge to the left; phi then has the mirror image's sign.
     energies : ndarray, shape (lanes,)
-    stop : int
-        Node (0 to cells) at which the result is taken.
+    stop : ndarray of int64, shape (lanes,)
+        Node (0 to cells) at which each lane's result is taken.
     psi, phi : ndarray, shape (lanes or more,)
         Result: the solution at `stop`, to a positive factor.
     zeros : ndarray of int64, shape (lanes or more,)
@@ -212,6 +227,9 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         state[5 * LANES + lane] = energy
         state[6 * LANES + lane] = (energy - floor) / scale
         state[lane], state[LANES + lane] = _start(edge, energy)
+    due = stop[0]  # the next node where a lane ends
+    for lane in range(lanes):
+        due = max(due, stop[lane]) if backward else min(due, stop[lane])
     age = 0  # steps since amplitudes were last brought into range
     while True:
         if trail.shape[0] > 0 and node % stride == 0:
@@ -219,8 +237,10 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
                 trail[node // stride, 0, lane] = state[lane]
                 trail[node // stride, 1, lane] = state[LANES + lane]
                 trail[node // stride, 2, lane] = log[lane]
-        if node == stop:
-            break
+        if node == due:
+            due = _taken(state, stop, node, backward, psi, phi, zeros)
+            if due < 0:
+                return
         cell = node - 1 if backward else node
         age += _advance(
             width, V, mass, per_energy, terms, at, table, constant, cell, backward, state, lanes,
@@ -230,9 +250,6 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
             _rescale(state, log)
             age = 0
         node += -1 if backward else 1
-    for lane in range(lanes):
-        psi[lane], phi[lane] = state[lane], state[LANES + lane]
-        zeros[lane] = int(state[4 * LANES + lane])
 
 
 @kernel(signature=_SWEEP, entry=True)

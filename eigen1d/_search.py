@@ -21,6 +21,7 @@ from ._compiled import (
     INTEGERS,
     LANES,
     apart,
+    block,
     floats,
     given,
     grid,
@@ -36,7 +37,7 @@ _NEAREST = 7  # samples that one interpolation uses at most
 # A guess is sure enough for two counts around it if its error is below this part of their distance.
 _SURE = 0.1
 _ROUNDS, _MORE_ROUNDS = 7, 60  # before another node is tried, and then
-_ROOM = types.Tuple((FLOATS, INTEGERS, FLOATS) * 2)  # samples, turn, angle; of a round, the same
+_GROUP = 64  # levels that are settled together
 _OFF_CENTRE = 3  # beside the values of `done`, see `_verified`
 _FAILED, _RECENTRED = 1, 2  # what became of two counts around a level that did not settle it
 _BESIDE = 1e-10  # of the height: so close to the edge only the tail changes
@@ -155,14 +156,14 @@ def _energy(offset, origin, edge):
 
 
 @kernel
-def _guess(samples, turn, angle, used, i, n, edge):
+def _guess(table, used, i, n, edge):
     """Where the angle reaches level n between samples i and i + 1: (energy, error).
 
     Inverse interpolation by E. H. Neville's scheme, with the angle as abscissa and the nearest
     samples first. The error is the last correction; infinite where the angle is no help.
     """
     x, y = floats(_NEAREST), floats(_NEAREST)
-    low, high = i, i + 1
+    low, high, origin = i, i + 1, table[0, i]
     value, error = 0.0, np.inf
     for size in range(min(_NEAREST, used)):
         if low >= 0 and (size % 2 == 0 or high >= used):
@@ -171,8 +172,8 @@ def _guess(samples, turn, angle, used, i, n, edge):
         else:
             k = high
             high += 1
-        x[size] = _above(turn[k], angle[k], n)
-        y[size] = _offset(samples[k], samples[i], edge)
+        x[size] = _above(table[1, k], table[2, k], n)
+        y[size] = _offset(table[0, k], origin, edge)
         for j in range(size - 1, -1, -1):
             gap = x[size] - x[j]
             y[j] = (x[size] * y[j] - x[j] * y[j + 1]) / gap if gap != 0.0 else np.nan
@@ -182,19 +183,19 @@ def _guess(samples, turn, angle, used, i, n, edge):
         if size > 0:
             error = correction
         value = y[0]
-    energy = _energy(value, samples[i], edge)
-    if not samples[i] < energy < samples[i + 1]:
-        return 0.5 * (samples[i] + samples[i + 1]), np.inf
-    return energy, abs(_energy(value + error, samples[i], edge) - energy)
+    energy = _energy(value, origin, edge)
+    if not origin < energy < table[0, i + 1]:
+        return 0.5 * (origin + table[0, i + 1]), np.inf
+    return energy, abs(_energy(value + error, origin, edge) - energy)
 
 
 @kernel
-def _bracket(turn, angle, used, n):
+def _bracket(table, used, n):
     """The sample below level n whose neighbour is above it."""
     low, high = 0, used - 1
     while high - low > 1:
         middle = (low + high) // 2
-        if _count(turn[middle], angle[middle]) > n:
+        if _count(table[1, middle], table[2, middle]) > n:
             high = middle
         else:
             low = middle
@@ -228,25 +229,25 @@ def _cuts(points, low, high, guess, error, each):
 
 
 @kernel
-def _merge(samples, turn, angle, used, points, new_turn, new_angle, size):
-    """Insert new samples in their order; points come nearly sorted."""
-    for i in range(1, size):
+def _merge(table, used, points, turn, angle, first, last):
+    """Insert the points first <= i < last in their order; they come nearly sorted."""
+    for i in range(first + 1, last):
         k = i
-        while k > 0 and points[k - 1] > points[k]:
+        while k > first and points[k - 1] > points[k]:
             points[k - 1], points[k] = points[k], points[k - 1]
-            new_turn[k - 1], new_turn[k] = new_turn[k], new_turn[k - 1]
-            new_angle[k - 1], new_angle[k] = new_angle[k], new_angle[k - 1]
+            turn[k - 1], turn[k] = turn[k], turn[k - 1]
+            angle[k - 1], angle[k] = angle[k], angle[k - 1]
             k -= 1
-    old, new = used - 1, size - 1
-    for place in range(used + size - 1, -1, -1):
-        if new < 0:
+    old, new = used - 1, last - 1
+    for place in range(used + last - first - 1, -1, -1):
+        if new < first:
             return
-        if old >= 0 and samples[old] > points[new]:
-            samples[place], turn[place], angle[place] = samples[old], turn[old], angle[old]
+        if old >= 0 and table[0, old] > points[new]:
+            for row in range(3):
+                table[row, place] = table[row, old]
             old -= 1
         else:
-            samples[place], turn[place] = points[new], new_turn[new]
-            angle[place] = new_angle[new]
+            table[0, place], table[1, place], table[2, place] = points[new], turn[new], angle[new]
             new -= 1
 
 
@@ -272,60 +273,70 @@ def _verified(turn, angle, points, k, n, target, energy, bracket, i):
 
 @kernel(
     signature=types.void(
-        CELLS, EDGE, EDGE, types.int64, types.float64, types.int64, types.float64, _ROOM,
-        types.int64, FLOATS, types.float64[:, :], INTEGERS, types.int64,
+        CELLS, EDGE, EDGE, INTEGERS, types.float64, INTEGERS, types.float64,
+        types.float64[:, :, ::1], INTEGERS, FLOATS, types.float64[:, ::1], INTEGERS, types.int64,
     )
 )  # fmt: skip
 def _converge(
-    cells, left, right, stop, edge, first, resolution, room, used, energy, bracket, done, rounds
+    cells, left, right, stop, edge, level, resolution, tables, used, energy, bracket, done, rounds
 ):
-    """Close the brackets of levels first, first + 1, ... from the samples in `room`."""
-    samples, turn, angle, points, new_turn, new_angle = room
+    """Close the brackets of levels, ascending, from samples: `used` ones in each of `tables`.
+
+    One table for all levels, with solutions that meet at one node, or one table and one `stop` for
+    each level. Rows of a table: energies, ascending; turn; angle. What is not done in the end keeps
+    the bracket between two samples.
+    """
     floor, size = cells[7][0], energy.size
-    target, place = floats(size), integers(size)
+    most = (6 if stop.size == 1 else LANES) * size + 4 * LANES  # points of a round
+    points, turn, angle, stops = floats(most), integers(most), floats(most), integers(most)
+    target, place, begin = floats(size), integers(size), integers(size + 1)
     width, before, missed = floats(size), floats(size), integers(size)
     for i in range(size):
         width[i], before[i], missed[i] = np.inf, np.inf, 0
-    for _ in range(rounds):
-        active = 0
+    active = 0
+    for count in range(rounds + 1):
+        still = 0
         for i in range(size):
-            if done[i] == 0:
-                active += 1
-        if active == 0:
-            return
+            still += 1 if done[i] == 0 else 0
+        # With one node for all, levels that do not follow the others are better met elsewhere.
+        if still == 0 or count == rounds or (stop.size == 1 and count > 2 and still == active):
+            break
+        active = still
         each, new, previous = max(1, LANES // active), 0, -1
         for i in range(size):
-            place[i] = -1
+            place[i], begin[i] = -1, new
             if done[i] != 0:
                 continue
-            n = first + i
-            k = _bracket(turn, angle, used, n)
-            low, high = samples[k], samples[k + 1]
-            guess, error = _guess(samples, turn, angle, used, k, n, edge)
+            t = 0 if stop.size == 1 else i
+            k = _bracket(tables[t], used[t], level[i])
+            low, high = tables[t, 0, k], tables[t, 0, k + 1]
+            guess, error = _guess(tables[t], used[t], k, level[i], edge)
             half = _half_width(guess, resolution, floor)
             if missed[i] == _RECENTRED:
                 guess, error = energy[i], 0.0
             elif missed[i] == _FAILED:
-                error = np.inf
-            if missed[i] != _RECENTRED:
-                missed[i] = 0
+                error, missed[i] = np.inf, 0
             if high - low <= half or error <= _SURE * half:
                 target[i], place[i] = guess, new
                 points[new] = max(guess - half, floor)
                 points[new + 1] = min(guess + half, edge)
                 new += 2
-            elif k != previous:
-                inside = _count(turn[k + 1], angle[k + 1]) - _count(turn[k], angle[k])
+            elif k != previous or stop.size > 1:
+                inside = _count(tables[t, 1, k + 1], tables[t, 2, k + 1])
+                inside -= _count(tables[t, 1, k], tables[t, 2, k])
                 several = each
                 if inside > 1 or (high - low > 0.5 * width[i] and error > 0.1 * before[i]):
-                    several = max(each, min(inside + 2, LANES - 1))
+                    several = max(each, min(int(inside) + 2, LANES - 1))
                 new += _cuts(points[new:], low, high, guess, error, several)
             width[i], before[i], previous = high - low, error, k
-        angles(cells, left, right, stop, points[:new], new_turn, new_angle)
+            for k in range(begin[i], new):
+                stops[k] = stop[t]
+        begin[size] = new
+        angles(cells, left, right, stops[:new], points[:new], turn, angle)
         for i in range(size):
             if place[i] >= 0:
                 done[i] = _verified(
-                    new_turn, new_angle, points, place[i], first + i, target[i], energy, bracket, i
+                    turn, angle, points, place[i], level[i], target[i], energy, bracket, i
                 )
                 if done[i] == _OFF_CENTRE:
                     # Once more around the root of the two angles; they may be steep, not straight.
@@ -333,58 +344,71 @@ def _converge(
                     missed[i] = _RECENTRED
                 else:
                     missed[i] = _FAILED
-        _merge(samples, turn, angle, used, points, new_turn, new_angle, new)
-        used += new
+        for t in range(stop.size):
+            first, last = (0, new) if stop.size == 1 else (begin[t], begin[t + 1])
+            _merge(tables[t], used[t], points, turn, angle, first, last)
+            used[t] += last - first
     for i in range(size):
         if done[i] == 0:
-            k = _bracket(turn, angle, used, first + i)
-            bracket[i, 0], bracket[i, 1] = samples[k], samples[k + 1]
-            energy[i] = 0.5 * (samples[k] + samples[k + 1])
-
-
-@kernel(signature=_ROOM(types.int64, types.int64, types.int64))
-def _room(used, levels, rounds):
-    """Arrays for all samples of some rounds, and for the points of one."""
-    most = 6 * levels + 4 * LANES  # two counts each, or cuts of each bracket and its levels
-    total = used + rounds * most
-    return (
-        floats(total), integers(total), floats(total),
-        floats(most), integers(most), floats(most),
-    )  # fmt: skip
+            t = 0 if stop.size == 1 else i
+            k = _bracket(tables[t], used[t], level[i])
+            bracket[i, 0], bracket[i, 1] = tables[t, 0, k], tables[t, 0, k + 1]
+            energy[i] = 0.5 * (bracket[i, 0] + bracket[i, 1])
 
 
 @kernel
-def _settle(cells, left, right, edge, first, resolution, energy, bracket, done):
-    """Close brackets that are still wide, one by one, with solutions that meet where states live.
+def _settle(cells, left, right, edge, level, resolution, energy, bracket, done):
+    """Close brackets that are still wide, with solutions that meet where each state lives.
 
     A wide bracket may name the place of a neighbour. It is asked for again when it is narrower.
     """
-    todo = floats(done.size)
-    room = _room(LANES, 1, _MORE_ROUNDS)
-    samples, turn, angle = room[:3]
+    part, size = integers(_GROUP), 0
     for rounds in (_ROUNDS, _ROUNDS, _MORE_ROUNDS):
-        count = 0
-        for i in range(done.size):
-            if done[i] == 0:
-                todo[count] = energy[i]
-                count += 1
-        if count == 0:
-            return
-        stops = homes(cells, left, right, todo[:count])
-        count = 0
-        for i in range(done.size):
-            if done[i] != 0:
-                continue
-            for k in range(LANES):
-                share = k / (LANES - 1.0)
-                samples[k] = bracket[i, 0] + (bracket[i, 1] - bracket[i, 0]) * share
-            samples[LANES - 1] = bracket[i, 1]
-            angles(cells, left, right, stops[count], samples[:LANES], turn, angle)
-            _converge(
-                cells, left, right, stops[count], edge, first + i, resolution, room, LANES,
-                energy[i : i + 1], bracket[i : i + 1], done[i : i + 1], rounds,
-            )  # fmt: skip
-            count += 1
+        for i in range(done.size + 1):
+            if i < done.size and done[i] == 0:
+                part[size] = i
+                size += 1
+            if size == _GROUP or (i == done.size and size > 0):
+                _settle_part(
+                    cells, left, right, edge, level, resolution, energy, bracket, done,
+                    part[:size], rounds,
+                )  # fmt: skip
+                size = 0
+
+
+@kernel
+def _settle_part(
+    cells, left, right, edge, level, resolution, energy, bracket, done, part, rounds
+):
+    """Close brackets of some levels, each with a table of its own."""
+    size, each = part.size, max(2, LANES // part.size)
+    levels, middles = integers(size), floats(size)
+    for i in range(size):
+        levels[i], middles[i] = level[part[i]], energy[part[i]]
+    stop = homes(cells, left, right, middles)
+    tables = block(size, 3, each + rounds * LANES)
+    points, stops = floats(size * each), integers(size * each)
+    turn, angle, used = integers(size * each), floats(size * each), integers(size)
+    for i in range(size):
+        low, high = bracket[part[i], 0], bracket[part[i], 1]
+        for k in range(each):
+            points[i * each + k] = low + (high - low) * (k / (each - 1.0)) if k < each - 1 else high
+            stops[i * each + k] = stop[i]
+    angles(cells, left, right, stops, points, turn, angle)
+    for i in range(size):
+        used[i] = 0
+        _merge(tables[i], 0, points, turn, angle, i * each, (i + 1) * each)
+        used[i] = each
+    new_energy, new_bracket, new_done = floats(size), grid(size, 2), integers(size)
+    for i in range(size):
+        new_done[i] = 0
+    _converge(
+        cells, left, right, stop, edge, levels, resolution, tables, used, new_energy, new_bracket,
+        new_done, rounds,
+    )  # fmt: skip
+    for i in range(size):
+        energy[part[i]], done[part[i]] = new_energy[i], new_done[i]
+        bracket[part[i], 0], bracket[part[i], 1] = new_bracket[i, 0], new_bracket[i, 1]
 
 
 @kernel
@@ -395,8 +419,10 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
     size = points.size
     if top == edge:
         points[size - 2] = max(points[size - 3], edge - _BESIDE * (edge - floor))
-    turn, angle = integers(size), floats(size)
-    angles(cells, left, right, stop, points, turn, angle)
+    turn, angle, stops = integers(size), floats(size), integers(size)
+    for i in range(size):
+        stops[i] = stop
+    angles(cells, left, right, stops, points, turn, angle)
     below, sure = _count(turn[size - 1], angle[size - 1]), True
     if top == edge:
         moved = (turn[size - 1] - turn[size - 2]) * np.pi + angle[size - 1] - angle[size - 2]
@@ -405,22 +431,26 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
     count = max(min(last, below) - first, 0)
     if count > most:
         count = 0
-    room = _room(size + 1, count, _ROUNDS)
-    room[0][0], room[1][0], room[2][0] = bottom, 0, 0.0
-    if bottom > floor:
-        angles(cells, left, right, stop, room[0][:1], room[1], room[2])
-    for i in range(size):
-        room[0][i + 1], room[1][i + 1], room[2][i + 1] = points[i], turn[i], angle[i]
     energy, bracket = floats(count), grid(count, 2)
-    done = integers(count)
+    level, done = integers(count), integers(count)
     for i in range(count):
-        done[i] = 0
+        level[i], done[i] = first + i, 0
     if count > 0:
+        tables, used = block(1, 3, size + 1 + _ROUNDS * (6 * count + 4 * LANES)), integers(1)
+        tables[0, 0, 0], tables[0, 1, 0], tables[0, 2, 0] = bottom, 0.0, 0.0
+        used[0] = 1
+        if bottom > floor:
+            low, low_turn, low_angle = floats(1), integers(1), floats(1)
+            low[0] = bottom
+            angles(cells, left, right, stops[:1], low, low_turn, low_angle)
+            tables[0, 1, 0], tables[0, 2, 0] = low_turn[0], low_angle[0]
+        _merge(tables[0], 1, points, turn, angle, 0, size)
+        used[0] += size
         _converge(
-            cells, left, right, stop, edge, first, resolution, room, size + 1, energy, bracket,
+            cells, left, right, stops[:1], edge, level, resolution, tables, used, energy, bracket,
             done, _ROUNDS,
         )  # fmt: skip
-        _settle(cells, left, right, edge, first, resolution, energy, bracket, done)
+        _settle(cells, left, right, edge, level, resolution, energy, bracket, done)
         # Of levels that doubles cannot part, rounding may put the upper one first.
         for i in range(1, count):
             energy[i] = min(max(energy[i], energy[i - 1]), max(bracket[i, 1], energy[i]))

@@ -214,7 +214,8 @@ class Ready:
     def angles(self, energies):
         """turn and angle of `_search.angles` for some energies, at `home`."""
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        _angles.angles(self.cells, self.left, self.right, self.home, energies, turn, angle)
+        stop = np.full(energies.size, self.home)
+        _angles.angles(self.cells, self.left, self.right, stop, energies, turn, angle)
         return turn, angle
 
     def trail(self, energies, backward, stride=1):
@@ -222,7 +223,8 @@ class Ready:
         lanes, cells = energies.size, self.cells[0].size
         trail = np.empty((cells // stride + 1, 3, lanes))
         psi, phi, zeros = np.empty(lanes), np.empty(lanes), np.empty(lanes, np.int64)
-        edge, stop = (self.right, 0) if backward else (self.left, cells)
+        edge = self.right if backward else self.left
+        stop = np.full(lanes, 0 if backward else cells)
         _kernels.swept(self.cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         return trail
 
