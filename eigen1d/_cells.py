@@ -93,7 +93,8 @@ def _least_inside(c, bernstein):
             continue
         falls = [later < before for before, later in pairwise(b)]
         if falls == sorted(falls, reverse=True):
-            least = min(least, _bottom(c, start, end))
+            guess = start + (end - start) * b.index(min(b)) / (len(b) - 1)
+            least = min(least, _bottom(c, start, end, guess))
             continue
         middle, left, right = 0.5 * (start + end), [], []
         while b:
@@ -105,9 +106,8 @@ def _least_inside(c, bernstein):
     return least
 
 
-def _bottom(c, start, end):
+def _bottom(c, start, end, t):
     """The least value between a fall and a rise, by Newton's method for the slope, in bounds."""
-    t = 0.5 * (start + end)
     least = np.inf
     while True:
         value, slope, half_bend = c[-1], 0.0, 0.0
