@@ -184,7 +184,7 @@ class _Fit(NamedTuple):
 
 def _fitted(function, at):
     """The `_Fit` of a function that is asked at `at`, shape (points, cells)."""
-    values = np.asarray(function(at.ravel()))
+    values = np.asarray(function(at.ravel()), dtype=float)
     values = values.reshape(at.shape) if values.ndim else np.full(at.shape, values)
     base = values[0]  # taken away first, so that a constant is met exactly
     spectrum = _TO_CHEBYSHEV @ (values[::2] - base)
