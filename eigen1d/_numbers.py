@@ -33,6 +33,7 @@ _LARGEST = 270  # of |e|: w 10^e and the last bits of its pair are then normal f
 _BEYOND = 1 << 30  # in place of an exponent of ten digits or more
 _HALF = 2.0**27 + 1.0  # times a float, it cuts the float into two halves of 26 bits
 _ERROR = 2.0**-100  # relative, of w 10^e from pairs: at most 12 roundings of 2^-106 each
+_BEHIND = b"\n" * 8  # a last line must have an end, and eight bytes at a time must be there
 _TENS = 10 ** np.arange(9, dtype=np.uint64)
 # Eight bytes in one integer of 64 bits.
 _ZEROS, _LOW_BITS, _TO_128, _HIGH_BITS = (
@@ -43,7 +44,6 @@ _PAIRS = np.uint64(0x000000FF000000FF)
 _WEIGHTS_1_3 = np.uint64((1000000 << 32) + 100)
 _WEIGHTS_2_4 = np.uint64((10000 << 32) + 1)
 _NEWLINE, _RETURN, _TAB, _BLANK, _PLUS, _MINUS, _ZERO, _E, _SHARP = b"\n\r\t +-0e#"
-_BEHIND = b"\n" * 8  # a last line must have an end, and eight bytes at a time must be there
 # What surely is nothing but a comment: plain text, without the colon or equals sign of a setting.
 _COMMENT = re.compile(rb"#[\t -9;<>-~]*(?=\r?\n)")
 
@@ -122,11 +122,13 @@ def _part(text, stop, *arguments):
     values = _without_comments(text, stop, *arguments)
     if values is None and _SHARP in text[:stop]:
         bare = _COMMENT.sub(b"", text[:stop].tobytes() + _BEHIND)
-        values = _without_comments(np.frombuffer(bare, np.uint8), len(bare) - len(_BEHIND), *arguments)
+        stop = len(bare) - len(_BEHIND)
+        values = _without_comments(np.frombuffer(bare, np.uint8), stop, *arguments)
     return values
 
 
 def _without_comments(text, stop, count, delimiter, decimal, powers):
+    """Return the same of lines that have no comments."""
     lines = np.count_nonzero(text[:stop] == _NEWLINE) + 1
     values = np.empty((count, lines))
     doubtful = np.empty((count * lines, 4), np.int64)

@@ -35,8 +35,8 @@ from .errors import InputError, TableError
 from .profile import Profile
 from .units import Units, energy_in_hartree
 
-# Bytes of a file from which on kernels pay. To compile them takes 1.5 s, once; numpy reads a file of
-# this size in 0.5 s.
+# Bytes of a file from which on kernels pay. To compile them takes 1.5 s, once; numpy reads a file
+# of this size in 0.5 s.
 _LARGE = 1 << 24
 _HEAD = 1 << 16  # bytes at the top of a large file, its head among them
 
