@@ -78,9 +78,9 @@ def numbers(file, count, delimiter, decimal, digest):
     Examples
     --------
     >>> import hashlib, io
-    >>> numbers(io.BytesIO(b"0,0; 0,28\\n5,0; 1e-3"), 2, ";", ",", hashlib.sha256())
-    array([[0.   , 0.28 ],
-           [5.   , 0.001]])
+    >>> numbers(io.BytesIO(b"0,0; 0,28\\n5,0; 5e-1"), 2, ";", ",", hashlib.sha256())
+    array([[0.  , 0.28],
+           [5.  , 0.5 ]])
     """
     arguments = count, delimiter, decimal, _powers()
     parts, running = deque(), deque()
