@@ -28,7 +28,7 @@ class Timing:
 _UNITS = (("s", 1.0), ("ms", 1e3), ("us", 1e6))
 
 
-def measure(task, prepare=None, budget=1.0, least=3, most=1000):
+def measure(task, prepare=None, budget=1.0, least=3, most=1000, warm_up=True):
     """Time a task again and again until the budget, in seconds, is spent.
 
     Parameters
@@ -40,20 +40,22 @@ def measure(task, prepare=None, budget=1.0, least=3, most=1000):
     budget : float, optional
         No further run is begun when the runs together took so long.
     least, most : int, optional
-        Bounds of the number of runs. The first one, which warms up, is not among them.
+        Bounds of the number of runs.
+    warm_up : bool, optional
+        Whether the first run is left out.
 
     Returns
     -------
     Timing
     """
     times = []
-    while len(times) <= least or (sum(times) < budget and len(times) <= most):
+    while len(times) < least + warm_up or (sum(times) < budget and len(times) < most + warm_up):
         arguments = () if prepare is None else (prepare(),)
         start = time.perf_counter()
         task(*arguments)
         times.append(time.perf_counter() - start)
-    low, median, high = np.quantile(times[1:], [0.25, 0.5, 0.75])
-    return Timing(float(median), float(low), float(high), len(times) - 1)
+    low, median, high = np.quantile(times[warm_up:], [0.25, 0.5, 0.75])
+    return Timing(float(median), float(low), float(high), len(times) - warm_up)
 
 
 def machine():
