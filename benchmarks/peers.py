@@ -31,6 +31,7 @@ from benchmarks.timing import Timing, machine, measure
 from eigen1d import solve
 
 WANTED = 1e-10
+TRIDIAGONAL = ("3-point", "extrapolated")  # which use one thread whatever there is
 # At least so many times faster: than the fastest method that reaches 1e-10; than eigh_tridiagonal.
 SMOOTH, LAYERS, TABLE, MANY, HUGE = 3, 100, 5, 10, 4
 
@@ -39,7 +40,10 @@ def the_others():
     """What each method needs, the faster of all threads and one: {problem: {method: found}}."""
     one_thread = {"OMP_NUM_THREADS": "1", "OPENBLAS_NUM_THREADS": "1", "MKL_NUM_THREADS": "1"}
     found = {}
-    for threads, options, extra in (("all", [], {}), ("one", ["--dense-only"], one_thread)):
+    for threads, options, extra in (
+        ("all threads", [], {}),
+        ("one thread", ["--dense-only"], one_thread),
+    ):
         run = subprocess.run(
             [sys.executable, "-m", "benchmarks.best", *options],
             env=os.environ | extra,
@@ -79,12 +83,20 @@ def eigen1d_times(problem):
     }
 
 
-def on_the_rows(x, V, mass, count, driver="stebz"):
-    """Levels by eigh_tridiagonal on equidistant rows as they are, psi = 0 at the first and last."""
+def row_matrix(x, V, mass):
+    """The 3-point matrix of equidistant rows as they are, psi = 0 at the first and last.
+
+    V may be a stack of tables; then the diagonals are.
+    """
     h = x[1] - x[0]
     mass = np.broadcast_to(mass, x.shape)
     k = 1 / (h**2 * (mass[:-1] + mass[1:]))  # 1 / (2 h^2 m half way)
-    return lowest((k[:-1] + k[1:] + V[1:-1], -k[1:-1]), count, driver)
+    return k[:-1] + k[1:] + V[..., 1:-1], -k[1:-1]
+
+
+def on_the_rows(x, V, mass, count, driver="stebz"):
+    """Levels of a table by eigh_tridiagonal on its rows."""
+    return lowest(row_matrix(x, V, mass), count, driver)
 
 
 def show(name, what, error, timing, note=""):
@@ -102,7 +114,7 @@ def compare_problems():
             show(problem.name, f"eigen1d: {what}", error, timing)
         reach = {}
         for method, found in others[problem.name].items():
-            threads = "" if "3-point" in method else f", {found['threads']} threads"
+            threads = "" if method in TRIDIAGONAL else f", {found['threads']}"
             note = found["choice"] + threads
             if found["error"] > WANTED:
                 note += "; its best"
@@ -161,7 +173,8 @@ def compare_many(profiles=2000, rows=200, count=5):
     show(name, "solve_many", error, ours, f"{profiles / ours.median:.0f} profiles a second")
 
     def loop(driver):
-        return np.array([on_the_rows(x, one, mass, count, driver) for one in V])
+        diagonals, beside = row_matrix(x, V, mass)
+        return np.array([lowest((diagonal, beside), count, driver) for diagonal in diagonals])
 
     fastest = None
     for driver in ("stebz", "stemr", "sterf"):
