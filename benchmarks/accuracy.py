@@ -1,6 +1,6 @@
 """How far both methods are from the reference levels, and whether brackets and estimates hold.
 
-    python benchmarks/accuracy.py
+    python -m benchmarks.accuracy
 
 The reference, tests/reference/levels.json, has 27 digits or more. Errors are relative to a level's
 height above the least V; the largest of each case is shown.

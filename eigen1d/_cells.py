@@ -93,7 +93,8 @@ def _least_inside(c, bernstein):
             continue
         falls = [later < before for before, later in pairwise(b)]
         if falls == sorted(falls, reverse=True):
-            least = min(least, _bottom(c, start, end))
+            guess = start + (end - start) * b.index(min(b)) / (len(b) - 1)
+            least = min(least, _bottom(c, start, end, guess))
             continue
         middle, left, right = 0.5 * (start + end), [], []
         while b:
@@ -105,9 +106,8 @@ def _least_inside(c, bernstein):
     return least
 
 
-def _bottom(c, start, end):
+def _bottom(c, start, end, t):
     """The least value between a fall and a rise, by Newton's method for the slope, in bounds."""
-    t = 0.5 * (start + end)
     least = np.inf
     while True:
         value, slope, half_bend = c[-1], 0.0, 0.0
@@ -166,7 +166,8 @@ def merged(x, fields):
     x : ndarray, shape (cells + 1,)
         Breakpoints, ascending.
     fields : list of ndarray, shape (cells, degree + 1)
-        V, mass, ...: cells join only where all of them agree to rounding.
+        V, mass, ...: cells join only where all of them agree to rounding. Its arrays are replaced
+        one by one, so that few copies of a long table stand side by side.
 
     Returns
     -------
@@ -183,19 +184,20 @@ def merged(x, fields):
     """
     count = x.size - 1
     worth = max(count // (2 if count > _BLOCK else 4), 1)
-    varied = [field for field in fields if field.strides[0]]  # one number goes on by itself
+    varied = [k for k, field in enumerate(fields) if field.strides[0]]  # one number always goes on
     same = np.ones(count - 1, dtype=bool)
     for find in (_may_go_on, _go_on):
         for block in blocks(count - 1):
             ends, cells = slice(block.start, block.stop + 2), slice(block.start, block.stop + 1)
-            for field in varied:
-                find(x[ends], field[cells], same[block])
+            for k in varied:
+                find(x[ends], fields[k][cells], same[block])
         if np.count_nonzero(same) < worth:
             return x, fields
     # Runs of more than one cell, by the first and the last cell of each.
-    first, last = np.flatnonzero(np.diff(same, prepend=False, append=False)).reshape(-1, 2).T
-    good = [_runs_hold(x, varied, first[block], last[block]) for block in blocks(first.size)]
-    first, last = first[np.concatenate(good)], last[np.concatenate(good)]
+    runs = np.flatnonzero(np.diff(same, prepend=False, append=False)).reshape(-1, 2)
+    good = [_hold(x, [fields[k] for k in varied], *runs[part].T) for part in blocks(len(runs))]
+    runs = runs[np.concatenate(good)]
+    first, last = runs.T
     saved = last - first
     if saved.sum() < worth:
         return x, fields
@@ -203,13 +205,13 @@ def merged(x, fields):
     change[first + 1] = 1
     change[last + 1] -= 1
     kept = np.cumsum(change[:-1], out=change[:-1]) == 0
+    place = first - np.cumsum(saved) + saved  # of the joined cells among those kept
     for k, field in enumerate(fields):
-        if field.strides[0] == 0:
-            fields[k] = field[: count - saved.sum()]
-        else:
-            fields[k] = field[kept]
-            fields[k][first - np.cumsum(saved) + saved] = _through_runs(x, field, first, last)
-    return np.append(x[:-1][kept], x[-1]), fields
+        joined = field[kept] if k in varied else field[: count - saved.sum()]
+        for part in blocks(first.size if k in varied else 0):
+            joined[place[part]] = _through_runs(x, field, first[part], last[part])
+        fields[k] = joined
+    return x[np.append(kept, True)], fields
 
 
 def _may_go_on(x, field, same):
@@ -268,7 +270,7 @@ def _largest(coefficients):
     return largest
 
 
-def _runs_hold(x, fields, first, last):
+def _hold(x, fields, first, last):
     """Whether one polynomial stands for all cells of each run, from `first` to `last`."""
     start, end = x[first], x[last + 1]
     joined = [_through_runs(x, field, first, last) for field in fields]

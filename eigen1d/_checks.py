@@ -11,19 +11,20 @@ from .errors import InputError
 def numbers(name, values):
     """A row of finite numbers, read-only."""
     try:
-        if np.iscomplexobj(values):
+        row = np.array(values, ndmin=1)
+        if row.dtype.kind == "c":
             raise TypeError("a cast to float would drop the imaginary part")
-        values = np.array(values, dtype=float, ndmin=1)
+        row = row.astype(float, copy=False)
     except (TypeError, ValueError):
         raise InputError(f"{name} must be numbers; found {values!r:.80}") from None
-    if values.ndim != 1:
-        raise InputError(f"{name} must be one row of numbers; found shape {values.shape}")
-    finite = np.isfinite(values)
+    if row.ndim != 1:
+        raise InputError(f"{name} must be one row of numbers; found shape {row.shape}")
+    finite = np.isfinite(row)
     if not finite.all():
         bad = int(np.argmin(finite))
-        raise InputError(f"{name} must be finite; row {bad} has {values[bad]}")
-    values.flags.writeable = False
-    return values
+        raise InputError(f"{name} must be finite; row {bad} has {row[bad]}")
+    row.flags.writeable = False
+    return row
 
 
 def number(name, value):
@@ -67,18 +68,19 @@ def check_rows(x):
     """Positions that never descend, at most two at one place, and that cover a length."""
     if _cells.least_width(x) > 0:
         return
-    step = np.diff(x)
-    if (step < 0).any():
+    step = x[1:] - x[:-1]
+    if step.min() < 0:
         bad = int(np.argmax(step < 0)) + 1
         raise InputError(f"x must ascend; row {bad} has {x[bad]:.12g} after {x[bad - 1]:.12g}")
-    triple = np.flatnonzero((step[1:] == 0) & (step[:-1] == 0))
-    if triple.size:
-        raise InputError(
-            f"three rows at x = {x[triple[0]]:.12g}; a jump is two rows at one x: the value on its "
-            "left, then the value on its right"
-        )
-    if not (step > 0).any():
+    still = step == 0
+    if still.all():
         raise InputError("x must cover a length; all rows are at one place")
+    triple = still[1:] & still[:-1]
+    if triple.any():
+        raise InputError(
+            f"three rows at x = {x[np.argmax(triple)]:.12g}; a jump is two rows at one x: the "
+            "value on its left, then the value on its right"
+        )
 
 
 def layer_ends(thickness, start):

@@ -184,7 +184,8 @@ class _Fit(NamedTuple):
 
 def _fitted(function, at):
     """The `_Fit` of a function that is asked at `at`, shape (points, cells)."""
-    values = np.broadcast_to(function(at.ravel()), at.size).reshape(at.shape)
+    values = np.asarray(function(at.ravel()), dtype=float)
+    values = values.reshape(at.shape) if values.ndim else np.full(at.shape, values)
     base = values[0]  # taken away first, so that a constant is met exactly
     spectrum = _TO_CHEBYSHEV @ (values[::2] - base)
     low, high = values.min(axis=0), values.max(axis=0)

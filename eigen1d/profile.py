@@ -146,7 +146,7 @@ class Profile:
         sides = edges(left, right, V, V, mass, mass, alpha)
         del mass, alpha  # memory: of a long table the cells are enough
         return cls._joined(
-            x if ends.all() else np.append(x[:-1][ends], x[-1]),
+            x if ends.all() else x[np.append(ends, True)],
             fields,
             sides,
             units=units,
@@ -306,11 +306,11 @@ class Profile:
         True
         """
         _check_units(units)
-        span, breaks = _checks.numbers("span", span), np.unique(_checks.numbers("breaks", breaks))
+        span, breaks = _checks.numbers("span", span), _checks.numbers("breaks", breaks)
         if span.size != 2:
             raise InputError(f"span must be two numbers (low, high); found {span.size}")
         low, high = span
-        if not low < high or (breaks.size and not (low < breaks[0] and breaks[-1] < high)):
+        if not low < high or not all(low < place < high for place in breaks):
             raise InputError(f"span must ascend and hold all breaks; found {low:g} to {high:g}")
         if not 1e-15 <= _checks.number("tolerance", tolerance) < 1e-3:
             raise InputError(f"tolerance must be from 1e-15 to 1e-3; found {tolerance:g}")
@@ -318,7 +318,7 @@ class Profile:
             mass = _checks.sampler("mass", mass, positive=True)
         else:
             mass = _checks.positive("mass", mass)
-        ends = np.concatenate([[low], breaks, [high]])
+        ends = np.array([low, *sorted(set(breaks.tolist())), high])
         try:
             x, fields = _functions.cells(
                 _checks.sampler("V", V), mass, ends, tolerance, units.electron_mass

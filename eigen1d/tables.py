@@ -35,9 +35,9 @@ from .errors import InputError, TableError
 from .profile import Profile
 from .units import Units, energy_in_hartree
 
-# Bytes of a file from which on kernels pay. To compile them takes 1.3 s, once; numpy reads a file of
-# this size in 0.5 s.
-_LARGE = 1 << 23
+# Bytes of a file from which on kernels pay. To compile them takes 1.5 s, once; numpy reads a file
+# of this size in 0.5 s.
+_LARGE = 1 << 24
 _HEAD = 1 << 16  # bytes at the top of a large file, its head among them
 
 # What `# key: value` lines may set, and the words they may set it to.
@@ -139,7 +139,7 @@ def _large_table(path, named):
     if not os.path.isfile(path) or os.path.getsize(path) < _LARGE:
         return None
     # Whatever is wrong, the other way meets it again and describes it.
-    with suppress(OSError, TableError), open(path, "rb", buffering=0) as file:
+    with suppress(OSError, TableError), open(path, "rb") as file:
         head = file.read(_HEAD)
         head = head[: head.rfind(b"\n") + 1]
         if b"\r" in head.replace(b"\r\n", b""):

@@ -1,4 +1,4 @@
-"""Fixtures of the tests of the command line."""
+"""Fixtures of the tests of the command line and of tables."""
 
 from pathlib import Path
 
@@ -25,3 +25,16 @@ def run(capsys):
         return status, *capsys.readouterr()
 
     return call
+
+
+@pytest.fixture
+def write(tmp_path, monkeypatch):
+    """Write well.csv in the working folder, so that messages hold no path."""
+    monkeypatch.chdir(tmp_path)
+
+    def write(content, name="well.csv"):
+        data = content if isinstance(content, bytes) else content.encode()
+        (tmp_path / name).write_bytes(data)
+        return name
+
+    return write

@@ -159,6 +159,12 @@ def test_noise_is_refused_in_bounded_memory(monkeypatch):
         _functions.cells(lambda x: noise.random(x.shape), lambda x: 1.0, span, 1e-13)
 
 
+def test_a_condition_is_a_function_too():
+    """x > 1 is 0 or 1 to who writes it; numpy would refuse to subtract such values."""
+    x, (V, _) = _functions.cells(lambda x: x > 1, 1.0, np.array([0.0, 1.0, 3.0]), 1e-13)
+    assert V.tolist() == [[0.0], [1.0]]
+
+
 def test_halves_that_have_no_length_do_no_harm():
     """Near x = 1e15 doubles are 0.125 apart: a sixteenth of this span has no length left."""
     span = 1e15 + np.array([0.0, 1.0])

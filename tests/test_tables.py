@@ -1,14 +1,13 @@
-"""Reading tables: what works, what every fault says, and that both ways through a file agree."""
+"""Reading tables: what works, and what every fault says."""
 
 import hashlib
 import re
-import subprocess
-import sys
 
 import numpy as np
 import pytest
 from faults_of_heads import GOOD, HEAD_FAULTS, LAYERS, ROWS
 from faults_of_rows import ROW_FAULTS
+from same_tables import SAME
 
 from eigen1d import tables
 from eigen1d.errors import InputError, TableError
@@ -18,22 +17,16 @@ from eigen1d.units import Units
 FAULTS = HEAD_FAULTS + ROW_FAULTS
 
 
-@pytest.fixture
-def write(tmp_path, monkeypatch):
-    """Write well.csv in the working folder, so that messages hold no path."""
-    monkeypatch.chdir(tmp_path)
-
-    def write(content, name="well.csv"):
-        data = content if isinstance(content, bytes) else content.encode()
-        (tmp_path / name).write_bytes(data)
-        return name
-
-    return write
+@pytest.fixture(params=[tables._LARGE, 0], ids=["as it is", "as if large"])
+def size(request, monkeypatch):
+    """What works on a small file must work on a large one, and its faults read the same."""
+    monkeypatch.setattr(tables, "_LARGE", request.param)
 
 
 # Faults -----------------------------------------------------------------------------------------
 
 
+@pytest.mark.usefixtures("size")
 @pytest.mark.parametrize("fault", FAULTS, ids=lambda fault: fault.id)
 def test_fault_is_explained_in_full(fault, write):
     """The text is all a user has to go by, and the attributes all a program has."""
@@ -222,43 +215,8 @@ def test_fault_of_the_profile_names_the_file(write, monkeypatch):
         read_profile(write(ROWS + GOOD))
 
 
+@pytest.mark.usefixtures("size")
 # What works -------------------------------------------------------------------------------------
-
-# The same two rows: every variant must give x = 0, 5; V = 0.28, 0; m = 0.092, 0.067.
-SAME = {
-    "commas": ROWS + GOOD,
-    "commas without blanks": (ROWS + GOOD).replace(", ", ","),
-    "semicolons": (ROWS + GOOD).replace(",", ";"),
-    "tabs": (ROWS + GOOD).replace(", ", "\t"),
-    "blanks": (ROWS + GOOD).replace(",", "  "),
-    "blanks before the rows": (ROWS + GOOD).replace(",", "").replace("\n", "\n  "),
-    "decimal commas, semicolons": (ROWS.replace(",", ";") + "0,0;0,280;0,092\n5,0;0;,067\n"),
-    "decimal commas, tabs": ROWS.replace(", ", "\t") + "0,0\t0,280\t0,092\n5\t0,000\t0,067\n",
-    "decimal commas, blanks": ROWS.replace(",", "") + "0,0 0,280 0,092\n5,0 0,000 0,067\n",
-    "decimal commas, commented": (
-        ROWS.replace(",", ";") + "# 1.5 nm, roughly\n0;0,280;0,092 # 0.28, in fact\n5;0,0;0,067"
-    ),
-    "byte order mark": b"\xef\xbb\xbf" + (ROWS + GOOD).encode(),
-    "CRLF": (ROWS + GOOD).replace("\n", "\r\n"),
-    "CR": (ROWS + GOOD).replace("\n", "\r"),
-    "byte order mark and CRLF": b"\xef\xbb\xbf" + (ROWS + GOOD).replace("\n", "\r\n").encode(),
-    "no newline at the end": (ROWS + GOOD).rstrip("\n"),
-    "comments everywhere": (
-        "# a, b; c\n\n#\n" + ROWS[:-1] + " # [in brackets]\n"
-        "  # indented, 1, 2\n0.0, 0.280, 0.092 # first, 1\n\n \t\n#\n5.0, 0, 0.067 #\n# end\n"
-    ),
-    "other column order": "m [m_e], x [nm], V [eV]\n0.092, 0, 0.28\n0.067, 5, 0\n",
-    "quoted names": '"x [nm]","V [eV]" , "m [m_e] "\n' + GOOD,
-    "quoted names between blanks": '"x [nm]" "V [eV]" "m [m_e]"\n' + GOOD.replace(",", ""),
-    "exponents": ROWS + "0e0, 2.8E-1, +92e-3\n.5e1, -0, 0.67e-1\n",
-    "unit without blank": "x[nm], V[ eV ], m [m_e]\n" + GOOD,
-    "blanks in a header of blanks": "x [nm]  V[eV] m  [m_e]\n0 0.28 0.092\n5 0 0.067\n",
-    "comments that set nothing": (
-        "# measured: 3 March\n# height: 0.28\n# T = 300 K\n#:\n# http://example.org\n"
-        + ROWS + "# note: none\n" + GOOD
-    ),
-}  # fmt: skip
-
 
 @pytest.mark.parametrize("variant", SAME)
 def test_same_table_in_any_dress(variant, write):
@@ -271,6 +229,7 @@ def test_same_table_in_any_dress(variant, write):
     assert (profile.left.kind, profile.right.kind, profile.title) == ("open", "open", "")
 
 
+@pytest.mark.usefixtures("size")
 @pytest.mark.parametrize(
     ("content", "columns"),
     [
@@ -306,6 +265,7 @@ def test_two_numbers_with_decimal_commas_are_not_three(write):
     assert profile.rows.V.tolist() == [2.5, 0.5]
 
 
+@pytest.mark.usefixtures("size")
 def test_settings_are_read_and_arguments_come_first(write):
     """A file says how it is meant; the caller may want to know otherwise."""
     head = "# Title: well #3: graded\n# LEFT: Wall # hard\n#right:wall\n  # interpolation: step\n"
@@ -326,6 +286,7 @@ def test_interpolation_given_for_layers_is_refused(write):
         read_profile(write(LAYERS + "5, 0, 0.067\n"), interpolation="step")
 
 
+@pytest.mark.usefixtures("size")
 def test_every_column_of_rows_reaches_the_profile(write):
     """Units may differ between columns; the profile's are those of x and V."""
     path = write(
@@ -371,6 +332,7 @@ def test_jumps_at_both_ends_are_rows_like_others(write):
     assert profile.V(2.5) == 0.0
 
 
+@pytest.mark.usefixtures("size")
 def test_source_and_digest_are_those_of_the_file(write, tmp_path):
     """A result must be traceable to the bytes it came from, line ends and mark included."""
     content = b"\xef\xbb\xbf" + (ROWS + GOOD).replace("\n", "\r\n").encode()
@@ -378,127 +340,3 @@ def test_source_and_digest_are_those_of_the_file(write, tmp_path):
     profile = read_profile(tmp_path / "well.csv")
     assert profile.source == str(tmp_path / "well.csv")
     assert profile.sha256 == hashlib.sha256(content).hexdigest()
-
-
-# Both ways through a file -----------------------------------------------------------------------
-
-
-def by_both_ways(path, named=None):
-    source = tables.text_source(path, tables.read_bytes(path))
-    table = tables.split(source, named, tables.SETTINGS)
-    return tables._numbers_at_once(table), tables._numbers_by_line(table)
-
-
-@pytest.mark.parametrize("variant", SAME)
-def test_clean_file_is_read_alike_by_both_ways(variant, write):
-    """A fault must not change the numbers around it."""
-    at_once, by_line = by_both_ways(write(SAME[variant]))
-    if at_once is None:  # blank lines of blanks are read by line alone
-        assert variant == "comments everywhere"
-    else:
-        assert np.array_equal(at_once, by_line)
-    assert by_line.shape == (2, 3)
-
-
-@pytest.mark.parametrize("seed", range(4))
-@pytest.mark.parametrize(
-    ("delimiter", "decimal"), [*zip(",;\t ", "....", strict=True), *zip(";\t ", ",,,", strict=True)]
-)
-def test_random_numbers_are_read_alike_by_both_ways(seed, delimiter, decimal, write):
-    """Every float that is written comes back to the last bit, whichever way."""
-    rng = np.random.default_rng(seed)
-    values = rng.standard_normal((50, 3)) * 10.0 ** rng.integers(-300, 300, (50, 3))
-    rows = [delimiter.join(repr(float(v)) for v in row).replace(".", decimal) for row in values]
-    header = ROWS.strip().replace(", ", delimiter)
-    at_once, by_line = by_both_ways(write("\n".join([header, *rows])))
-    assert np.array_equal(at_once, values)
-    assert np.array_equal(by_line, values)
-
-
-NUMBERS = "1 +1 -1 1. .5 -.5e-3 1e5 1E+05 00012 1e-400 1e400 nan -NaN inf +Infinity".split()
-NO_NUMBERS = (
-    "1_000 0x10 1e 1e+ e5 . + - -- +-1 1.2.3 1d5 1f 1j True None 1/2 1..2 1e5.0 infinit nan(1) "
-    "1'000 \N{VULGAR FRACTION ONE HALF} \N{ARABIC-INDIC DIGIT ONE} \N{MINUS SIGN}1"
-).split()
-
-
-@pytest.mark.parametrize("token", NUMBERS + NO_NUMBERS)
-def test_both_ways_agree_on_what_a_number_is(token, write):
-    """If one way took text that the other refuses, a fault elsewhere would change the verdict."""
-    path = write(f"x [nm], V [eV]\n0, 1\n1, {token}\n")
-    source = tables.text_source(path, tables.read_bytes(path))
-    table = tables.split(source, None, tables.SETTINGS)
-    at_once = tables._numbers_at_once(table)
-    if token in NUMBERS:
-        assert np.array_equal(at_once, tables._numbers_by_line(table), equal_nan=True)
-    else:
-        assert at_once is None
-        with pytest.raises(TableError, match="expected a number"):
-            tables._numbers_by_line(table)
-
-
-def test_faulty_files_are_not_read_at_once(write):
-    """The fast way must refuse all that the careful way would explain."""
-    refused = 0
-    for fault in ROW_FAULTS:
-        if "expected a number" in fault.text or "values, found" in fault.text:
-            path = write(fault.content)
-            named = tables.named_columns(
-                fault.arguments.get("columns"), fault.arguments.get("units")
-            )
-            source = tables.text_source(path, tables.read_bytes(path))
-            table = tables.split(source, named, tables.SETTINGS)
-            assert tables._numbers_at_once(table) is None, fault.id
-            refused += 1
-    assert refused > 20
-
-
-@pytest.mark.parametrize("seed", range(4))
-def test_damaged_file_is_read_alike_or_refused(seed, write):
-    """Whatever bytes arrive: a profile or a TableError, and never two answers."""
-    rng = np.random.default_rng(seed)
-    whole = [c if isinstance(c, bytes) else c.encode() for c in SAME.values()]
-    scraps = [bytes([b]) for b in b'\n\r\t ,;.#[]:=01-+eE"\x00\xc3\xa0\x0c'] + [
-        b"",
-        b"nan",
-        b"1e999",
-    ]
-    outcomes = {"read": 0, "refused": 0}
-    for _ in range(150):
-        data = bytearray(whole[rng.integers(len(whole))])
-        for _ in range(rng.integers(1, 3)):
-            at = rng.integers(len(data) + 1)
-            data[at : at + rng.integers(3)] = scraps[rng.integers(len(scraps))]
-        path = write(bytes(data))
-        try:
-            read_profile(path)
-        except TableError as error:
-            assert str(error).startswith("well.csv")
-            outcomes["refused"] += 1
-        else:
-            at_once, by_line = by_both_ways(path)
-            assert at_once is None or np.array_equal(at_once, by_line)
-            outcomes["read"] += 1
-    assert min(outcomes.values()) >= 10, outcomes  # else the damage tests one outcome alone
-
-
-def test_clean_file_is_never_read_by_line(write, monkeypatch):
-    """Line by line a million rows take 5 s, at once 0.6 s: a clean file must take the fast way."""
-    monkeypatch.setattr(tables, "_numbers_by_line", None)
-    for variant in set(SAME) - {"comments everywhere"}:
-        assert read_profile(write(SAME[variant])).row_count > 1
-
-
-def test_many_faults_are_listed_in_bounded_space(write):
-    """A column of a hundred thousand faults is one message, not a flood."""
-    with pytest.raises(TableError) as caught:
-        read_profile(write(ROWS + "".join(f"{x}, ?, 1\n" for x in range(100_000))))
-    assert "lines 3, 4, 5, 6, 7 and 99994 more lines" in str(caught.value)
-    assert len(str(caught.value)) < 500
-
-
-def test_reading_imports_neither_numba_nor_matplotlib():
-    """A table that is wrong should be refused before anything slow is loaded."""
-    code = "import sys, eigen1d.tables; print({'numba', 'matplotlib', 'scipy'} & set(sys.modules))"
-    run = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, check=True)
-    assert run.stdout.strip() == "set()"
