@@ -297,6 +297,7 @@ _TEXT = types.Array(types.uint8, 1, "C", readonly=True)
 
 
 @kernel(
+    entry=True,
     signature=types.UniTuple(types.int64, 2)(
         _TEXT,
         types.int64,

@@ -37,6 +37,7 @@ ROUNDING = 16 * EPS
 _SAME, _AWAY = 1e-14, 1e-12
 # Where the earlier waves of a group leave room for the next: in another well they reach 1e-2.
 _SMALL = 0.1
+_ENDLESS = 1e8  # levels below a window: their count would be no longer exact
 _NONE = np.empty(0), np.empty((0, 2))
 _TOO_LONG = (
     "this profile is over a million wavelengths or decay lengths long, which is more than can be "
@@ -109,6 +110,8 @@ class Search:
         low, high = max(low, self.floor), min(high, self.edge)
         if not low < high:
             return 0, *_NONE
+        if self._most_below(high) > _ENDLESS:
+            raise InputError(f"far too many levels lie below {high:g}; lower the window")
         first, last = self.count([low, high])
         if last - first > MOST_LEVELS:
             raise InputError(
@@ -117,6 +120,12 @@ class Search:
         if last <= first:
             return first, *_NONE
         return first, *self._find(first, last, low, high)[1:]
+
+    def _most_below(self, energy):
+        """What no number of levels exceeds: that of a flat bottom between walls, and one more."""
+        width, _, mass, per_energy = self.cells
+        heaviest = (mass[:, 0] + self.floor * per_energy[:, :1].sum(axis=1)).max()
+        return width.sum() * np.sqrt(2 * heaviest * (energy - self.floor)) / np.pi + 1
 
     def _find(self, first, last, bottom, top):
         """Return (below, energies, brackets), see `_search.find`, with what it leaves open."""
@@ -171,7 +180,9 @@ class Search:
         (turn,), (angle,) = whole.angles(energy)
         (psi,), (phi,) = States(self, energy, whole.home).at_nodes()
         home = whole.home
-        sigma = abs(phi[home] / psi[home]) or 1.0
+        _, _, mass, per_energy = whole.cells[:4]
+        m = mass[home, 0] + self.edge * per_energy[home, :1].sum()
+        sigma = np.sqrt(2 * (self.edge - self.floor) / m)
         meet = sigma * psi[home] ** 2 + phi[home] ** 2 / sigma
         middle_psi = np.maximum(np.abs(psi[1:]), np.abs(psi[:-1]))
         middle_phi = np.maximum(np.abs(phi[1:]), np.abs(phi[:-1]))

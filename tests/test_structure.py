@@ -12,13 +12,13 @@ PACKAGE = ROOT / "eigen1d"
 FLOORS = [
     {"errors", "_cells", "_compiled"},
     {"units", "_files", "_checks", "_functions", "_interpolation"}
-    | {"_straight", "_table_faults", "_numbers"},
+    | {"_straight", "_propagators", "_table_faults", "_numbers"},
     {"_parts", "_plan", "_table_text", "_table_header"},
     {"profile", "_kernels"},
-    {"_search", "_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
-    {"levels"},
-    {"shooting", "finite_difference"},
-    {"solve"},
+    {"_angles", "_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
+    {"_search", "levels"},
+    {"_ensemble", "shooting", "finite_difference"},
+    {"solve", "ensembles"},
     {"draw"},
     {"cli"},
     {"__init__", "__main__"},
