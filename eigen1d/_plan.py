@@ -316,6 +316,15 @@ def _decay(width, V, mass, cell, top):
     return np.sqrt(2.0 * max(m_low, 0.0) * (V_low - top)) * width[cell]
 
 
+@kernel(signature=types.boolean(given(2), given(2), given(2), types.int64, EDGE))
+def _continues(V, mass, per_energy, cell, edge):
+    """Whether a cell is as flat as the open edge beside it, at the same V and mass."""
+    q = per_energy[cell, 0] if per_energy.shape[1] > 0 else 0.0
+    same = V[cell, 0] == edge[1] and mass[cell, 0] == edge[2] and q == edge[3]
+    flat = _is_flat(V[cell]) and _is_flat(mass[cell]) and _is_flat(per_energy[cell])
+    return edge[0] != 0.0 and same and flat
+
+
 @kernel(signature=EDGE(given(2), given(2), types.int64, types.boolean))
 def _edge_inside(V, mass, cell, at_end):
     """An open edge at one end of a cell, where the barrier beyond is cut off."""
@@ -336,29 +345,36 @@ def _edge_inside(V, mass, cell, at_end):
 def _kept(width, V, mass, per_energy, left, right, top, whole):
     """(first, last, left, right): the cells without which an energy up to `top` would change.
 
-    Any solution that does not fall outwards is, _FAR decay lengths further in, the one that is
-    right at the edge.
+    Cells that go on like the open edge beside them say nothing new. Any solution that does not fall
+    outwards is, _FAR decay lengths further in, the one that is right at the edge.
     """
     first, last = 0, width.size
-    if whole or per_energy.shape[1] > 0:
+    if whole:
         return first, last, left, right
+    while first < last - 1 and _continues(V, mass, per_energy, first, left):
+        first += 1
+    while last - 1 > first and _continues(V, mass, per_energy, last - 1, right):
+        last -= 1
+    if per_energy.shape[1] > 0:
+        return first, last, left, right
+    begin, end = first, last
     while first < last and _decay(width, V, mass, first, top) > 0.0:
         first += 1
     if first == last:
-        return 0, last, left, right
+        return begin, end, left, right
     far = 0.0
-    while first > 0 and far < _FAR:
+    while first > begin and far < _FAR:
         first -= 1
         far += _decay(width, V, mass, first, top)
-    if first > 0:
+    if first > begin:
         left = _edge_inside(V, mass, first, False)
     while _decay(width, V, mass, last - 1, top) > 0.0:
         last -= 1
     far = 0.0
-    while last < width.size and far < _FAR:
+    while last < end and far < _FAR:
         far += _decay(width, V, mass, last, top)
         last += 1
-    if last < width.size:
+    if last < end:
         right = _edge_inside(V, mass, last - 1, True)
     return first, last, left, right
 
