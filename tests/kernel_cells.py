@@ -58,6 +58,7 @@ def sweep(cells, energies, *, edge=WALL, backward=False, stop=None, stride=1, ru
     count = cells[0].size
     if stop is None:
         stop = 0 if backward else count
+    stop = np.broadcast_to(stop, energies.shape).astype(np.int64)
     psi, phi = np.empty(energies.size), np.empty(energies.size)
     zeros = np.empty(energies.size, np.int64)
     trail = np.full((count // stride + 1, 3, energies.size), np.nan)

@@ -50,6 +50,7 @@ class Wells:
         )
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
         stop = home if stop is None else min(stop, cells[0].size)
+        stop = np.full(energies.size, stop)
         _angles.angles(cells, left, right, stop, energies, turn, angle)
         return turn, angle
 

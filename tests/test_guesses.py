@@ -75,9 +75,9 @@ def test_steps_in_the_variable_of_the_continuum(edge):
 
 
 def sampled(D, energies):
-    """turn and angle of a function, as `angles` would say it."""
-    turn = np.round(D / np.pi).astype(int)
-    return energies, turn, D - turn * np.pi
+    """A table of energies, turn and angle of a function, as `angles` would say it."""
+    turn = np.round(D / np.pi)
+    return np.array([energies, turn, D - turn * np.pi])
 
 
 @pytest.mark.parametrize("edge", [12.0, np.inf])
@@ -98,9 +98,9 @@ def test_a_guess_is_exact_for_polynomials(degree, edge):
 
         n = int((D[5] + D[6]) / 2 / np.pi)
         samples = sampled(D - (D[5] + D[6]) / 2 + (n + 1) * np.pi, energy(scaled))
-        found, error = PLAIN["_guess"](*samples, 12, 5, n, edge)
+        found, error = PLAIN["_guess"](samples, 12, 5, n, edge)
         exact = energy((D[5] + D[6]) / 2 / D[-1])
-        assert samples[0][5] < found < samples[0][6]
+        assert samples[0, 5] < found < samples[0, 6]
         assert abs(found - exact) <= 1e-11 and error < np.inf
 
 
@@ -108,7 +108,7 @@ def test_a_guess_is_not_exact_beyond():
     """A polynomial of degree 12 is no longer met exactly: the test above can fail."""
     D = np.linspace(0.0, 11.0, 12)
     samples = sampled(D - 5.4 + np.pi, 8 * (D / 11) ** 12)
-    found, error = PLAIN["_guess"](*samples, 12, 5, 0, np.inf)
+    found, error = PLAIN["_guess"](samples, 12, 5, 0, np.inf)
     assert abs(found - 8 * (5.4 / 11) ** 12) > 1e-6 and error > 1e-6
 
 
@@ -131,9 +131,9 @@ def test_the_error_of_a_guess_is_honest():
             continue
         n = int(random.integers(below, above))
         samples = sampled(values, energies)
-        i = PLAIN["_bracket"](*samples[1:], energies.size, n)
+        i = PLAIN["_bracket"](samples, energies.size, n)
         assert values[i] <= (n + 1) * np.pi <= values[i + 1]
-        found, error = PLAIN["_guess"](*samples, energies.size, i, n, edge)
+        found, error = PLAIN["_guess"](samples, energies.size, i, n, edge)
         true = brentq(lambda E, n=n: D(E) - (n + 1) * np.pi, *energies[i : i + 2], xtol=1e-15)
         shares.append(abs(found - true) / (error + 1e-13))
     assert np.quantile(shares, 0.95) <= 10
@@ -143,8 +143,7 @@ def test_a_guess_on_a_staircase_has_no_error():
     """Where the angle does not rise, the middle is as good as any place, and is known to be."""
     energies = np.linspace(1.0, 2.0, 6)
     D = np.array([0.0, 0.0, 0.0, np.pi, np.pi, np.pi]) + 0.4
-    turn, angle = sampled(D, energies)[1:]
-    found, error = PLAIN["_guess"](energies, turn, angle, 6, 2, 0, np.inf)
+    found, error = PLAIN["_guess"](sampled(D, energies), 6, 2, 0, np.inf)
     assert energies[2] < found < energies[3]
     assert error == np.inf or error > 0.01
 
@@ -156,28 +155,29 @@ def test_bracket_lies_around_its_level():
     """Counts of samples ascend: the pair at which they pass n, also with several levels inside."""
     count = np.array([0, 0, 1, 1, 4, 4, 4, 7])
     angle = np.array([0.3, -0.2, 0.1, -1.0, 0.0, 1.0, -0.5, 0.2])
-    turn = count + (angle < 0)
+    samples = np.array([np.arange(8.0), count + (angle < 0), angle])
     for n in range(7):
-        k = PLAIN["_bracket"](turn, angle, 8, n)
+        k = PLAIN["_bracket"](samples, 8, n)
         assert count[k] <= n < count[k + 1]
 
 
 def test_merged_samples_are_sorted():
     """All samples, old and new, in the order of energy, each with its own angle."""
     random = np.random.default_rng(5)
-    for old, new in ((0, 4), (5, 0), (1, 1), (20, 7), (3, 30)):
-        samples, points = np.full(old + new, np.nan), random.uniform(size=new + 3)
-        turn, angle = np.zeros(old + new, int), np.zeros(old + new)
-        samples[:old] = np.sort(random.uniform(size=old))
-        turn[:old] = 1000 * samples[:old]
-        angle[:old] = -samples[:old]
-        everything = np.sort(np.concatenate([samples[:old], points[:new]]))
-        PLAIN["_merge"](
-            samples, turn, angle, old, points, (1000 * points).astype(int), -points, new
-        )
-        np.testing.assert_array_equal(samples, everything)
-        np.testing.assert_array_equal(angle, -samples)
-        np.testing.assert_array_equal(turn, (1000 * samples).astype(int))
+    for old, first, last in ((0, 0, 4), (5, 3, 3), (1, 2, 3), (20, 1, 8), (3, 4, 34)):
+        new, points = last - first, random.uniform(size=last + 3)
+        before, table = points.copy(), np.full((3, old + new + 1), np.nan)
+        table[0, :old] = np.sort(random.uniform(size=old))
+        table[1, :old], table[2, :old] = np.floor(1000 * table[0, :old]), -table[0, :old]
+        everything = np.sort(np.concatenate([table[0, :old], points[first:last]]))
+        turn, angle = (1000 * points).astype(int), -points
+        PLAIN["_merge"](table, old, points, turn, angle, first, last)
+        np.testing.assert_array_equal(table[0, :-1], everything)
+        np.testing.assert_array_equal(table[1, :-1], np.floor(1000 * everything))
+        np.testing.assert_array_equal(table[2, :-1], -everything)
+        assert np.isnan(table[:, -1]).all()
+        np.testing.assert_array_equal(points[:first], before[:first])
+        np.testing.assert_array_equal(points[last:], before[last:])
 
 
 @pytest.mark.parametrize("each", [1, 2, 3, 4, 15])

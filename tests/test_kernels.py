@@ -368,6 +368,22 @@ def test_a_trail_holds_every_node_and_a_stride_some():
             np.testing.assert_array_equal([psi, phi], full[node, :2])
 
 
+@pytest.mark.parametrize("kind", KINDS)
+@BOTH
+def test_each_lane_ends_at_its_own_node(kind, backward):
+    """States that live in different wells are met each in its own, in one sweep for all of them."""
+    cells = ready(rough_cells(14, kind, count=10), ENERGIES[0], ENERGIES[-1])
+    count = cells[0].size
+    stop = np.random.default_rng(1).integers(0, count + 1, ENERGIES.size)
+    stop[3:6], stop[6], stop[7] = count // 2, 0, count
+    psi, phi, zeros, trail = sweep(cells, ENERGIES, backward=backward, stop=stop)
+    farthest = range(stop.min(), count + 1) if backward else range(stop.max() + 1)
+    assert np.isfinite(trail[farthest]).all()
+    for lane, node in enumerate(stop):
+        alone = sweep(cells, ENERGIES[lane], backward=backward, stop=node)
+        assert (psi[lane], phi[lane], zeros[lane]) == (alone[0][0], alone[1][0], alone[2][0])
+
+
 def test_a_state_at_its_level_survives_a_barrier():
     """psi that only decays, to the last digit, must not round to nothing behind a barrier."""
     k = math.sqrt(2 * 50.0) * 60.0  # 600 decay lengths of V - E = 50, mass 1

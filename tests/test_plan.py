@@ -235,7 +235,8 @@ def both(given, left, right, top):
     for whole in (True, False):
         cells, _, one, other, home = _plan.prepared(*given, left, right, 0.0, top, whole)
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        _angles.angles(cells, one, other, home, energies, turn, angle)
+        stop = np.full(energies.size, home)
+        _angles.angles(cells, one, other, stop, energies, turn, angle)
         found.append((cells[0].size, turn, angle, cells[1][home]))
     np.testing.assert_array_equal(found[0][3], found[1][3])
     return found

@@ -56,7 +56,8 @@ def test_the_scale_of_the_slope_does_not_change_the_count(hard, scale):
         *hard.cells, hard.left, hard.right, hard.floor, energies[-1], True
     )
     turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-    scaled["angles"](cells, left, right, home, energies, turn, angle)
+    stop = np.full(energies.size, home)
+    scaled["angles"](cells, left, right, stop, energies, turn, angle)
     np.testing.assert_array_equal(turn - (angle < 0), hard.count(energies))
 
 
@@ -66,10 +67,10 @@ def test_angles_and_homes_are_what_their_python_says(hard):
     cells, _, left, right, home = _plan.prepared(
         *hard.cells, hard.left, hard.right, hard.floor, energies[-1], True
     )
-    found = []
+    found, stop = [], np.arange(energies.size) % (cells[0].size + 1)
     for angles in (_angles.angles, PLAIN_ANGLES["angles"]):
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
-        angles(cells, left, right, home, energies, turn, angle)
+        angles(cells, left, right, stop, energies, turn, angle)
         found.append((turn, angle))
     np.testing.assert_array_equal(found[0][0], found[1][0])
     np.testing.assert_allclose(found[0][1], found[1][1], rtol=1e-13, atol=1e-15)

@@ -20,7 +20,7 @@ def passes():
 
     def angles(cells, left, right, stop, energies, turn, angle):
         spent.append(math.ceil(energies.size / LANES))
-        _angles.angles(cells, left, right, stop, np.ascontiguousarray(energies), turn, angle)
+        _angles.angles(cells, left, right, stop, energies, turn, angle)
 
     def homes(cells, left, right, energies):
         spent.append(math.ceil(energies.size / LANES))
