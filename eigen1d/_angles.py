@@ -29,7 +29,7 @@ def _joined(psi, phi, psi_r, phi_r, zeros, sigma):
 @kernel
 def _scale(cells, stop, energy):
     """A scale of phi / psi at a node: any positive one is right, the local wave number smooth."""
-    _, V, mass, per_energy, _, _, _, span = cells
+    _, V, mass, per_energy, _, _, _, span, _ = cells
     cell = min(stop, V.shape[0] - 1)
     m = mass[cell, 0]
     if per_energy.shape[1] > 0:
@@ -87,7 +87,7 @@ def homes(cells, left, right, energies):
     its psi^2. Joined there, both run in the direction in which they grow.
     """
     count = cells[0].size
-    stride = -(-(count + 1) // _NODES)
+    stride, least = -(-(count + 1) // _NODES), cells[8]
     out, starts, ends = integers(energies.size), integers(LANES), integers(LANES)
     psi, phi, zeros = floats(LANES), floats(LANES), integers(LANES)
     for first in range(0, energies.size, LANES):
@@ -103,6 +103,10 @@ def homes(cells, left, right, energies):
             sigma = np.sqrt(2.0 * max(part[lane] - cells[7][0], _TINY) / cells[2][0, 0])
             largest = -np.inf
             for i in range(trail.shape[0]):
+                if least.size > 0:
+                    here = least[min(i * stride, count - 1)]
+                    if part[lane] < max(here, least[max(i * stride - 1, 0)]):
+                        continue  # not reached
                 size = np.log(np.hypot(sigma * trail[i, 0, lane], trail[i, 1, lane]))
                 size += np.log(np.hypot(sigma * trail_r[i, 0, lane], trail_r[i, 1, lane]))
                 size += trail[i, 2, lane] + trail_r[i, 2, lane]

@@ -110,8 +110,9 @@ def given(dimensions):
 EDGE = given(1)
 FLOATS, INTEGERS, COUNTS = types.float64[::1], types.int64[::1], types.uint8[::1]
 # Of cells: width, V, mass, mass_per_energy, terms; where in `table` the propagator of each begins
-# (-1: none; empty: none at all), `table`, and the span of energies (floor, scale) that it is for.
-CELLS = types.Tuple((given(1), *[given(2)] * 3, COUNTS, INTEGERS, FLOATS, FLOATS))
+# (-1: none; empty: none at all), `table`, and the span of energies (floor, scale) that it is for;
+# the least energy that a cell is right for, as lower ones do not reach it (empty: right for all).
+CELLS = types.Tuple((given(1), *[given(2)] * 3, COUNTS, INTEGERS, FLOATS, FLOATS, FLOATS))
 
 
 # Arrays are made by these alone: np.empty compiles anew for each way in which a shape is written.

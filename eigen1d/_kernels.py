@@ -143,7 +143,7 @@ def _line(coefficients, cell, backward):
 
 @kernel(inline=True)
 def _advance(
-    width, V, mass, per_energy, terms, at, table, constant, cell, backward, state, lanes, log
+    width, V, mass, per_energy, terms, at, table, shift, constant, cell, backward, state, lanes, log
 ):
     """Carry `state` (see `straight`) across a cell, from its left or its right end.
 
@@ -156,7 +156,7 @@ def _advance(
         return _AGE
     if at.size > 0 and at[cell] >= 0:
         powers = orders(count, per_energy.shape[1] > 0)
-        propagated(state, table, at[cell], backward, powers)
+        propagated(state, table, at[cell], shift, backward, powers)
         return 1
     v, slope = _line(V, cell, backward)
     m, m_slope = _line(mass, cell, backward)
@@ -166,6 +166,24 @@ def _advance(
         q, q_slope = _line(per_energy, cell, backward)
         graded(state, v, slope, m, m_slope, q, q_slope, h, count)
     return 1
+
+
+@kernel
+def _begin(V, mass, cell, backward, least, state, log):
+    """Let energies below `least` begin behind a cell instead: there only, as if it were an edge."""
+    v, m = V[cell, 0], mass[cell, 0]
+    for j in range(1, 1 if backward else V.shape[1]):
+        v += V[cell, j]
+    for j in range(1, 1 if backward else mass.shape[1]):
+        m += mass[cell, j]
+    for lane in range(LANES):
+        energy = state[5 * LANES + lane]
+        if energy < least:
+            state[lane] = 1.0
+            state[LANES + lane] = np.sqrt(2.0 * max(v - energy, 0.0) / m)
+            for row in range(2, 5):
+                state[row * LANES + lane] = 0.0
+            log[lane] = 0.0
 
 
 @kernel
@@ -219,7 +237,7 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         state[i] = 0.0
     for lane in range(LANES):
         log[lane] = 0.0
-    width, V, mass, per_energy, terms, at, table, span = cells
+    width, V, mass, per_energy, terms, at, table, span, least = cells
     constant, floor, scale = shape(V, mass, per_energy) == 0, span[0], span[1]
     node = count if backward else 0
     for lane in range(LANES):
@@ -227,6 +245,9 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
         state[5 * LANES + lane] = energy
         state[6 * LANES + lane] = (energy - floor) / scale
         state[lane], state[LANES + lane] = _start(edge, energy)
+    lowest = energies[0]
+    for lane in range(lanes):
+        lowest = min(lowest, energies[lane])
     due = stop[0]  # the next node where a lane ends
     for lane in range(lanes):
         due = max(due, stop[lane]) if backward else min(due, stop[lane])
@@ -242,13 +263,16 @@ def sweep(cells, edge, backward, energies, stop, psi, phi, zeros, trail, stride)
             if due < 0:
                 return
         cell = node - 1 if backward else node
+        shift = (least[cell] - floor) / scale if least.size > 0 else 0.0
         age += _advance(
-            width, V, mass, per_energy, terms, at, table, constant, cell, backward, state, lanes,
-            log,
+            width, V, mass, per_energy, terms, at, table, shift, constant, cell, backward, state,
+            lanes, log,
         )  # fmt: skip
         if age >= _AGE:
             _rescale(state, log)
             age = 0
+        if least.size > 0 and least[cell] > lowest:
+            _begin(V, mass, cell, backward, least[cell], state, log)
         node += -1 if backward else 1
 
 

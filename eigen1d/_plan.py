@@ -40,6 +40,9 @@ _HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, ma
 # Decay lengths from the outermost place that an energy reaches: what lies further out changes the
 # solution there by exp(-2 * 20) = 4e-18 of itself.
 _FAR = 20.0
+# Energies that are looked at for this, each halfway from the one before to the highest; and cells,
+# where that pays.
+_TRIED, _FEW = 8, 4096
 # So many terms of a cell of each `shape` are summed in each sweep: about as fast as a propagator,
 # which is worth its memory beyond.
 _READY = (13, 12, 0)
@@ -257,7 +260,39 @@ def _longer(rows):
 
 
 @kernel
-def _cut(width, V, mass, per_energy, low, high):
+def _least_energies(width, V, mass, floor, top, home):
+    """The least energy that matters in each cell, of a few tried: in tails, the higher ones alone.
+
+    What has decayed over _FAR lengths since it left the outermost place that it reaches, does not
+    matter. Cells of a long tail may so be longer than its lowest energies would allow.
+    """
+    count = width.size
+    least = floats(count)
+    for cell in range(count):
+        least[cell] = floor
+    if count > _FEW:
+        return least
+    for k in range(_TRIED):
+        energy = top - (top - floor) * 0.5 ** (k + 1.0)
+        first = last = home
+        for cell in range(count):
+            if _decay(width, V, mass, cell, energy) == 0.0:
+                first, last = min(first, cell), max(last, cell)
+        far = 0.0
+        for cell in range(last + 1, count):
+            if far > _FAR:
+                least[cell] = energy
+            far += _decay(width, V, mass, cell, energy)
+        far = 0.0
+        for cell in range(first - 1, -1, -1):
+            if far > _FAR:
+                least[cell] = energy
+            far += _decay(width, V, mass, cell, energy)
+    return least
+
+
+@kernel
+def _cut(width, V, mass, per_energy, least, high):
     """Halve cells, and halves again, until each part is short: rows as _HEAD says.
 
     Halves of halves have exact widths and places. From differences of positions the widths of a
@@ -272,6 +307,7 @@ def _cut(width, V, mass, per_energy, low, high):
     count = 0
     most = _most(per_energy)
     for cell in range(width.size):
+        low = least[cell]
         largest = _first_share(V[cell], mass[cell], per_energy[cell], width[cell], low, high)
         begin, waiting = 0.0, 0
         while waiting > 0 or begin < 1.0:
@@ -289,7 +325,7 @@ def _cut(width, V, mass, per_energy, low, high):
             _part(V[cell], start, share, pairs, v)
             _part(mass[cell], start, share, pairs, m)
             _part(per_energy[cell], start, share, pairs, q)
-            _trim(v, max(abs(v[0] - low), abs(v[0] - high)))
+            _trim(v, abs(v[0] - low))
             _trim(m, m[0])
             needed = _terms(v, m, q, width[cell] * share, low, high, most, work)
             if needed == TOO_LONG and share > _FINEST:
@@ -392,8 +428,12 @@ def _deepest(V):
     return home
 
 
-@kernel(signature=CELLS(given(1), given(2), given(2), given(2), COUNTS, types.float64, types.float64))
-def _ready(width, V, mass, per_energy, terms, floor, scale):
+@kernel(
+    signature=CELLS(
+        given(1), given(2), given(2), given(2), COUNTS, FLOATS, types.float64, types.float64
+    )
+)
+def _ready(width, V, mass, per_energy, terms, least, floor, scale):
     """Return short cells as `CELLS` says, with propagators where they are worth their memory."""
     kind = shape(V, mass, per_energy)
     ready = _READY[kind]
@@ -407,10 +447,10 @@ def _ready(width, V, mass, per_energy, terms, floor, scale):
             total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
     table = floats(total)
     if any_table:
-        tabulate(width, V, mass, per_energy, terms, at, floor, scale, table)
+        tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table)
     span = floats(2)
     span[0], span[1] = floor, scale
-    return width, V, mass, per_energy, terms, at, table, span
+    return width, V, mass, per_energy, terms, at, table, span, least
 
 
 _PREPARE = types.Tuple((CELLS, types.float64[:, ::1], EDGE, EDGE, types.int64))(
@@ -451,13 +491,20 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
         first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)
         cells = _ready(
             width[first:last], V[first:last], mass[first:last], per_energy[first:last],
-            terms[first:last], floor, scale,
+            terms[first:last], floats(0), floor, scale,
         )  # fmt: skip
         return cells, grid(0, _HEAD), left, right, _deepest(cells[1])
-    parts = _cut(width, V, mass, per_energy, floor, top)
+    least = floats(width.size)
+    for cell in range(width.size):
+        least[cell] = floor
+    if not whole and per_energy.shape[1] == 0:
+        least = _least_energies(width, V, mass, floor, top, _deepest(V))
+    parts = _cut(width, V, mass, per_energy, least, top)
     if parts.shape[0] > MOST_PARTS:
         nothing = counts(0)
-        cells = _ready(width[:0], V[:0], mass[:0], per_energy[:0], nothing, floor, scale)
+        cells = _ready(
+            width[:0], V[:0], mass[:0], per_energy[:0], nothing, floats(0), floor, scale
+        )
         return cells, parts, left, right, 0
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
     first, last, left, right = _kept(
@@ -465,12 +512,12 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
         top, whole,
     )  # fmt: skip
     parts = parts[first:last]
-    terms = counts(parts.shape[0])
+    terms, of_parts = counts(parts.shape[0]), floats(parts.shape[0])
     for i in range(terms.size):
-        terms[i] = int(parts[i, 3])
+        terms[i], of_parts[i] = int(parts[i, 3]), least[int(parts[i, 0])]
     cells = _ready(
         parts[:, 4], parts[:, _HEAD:V_end], parts[:, V_end:m_end], parts[:, m_end:],
-        terms, floor, scale,
+        terms, of_parts, floor, scale,
     )  # fmt: skip
     return cells, parts, left, right, _deepest(cells[1])
 

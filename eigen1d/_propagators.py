@@ -32,9 +32,9 @@ def _step(powers):
     """Make the kernel that crosses a cell with so many powers of u; unrolled, see `_straight`."""
 
     @kernel(fused=True)
-    def step(state, table, first, last):
+    def step(state, table, shift, first, last):
         for lane in range(LANES):
-            p, f, u = state[lane], state[LANES + lane], state[6 * LANES + lane]
+            p, f, u = state[lane], state[LANES + lane], state[6 * LANES + lane] - shift
             pp, pf, fp, ff = 0.0, 0.0, 0.0, 0.0
             for k in range(powers):
                 row = 4 * (powers - 1 - k)
@@ -63,16 +63,19 @@ _few, _some, _many = _step(_ORDERS[0]), _step(_ORDERS[1]), _step(_ORDERS[2])
 
 
 @kernel(inline=True)
-def propagated(state, table, start, backward, powers):
-    """Cross a cell whose propagator begins at `start`; `state` as for `straight`."""
+def propagated(state, table, start, shift, backward, powers):
+    """Cross a cell whose propagator begins at `start` and is one in u - shift.
+
+    `state` as for `straight`, with u behind the energies.
+    """
     first, last = (3, 0) if backward else (0, 3)
     cell = table[start : start + 4 * powers]
     if powers == _ORDERS[0]:
-        _few(state, cell, first, last)
+        _few(state, cell, shift, first, last)
     elif powers == _ORDERS[1]:
-        _some(state, cell, first, last)
+        _some(state, cell, shift, first, last)
     else:
-        _many(state, cell, first, last)
+        _many(state, cell, shift, first, last)
 
 
 @kernel
@@ -135,10 +138,11 @@ def _used(coefficients, cell):
 
 @kernel(
     signature=types.void(
-        given(1), given(2), given(2), given(2), COUNTS, INTEGERS, types.float64, types.float64, FLOATS
+        given(1), given(2), given(2), given(2), COUNTS, INTEGERS, FLOATS, types.float64,
+        types.float64, FLOATS,
     )
 )
-def tabulate(width, V, mass, per_energy, terms, at, floor, scale, table):
+def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
     """Write the propagators of all cells that have a place in `table`.
 
     Parameters
@@ -147,8 +151,10 @@ def tabulate(width, V, mass, per_energy, terms, at, floor, scale, table):
         As for `_kernels.sweep`.
     at : ndarray of int64, shape (cells,)
         Where each begins, or -1.
+    least : ndarray, shape (cells,) or (0,)
+        The energy at which each propagator begins; none: at the floor.
     floor, scale : float
-        Energies are floor + u scale.
+        u is (E - least) / scale.
     table : ndarray
         Result.
     """
@@ -181,14 +187,14 @@ def tabulate(width, V, mass, per_energy, terms, at, floor, scale, table):
         m_size = max(m_size, q_size)
         for lane in range(LANES):
             one = members[min(lane, size - 1)]
-            h = width[one]
+            h, low = width[one], least[one] if least.size > 0 else floor
             w[w_size, lane] = -2.0 * h * scale
             for j in range(w_size):
-                w[j, lane] = 2.0 * h * (V[one, j] - (floor if j == 0 else 0.0))
+                w[j, lane] = 2.0 * h * (V[one, j] - (low if j == 0 else 0.0))
             for j in range(m_size):
                 m[j, lane] = h * mass[one, j] if j < mass.shape[1] else 0.0
             for j in range(q_size):
-                m[j, lane] += h * floor * per_energy[one, j]
+                m[j, lane] += h * low * per_energy[one, j]
                 q[j, lane] = h * scale * per_energy[one, j]
         for solution in range(2):
             for lane in range(LANES):

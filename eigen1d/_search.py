@@ -179,6 +179,8 @@ def _guess(table, used, i, n, edge):
             y[j] = (x[size] * y[j] - x[j] * y[j + 1]) / gap if gap != 0.0 else np.nan
         correction = abs(y[0] - value)
         if size > 1 and not correction < error:
+            if correction > error:  # not where it is no number
+                error = correction
             break
         if size > 0:
             error = correction
@@ -252,11 +254,12 @@ def _merge(table, used, points, turn, angle, first, last):
 
 
 @kernel
-def _verified(turn, angle, points, k, n, target, energy, bracket, i):
+def _verified(turn, angle, points, k, n, target, near, energy, bracket, i):
     """Take two counts around a target, at points k and k + 1, as the bracket of level n.
 
     Returns whether that closes the matter: 1 for a level alone, 2 for one of several, 0 if not,
-    _OFF_CENTRE if the level lies near an end.
+    _OFF_CENTRE if the level is too close to an end, where `energy` has it. `near`: it is known to
+    be close to the target.
     """
     below, above = _count(turn[k], angle[k]), _count(turn[k + 1], angle[k + 1])
     if below > n or above <= n:
@@ -266,9 +269,11 @@ def _verified(turn, angle, points, k, n, target, energy, bracket, i):
     if below < n or above > n + 1:
         return 2
     f, f_high = _above(turn[k], angle[k], n), _above(turn[k + 1], angle[k + 1], n)
-    if f_high > f:
+    if max(-f, f_high) < 1.0 and f_high > f:  # else a staircase: it rises here, but not straight
         energy[i] = low + (high - low) * (-f / (f_high - f))
-    return 1 if abs(energy[i] - target) <= 0.15 * (high - low) else _OFF_CENTRE
+        near = abs(energy[i] - target) <= 0.15 * (high - low)
+        return 1 if near else _OFF_CENTRE
+    return 1 if near else 0
 
 
 @kernel(
@@ -316,7 +321,7 @@ def _converge(
                 guess, error = energy[i], 0.0
             elif missed[i] == _FAILED:
                 error, missed[i] = np.inf, 0
-            if high - low <= half or error <= _SURE * half:
+            if high - low <= 0.3 * half or error <= _SURE * half:
                 target[i], place[i] = guess, new
                 points[new] = max(guess - half, floor)
                 points[new + 1] = min(guess + half, edge)
@@ -335,15 +340,13 @@ def _converge(
         angles(cells, left, right, stops[:new], points[:new], turn, angle)
         for i in range(size):
             if place[i] >= 0:
+                near = width[i] <= 0.3 * _half_width(target[i], resolution, floor)
                 done[i] = _verified(
-                    turn, angle, points, place[i], level[i], target[i], energy, bracket, i
+                    turn, angle, points, place[i], level[i], target[i], near, energy, bracket, i
                 )
+                missed[i] = _FAILED
                 if done[i] == _OFF_CENTRE:
-                    # Once more around the root of the two angles; they may be steep, not straight.
-                    done[i] = 1 if missed[i] == _RECENTRED else 0
-                    missed[i] = _RECENTRED
-                else:
-                    missed[i] = _FAILED
+                    done[i], missed[i] = 0, _RECENTRED
         for t in range(stop.size):
             first, last = (0, new) if stop.size == 1 else (begin[t], begin[t + 1])
             _merge(tables[t], used[t], points, turn, angle, first, last)
