@@ -2,19 +2,21 @@
 
 import os
 from concurrent.futures import ThreadPoolExecutor
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from itertools import pairwise
 
 import numpy as np
 
 from . import _checks, _ensemble
-from ._parts import EDGES
 from .errors import InputError
 from .levels import Request
 from .profile import NM_EV, Profile
-from .shooting import ROUNDING, find
+from .shooting import ROUNDING, Search
+from .units import Units
 
 _PARTS = 8  # of a stack for each thread: the last to end keeps the others waiting for less
-_INTERPOLATIONS = ("linear", "step")  # those whose cells need no more than two rows
+_MOST_WORKERS = 1024  # more threads than any machine has cores gain nothing
+_BY_KERNEL = ("linear", "step")  # interpolations whose cells need no more than two rows
 
 
 @dataclass(frozen=True, eq=False)
@@ -31,19 +33,31 @@ class Ensemble:
         How many levels each profile has of those asked for; 0 where it failed too.
     failures : dict of int to str
         What was wrong with the members that could not be solved, by their number from 0.
+    notes : dict of int to tuple of str
+        What the user should know about a member, in words, where there is something.
+    units : Units or None
+        Of all members; None where profiles of a list differ in them, or there are none.
     """
 
     energy: np.ndarray
     bracket: np.ndarray
     found: np.ndarray
-    failures: dict
+    failures: dict[int, str] = field(default_factory=dict)
+    notes: dict[int, tuple[str, ...]] = field(default_factory=dict)
+    units: Units | None = None
+
+    def __post_init__(self):
+        for array in (self.energy, self.bracket, self.found):
+            array.flags.writeable = False
 
     def __len__(self):
         return self.found.size
 
     def __repr__(self):
         failed = f", {len(self.failures)} failed" if self.failures else ""
-        return f"<Ensemble: {len(self)} profiles, up to {self.energy.shape[1]} levels{failed}>"
+        unit = f", in {self.units.energy}" if self.units else ""
+        most = self.found.max(initial=0)
+        return f"<Ensemble: {len(self)} profiles, up to {most} levels{unit}{failed}>"
 
 
 def solve_many(
@@ -73,12 +87,11 @@ def solve_many(
     x : array_like, shape (rows,), optional
         Positions, as for `Profile.from_rows`.
     V : array_like, shape (profiles, rows), optional
-    mass : float or array_like, shape (rows,) or (profiles, rows), optional
-        In electron masses.
-    interpolation : {"linear", "step"}, optional
-    left, right : {"open", "wall"}, optional
-    units : Units, optional
-        `interpolation` to `units`: of a stack; profiles bring their own.
+    mass : float or array_like, shape (rows,), (profiles, 1) or (profiles, rows), optional
+        In electron masses: of all, of each row, of each profile, of each row of each profile.
+    interpolation, left, right, units
+        Of a stack, as for `Profile.from_rows`; profiles bring their own. Rows that are joined by
+        "smooth" or "monotone" curves cost as much as a list.
     workers : int, optional
         Threads; default: one for each core that may be used.
 
@@ -92,7 +105,7 @@ def solve_many(
     ------
     InputError
         What concerns all members: neither or both of profiles and a stack, arrays whose shapes do
-        not fit, positions that do not ascend, an unknown word.
+        not fit, positions or a mass shared by all that cannot be used, an unknown word.
 
     Examples
     --------
@@ -102,139 +115,161 @@ def solve_many(
     >>> from eigen1d import solve_many
     >>> x = [0, 6, 6, 14, 14, 20]
     >>> shape = np.array([1, 1, 0, 0, 1, 1])
-    >>> wells = solve_many(x=x, V=np.outer([0.1, 0.2, 0.3], shape), mass=0.067, count=2)
+    >>> wells = solve_many(x=x, V=np.outer([0.1, 0.2, 0.3], shape), mass=0.067, count=3)
+    >>> wells
+    <Ensemble: 3 profiles, up to 2 levels, in eV>
     >>> wells.energy.round(4)
-    array([[0.0344, 0.0979],
-           [0.0428, 0.158 ],
-           [0.0475, 0.1814]])
+    array([[0.0328, 0.099 ,    nan],
+           [0.0424, 0.1532,    nan],
+           [0.0478, 0.1805,    nan]])
     """
-    request = Request.lowest(count)
-    workers = _workers(workers)
-    if (profiles is None) == (V is None):
-        raise InputError("give profiles, or x and V of a stack, and not both")
+    request, workers = Request.lowest(count), _workers(workers)
+    rows = {"x": x, "V": V, "mass": mass, "interpolation": interpolation, "left": left}
+    rows |= {"right": right, "units": units}
     if profiles is None:
-        return _stack(request, x, V, mass, interpolation, left, right, units, workers)
-    profiles = list(profiles)
-    for i, profile in enumerate(profiles):
-        if not isinstance(profile, Profile):
-            raise InputError(f"profiles must hold Profiles only; number {i} is {profile!r:.60}")
-    out = _empty(len(profiles), request.count)
-    _one_by_one(out, range(len(profiles)), profiles.__getitem__, request, workers)
-    return out
+        members = _Stack.checked(**rows)
+    else:
+        defaults = solve_many.__kwdefaults__
+        members = _listed(profiles, [k for k, value in rows.items() if value is not defaults[k]])
+        kinds = {profile.units for profile in members}
+        units = kinds.pop() if len(kinds) == 1 else None
+    size, count = len(members), request.count
+    energy, bracket = np.full((size, count), np.nan), np.full((size, count, 2), np.nan)
+    found = np.full(size, -1)
+    if profiles is None and interpolation in _BY_KERNEL:
+        _by_kernel(members, energy, bracket, found, workers)
+    failures, notes = _one_by_one(members, request, energy, bracket, found, workers)
+    return Ensemble(energy, bracket, found, failures, notes, units)
 
 
 def _workers(workers):
     if workers is None:
-        return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count()
+        if hasattr(os, "sched_getaffinity"):
+            return len(os.sched_getaffinity(0))
+        return os.cpu_count() or 1
     if isinstance(workers, bool) or not hasattr(workers, "__index__") or workers < 1:
         raise InputError(f"workers must be a whole number from 1; found {workers!r}")
-    return int(workers)
+    return min(int(workers), _MOST_WORKERS)
 
 
-def _empty(size, count):
-    return Ensemble(
-        energy=np.full((size, count), np.nan),
-        bracket=np.full((size, count, 2), np.nan),
-        found=np.zeros(size, np.int64),
-        failures={},
-    )
-
-
-def _one_by_one(out, members, profile_of, request, workers):
-    """Solve members as `solve` does and write what comes of each into `out`."""
-
-    def solved(i):
-        try:
-            levels = find(profile_of(i), request)
-        except InputError as fault:
-            return i, None, str(fault)
-        return i, levels, ""
-
-    with ThreadPoolExecutor(workers) as pool:
-        for i, levels, fault in pool.map(solved, members):
-            out.found[i] = 0 if levels is None else len(levels)
-            out.energy[i], out.bracket[i] = np.nan, np.nan
-            if levels is None:
-                out.failures[i] = fault
-            else:
-                out.energy[i, : len(levels)] = levels.energy
-                out.bracket[i, : len(levels)] = levels.bracket
-
-
-def _stack(request, x, V, mass, interpolation, left, right, units, workers):
-    """Solve tables that share their positions."""
-    if x is None:
-        raise InputError("a stack needs x, one position for each row of V")
-    x = _checks.numbers("x", x)
-    _checks.check_rows(x)
-    _checks.choice("left edge", left, EDGES)
-    _checks.choice("right edge", right, EDGES)
-    if interpolation not in _INTERPOLATIONS:
-        raise InputError(
-            f"a stack is joined by one of: {', '.join(_INTERPOLATIONS)}; found {interpolation!r}. "
-            "Make profiles of the rows and give those"
-        )
-    V, mass = _stacked("V", V), _stacked("mass", mass)
-    if V.ndim != 2 or V.shape[1] != x.size:
-        raise InputError(
-            f"V must have the shape (profiles, rows), with {x.size} rows as in x; found {V.shape}"
-        )
-    if mass.shape not in ((), x.shape, V.shape):
-        raise InputError(
-            f"mass must be a number, or have the shape {x.shape} or {V.shape}; found {mass.shape}"
-        )
-    out = _empty(V.shape[0], request.count)
-    usable = _usable(x, V, mass)
-    out.found[~usable] = -1
-    flags = interpolation == "step", left == "open", right == "open"
-    _compiled(out, np.flatnonzero(usable), x, V, mass * units.electron_mass, flags, workers)
-
-    def profile_of(i):
-        return Profile.from_rows(
-            x, V[i], mass[i] if mass.ndim == 2 else mass, interpolation=interpolation,
-            left=left, right=right, units=units,
-        )  # fmt: skip
-
-    _one_by_one(out, np.flatnonzero(out.found < 0), profile_of, request, workers)
-    return out
-
-
-def _stacked(name, values):
+def _listed(profiles, stray):
+    """The profiles of a list; `InputError` if it holds others, or with arguments of a stack."""
+    if isinstance(profiles, Profile):
+        raise InputError("profiles must be a list of them; solve(profile, count) takes one")
     try:
-        return np.asarray(values, dtype=float)
-    except (TypeError, ValueError):
-        raise InputError(f"{name} must be numbers, as many in each profile") from None
+        profiles = list(profiles)
+    except TypeError:
+        raise InputError(f"profiles must be a list of Profiles; found {profiles!r:.60}") from None
+    for i, profile in enumerate(profiles):
+        if not isinstance(profile, Profile):
+            raise InputError(
+                f"profiles must be a list of Profiles; number {i} is {profile!r:.60}. Arrays go "
+                "by name: solve_many(x=..., V=..., count=...)"
+            )
+    if stray:
+        raise InputError(
+            f"give profiles or a stack of tables, not both; found profiles and {', '.join(stray)}"
+        )
+    return profiles
 
 
-def _usable(x, V, mass):
-    """Which members are beyond doubt; the others are made into profiles, which say what is wrong.
+@dataclass(frozen=True, eq=False)
+class _Stack:
+    """Tables of rows that share their positions; a sequence of profiles.
 
-    A positive mass, and all sizes as `_checks.check_range` wants them.
+    V has the shape (profiles, rows), mass one that is broadcast to it; `shared` are keywords of
+    `Profile.from_rows`.
     """
-    size = np.abs(V).max(axis=1)
-    least, most = np.atleast_2d(mass).min(axis=1), np.atleast_2d(mass).max(axis=1)
-    step = np.diff(x)
-    good = (size <= _checks.MOST) & ((size >= 1e-250) | (size == 0))
-    good &= (least >= 1e-100) & (most <= _checks.MOST)
-    return good & (step[step > 0].min() >= 1e-100) & (np.abs(x).max() <= _checks.MOST)
+
+    x: np.ndarray
+    V: np.ndarray
+    mass: np.ndarray
+    shared: dict
+
+    @classmethod
+    def checked(cls, x, V, mass, **shared):
+        """Return the stack; `InputError` if something is wrong with all of its members."""
+        if x is None and V is None:
+            raise InputError("give a list of profiles, or x and V of a stack of tables")
+        if x is None or V is None:
+            raise InputError("a stack needs both x, shape (rows,), and V, shape (profiles, rows)")
+        x, V, mass = _checks.numbers("x", x), _numbers("V", V), _numbers("mass", mass)
+        if V.ndim != 2 or V.shape[1] != x.size:
+            raise InputError(
+                f"V must have the shape (profiles, rows), with {x.size} rows as in x; found "
+                f"{V.shape}"
+            )
+        profiles, rows = V.shape
+        if mass.shape not in ((), (1,), (rows,), (1, rows), (profiles, 1), (profiles, rows)):
+            raise InputError(
+                f"mass must be a number, or have the shape ({rows},), ({profiles}, 1) or "
+                f"({profiles}, {rows}); found {mass.shape}"
+            )
+        # One profile finds what is wrong with x, a mass of all, and the words.
+        Profile.from_rows(x, np.zeros(rows), mass if mass.ndim < 2 else 1.0, **shared)
+        return cls(x, V, mass, shared)
+
+    def __len__(self):
+        return self.V.shape[0]
+
+    def __getitem__(self, i):
+        mass = np.broadcast_to(self.mass, self.V.shape)[i]
+        return Profile.from_rows(self.x, self.V[i], mass, **self.shared)
 
 
-def _compiled(out, members, x, V, mass, flags, workers):
-    """Solve members of a stack by the kernel, in parts, each in a thread of its own."""
-    row = np.flatnonzero(np.diff(x) > 0)
-    width = np.diff(x)[row]
-    mass = np.atleast_2d(mass)
-    if mass.shape[1] > 1 and (mass == mass[:, :1]).all():
-        mass = mass[:, :1]
+def _numbers(name, values):
+    """An array of real numbers, of any shape."""
+    try:
+        array = np.asarray(values)
+        if array.dtype.kind == "c":
+            raise TypeError("a cast to float would drop the imaginary part")
+        return array.astype(float, copy=False)
+    except (TypeError, ValueError):
+        raise InputError(
+            f"{name} must be numbers, as many in each profile; found {values!r:.80}"
+        ) from None
 
-    def solve_part(part):
-        energy = np.full((part.size, out.energy.shape[1]), np.nan)
-        bracket, found = np.full((*energy.shape, 2), np.nan), np.empty(part.size, np.int64)
+
+def _by_kernel(stack, energy, bracket, found, workers):
+    """Solve a stack by the kernel, in parts, each in a thread of its own.
+
+    Where `found` is -1 in the end, something may be wrong, or a level lies at the very edge.
+    """
+    row = np.flatnonzero(np.diff(stack.x) > 0)
+    width, mass = np.diff(stack.x)[row], np.atleast_2d(stack.mass)
+    unit = stack.shared["units"].electron_mass
+    shared = stack.shared
+    flags = shared["interpolation"] == "step", shared["left"] == "open", shared["right"] == "open"
+
+    def solve_part(ends):
+        part = slice(*ends)
         _ensemble.find_many(
-            width, row, V[part], mass if mass.shape[0] == 1 else mass[part], flags, ROUNDING,
-            energy, bracket, found,
+            width, row, stack.V[part], mass if mass.shape[0] == 1 else mass[part], unit, flags,
+            ROUNDING, energy[part], bracket[part], found[part],
         )  # fmt: skip
-        out.energy[part], out.bracket[part], out.found[part] = energy, bracket, found
 
+    parts = max(1, min(_PARTS * workers, len(stack)))
+    ends = [len(stack) * k // parts for k in range(parts + 1)]
     with ThreadPoolExecutor(workers) as pool:
-        list(pool.map(solve_part, np.array_split(members, _PARTS * workers)))
+        list(pool.map(solve_part, pairwise(ends)))
+
+
+def _one_by_one(members, request, energy, bracket, found, workers):
+    """Solve members whose `found` is -1 as `solve` does; return failures and notes."""
+
+    def solve_one(i):
+        energy[i], bracket[i], found[i] = np.nan, np.nan, 0
+        try:
+            search = Search(members[i])
+            _, levels, ends = search.requested(request)
+        except InputError as fault:
+            return str(fault), ()
+        found[i] = levels.size
+        energy[i, : levels.size], bracket[i, : levels.size] = levels, ends
+        return "", search.notes
+
+    todo = np.flatnonzero(found < 0).tolist()
+    with ThreadPoolExecutor(workers) as pool:
+        told = list(zip(todo, pool.map(solve_one, todo), strict=True))
+    failures = {i: fault for i, (fault, _) in told if fault}
+    return failures, {i: words for i, (_, words) in told if words}
