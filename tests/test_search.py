@@ -109,7 +109,10 @@ def assert_found(well, first, last, found, bottom=None):
     assert (done > 0).all()
     assert ((bracket[:, 0] <= energy) & (energy <= bracket[:, 1])).all()
     half = well.half_width(energy)
-    assert (bracket[:, 1] - bracket[:, 0] <= 2.5 * half).all()
+    width = bracket[:, 1] - bracket[:, 0]
+    assert (width <= 2.5 * half).all()
+    # Narrower ones would not hold what rounding does; at the edge of the continuum they end.
+    assert ((width >= 1.5 * half) | (bracket[:, 1] == well.edge)).all()
     for stop in (None, 1 + energy.size):
         counts = well.count(bracket.ravel(), stop=stop).reshape(-1, 2)
         assert (counts[:, 0] <= n).all() and (counts[:, 1] > n).all()
