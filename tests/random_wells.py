@@ -37,6 +37,16 @@ class Wells:
             self.floor if bottom is None else bottom, top, self.resolution,
         )  # fmt: skip
 
+    def scaled(self, energy, length):
+        """The same in other units of energy and length, with hbar = 1 still."""
+        width, V, mass, per_energy = self.cells
+        unit = 1 / (energy * length**2)  # of mass
+        factors = np.array([1.0, energy, unit, unit / energy])
+        return Wells(
+            (width * length, V * energy, mass * unit, per_energy * (unit / energy)),
+            self.left * factors, self.right * factors, self.floor * energy, self.edge * energy,
+        )  # fmt: skip
+
     def half_width(self, energy):
         """Of the brackets that are promised."""
         return self.resolution * (energy - self.floor) + 4 * EPS * np.abs(energy)

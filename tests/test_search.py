@@ -163,6 +163,21 @@ def test_windows_hold_the_levels_inside_them(kind):
     assert windows > 8
 
 
+@pytest.mark.parametrize("energy, length", [(2.0**40, 2.0**-20), (2.0**-80, 2.0**40)])
+@pytest.mark.parametrize("kind", MAKERS)
+def test_units_change_no_digit(kind, energy, length):
+    """In units larger by powers of two all is the same to the last bit: nothing is absolute."""
+    for seed in range(0, 40, 3):
+        well = random_wells(kind, seed)
+        if well is None:
+            continue
+        one, other = well.find(0, 12), well.scaled(energy, length).find(0, 12)
+        assert one[:2] == other[:2]
+        for a, b in zip(one[2:4], other[2:4], strict=True):
+            np.testing.assert_array_equal(a * energy, b)
+        np.testing.assert_array_equal(one[4], other[4])
+
+
 def test_find_is_what_its_python_says(hard):
     """Compiled and interpreted, the same levels and brackets to rounding."""
     one, other = hard.find(0, 4), hard.find(0, 4, run=PLAIN["find"])
