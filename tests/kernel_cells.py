@@ -112,7 +112,7 @@ def exact_matrix(cells, cell, energy, t=1):
 
 def propagator(cells, cell, energy):
     """T - 1 of a cell from its table, in doubles, by the powers that a sweep would use."""
-    at, table, (floor, scale) = cells[5:]
+    at, table, (floor, scale), _ = cells[5:]
     ends = np.append(np.sort(at[at >= 0]), table.size)
     rows = table[at[cell] : ends[np.searchsorted(ends, at[cell], "right")]].reshape(-1, 2, 2)
     return np.polynomial.polynomial.polyval((energy - floor) / scale, rows)
