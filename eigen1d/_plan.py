@@ -292,7 +292,7 @@ def _least_energies(width, V, mass, floor, top, home):
 
 
 @kernel
-def _cut(width, V, mass, per_energy, least, high):
+def _cut(width, V, mass, per_energy, least, floor, high):
     """Halve cells, and halves again, until each part is short: rows as _HEAD says.
 
     Halves of halves have exact widths and places. From differences of positions the widths of a
@@ -325,7 +325,7 @@ def _cut(width, V, mass, per_energy, least, high):
             _part(V[cell], start, share, pairs, v)
             _part(mass[cell], start, share, pairs, m)
             _part(per_energy[cell], start, share, pairs, q)
-            _trim(v, abs(v[0] - low))
+            _trim(v, abs(v[0] - floor))
             _trim(m, m[0])
             needed = _terms(v, m, q, width[cell] * share, low, high, most, work)
             if needed == TOO_LONG and share > _FINEST:
@@ -499,7 +499,7 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
         least[cell] = floor
     if not whole and per_energy.shape[1] == 0:
         least = _least_energies(width, V, mass, floor, top, _deepest(V))
-    parts = _cut(width, V, mass, per_energy, least, top)
+    parts = _cut(width, V, mass, per_energy, least, floor, top)
     if parts.shape[0] > MOST_PARTS:
         nothing = counts(0)
         cells = _ready(

@@ -13,6 +13,7 @@ from numba import types
 
 from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, grid, integers, kernel
 
+_GROUP = 8  # cells whose series are summed side by side: rows of both stay in the first cache
 _ORDERS = (6, 8, 12)  # powers of u: three kinds of cells
 
 
@@ -89,13 +90,13 @@ def _zeros(rows, columns):
 
 @kernel(fused=True, inline=True)
 def _set(out, row, c, i, series, k):
-    for lane in range(LANES):
+    for lane in range(_GROUP):
         out[row, lane] = c[i, lane] * series[k, lane]
 
 
 @kernel(fused=True, inline=True)
 def _add(out, row, c, i, series, k):
-    for lane in range(LANES):
+    for lane in range(_GROUP):
         out[row, lane] += c[i, lane] * series[k, lane]
 
 
@@ -122,7 +123,7 @@ def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
                 for j in range(min(k + 1, q_size)):
                     _add(psi, row, q, j, phi, before - j * powers - 1)
                 _add(phi, row, w, w_size, psi, before - 1)
-            for lane in range(LANES):
+            for lane in range(_GROUP):
                 psi[row, lane] *= share
                 phi[row, lane] *= share
 
@@ -164,17 +165,17 @@ def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
         if at[cell] >= 0:
             most = max(most, terms[cell])
     powers = orders(most, columns > 0)
-    psi = _zeros((most + 1) * powers, LANES)
-    phi = _zeros((most + 1) * powers, LANES)
-    w = grid(V.shape[1] + 1, LANES)
-    m = grid(max(mass.shape[1], columns), LANES)
-    q = grid(columns, LANES)
-    members = integers(LANES)
+    psi = _zeros((most + 1) * powers, _GROUP)
+    phi = _zeros((most + 1) * powers, _GROUP)
+    w = grid(V.shape[1] + 1, _GROUP)
+    m = grid(max(mass.shape[1], columns), _GROUP)
+    q = grid(columns, _GROUP)
+    members = integers(_GROUP)
     cell = 0
     while cell < count:
         size, longest = 0, 1
         w_size, m_size, q_size = 1, 1, 0
-        while cell < count and size < LANES:
+        while cell < count and size < _GROUP:
             if at[cell] >= 0:
                 members[size] = cell
                 size += 1
@@ -185,7 +186,7 @@ def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
         if size == 0:
             return
         m_size = max(m_size, q_size)
-        for lane in range(LANES):
+        for lane in range(_GROUP):
             one = members[min(lane, size - 1)]
             h, low = width[one], least[one] if least.size > 0 else floor
             w[w_size, lane] = -2.0 * h * scale
@@ -197,7 +198,7 @@ def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
                 m[j, lane] += h * low * per_energy[one, j]
                 q[j, lane] = h * scale * per_energy[one, j]
         for solution in range(2):
-            for lane in range(LANES):
+            for lane in range(_GROUP):
                 psi[0, lane], phi[0, lane] = 1.0 - solution, 1.0 * solution
             _series(psi, phi, w, m, q, (w_size, m_size, q_size), longest, powers, columns > 0)
             for lane in range(size):

@@ -56,8 +56,9 @@ class Ensemble:
     def __repr__(self):
         failed = f", {len(self.failures)} failed" if self.failures else ""
         unit = f", in {self.units.energy}" if self.units else ""
+        profiles = "1 profile" if len(self) == 1 else f"{len(self):,} profiles"
         most = self.found.max(initial=0)
-        return f"<Ensemble: {len(self)} profiles, up to {most} levels{unit}{failed}>"
+        return f"<Ensemble: {profiles}, at most {most} levels each{unit}{failed}>"
 
 
 def solve_many(
@@ -117,7 +118,7 @@ def solve_many(
     >>> shape = np.array([1, 1, 0, 0, 1, 1])
     >>> wells = solve_many(x=x, V=np.outer([0.1, 0.2, 0.3], shape), mass=0.067, count=3)
     >>> wells
-    <Ensemble: 3 profiles, up to 2 levels, in eV>
+    <Ensemble: 3 profiles, at most 2 levels each, in eV>
     >>> wells.energy.round(4)
     array([[0.0328, 0.099 ,    nan],
            [0.0424, 0.1532,    nan],
