@@ -156,7 +156,13 @@ def _energy(offset, origin, edge):
 
 
 @kernel
-def _guess(table, used, i, n, edge):
+def _half_width(energy, resolution, floor):
+    """Of a bracket that rounding cannot deceive."""
+    return resolution * max(energy - floor, 0.0) + 4.0 * EPS * abs(energy)
+
+
+@kernel
+def _guess(table, used, i, n, edge, resolution, floor):
     """Where the angle reaches level n between samples i and i + 1: (energy, error).
 
     Inverse interpolation by E. H. Neville's scheme, with the angle as abscissa and the nearest
@@ -186,9 +192,11 @@ def _guess(table, used, i, n, edge):
             error = correction
         value = y[0]
     energy = _energy(value, origin, edge)
-    if not origin < energy < table[0, i + 1]:
-        return 0.5 * (origin + table[0, i + 1]), np.inf
-    return energy, abs(_energy(value + error, origin, edge) - energy)
+    high, slack = table[0, i + 1], _half_width(energy, resolution, floor)
+    if not origin - slack < energy < high + slack:
+        return 0.5 * (origin + high), np.inf
+    error = abs(_energy(value + error, origin, edge) - energy)
+    return min(max(energy, origin), high), error
 
 
 @kernel
@@ -202,12 +210,6 @@ def _bracket(table, used, n):
         else:
             low = middle
     return low
-
-
-@kernel
-def _half_width(energy, resolution, floor):
-    """Of a bracket that rounding cannot deceive."""
-    return resolution * max(energy - floor, 0.0) + 4.0 * EPS * abs(energy)
 
 
 @kernel
@@ -304,7 +306,7 @@ def _converge(
         for i in range(size):
             still += 1 if done[i] == 0 else 0
         # With one node for all, levels that do not follow the others are better met elsewhere.
-        if still == 0 or count == rounds or (stop.size == 1 and count > 2 and still == active):
+        if still == 0 or count == rounds or (stop.size < size and count > 2 and still == active):
             break
         active = still
         each, new, previous = max(1, LANES // active), 0, -1
@@ -315,7 +317,9 @@ def _converge(
             t = 0 if stop.size == 1 else i
             k = _bracket(tables[t], used[t], level[i])
             low, high = tables[t, 0, k], tables[t, 0, k + 1]
-            guess, error = _guess(tables[t], used[t], k, level[i], edge)
+            guess, error = _guess(
+                tables[t], used[t], k, level[i], edge, resolution, floor
+            )
             half = _half_width(guess, resolution, floor)
             if missed[i] == _RECENTRED:
                 guess, error = energy[i], 0.0
@@ -384,7 +388,7 @@ def _settle_part(
     cells, left, right, edge, level, resolution, energy, bracket, done, part, rounds
 ):
     """Close brackets of some levels, each with a table of its own."""
-    size, each = part.size, max(2, LANES // part.size)
+    size, each = part.size, max(4, LANES // part.size)
     levels, middles = integers(size), floats(size)
     for i in range(size):
         levels[i], middles[i] = level[part[i]], energy[part[i]]
