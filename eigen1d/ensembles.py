@@ -15,6 +15,7 @@ from .shooting import ROUNDING, Search
 from .units import Units
 
 _PARTS = 8  # of a stack for each thread: the last to end keeps the others waiting for less
+_WORTH = 4096  # rows of all members of a part: what takes a thread longer than to be woken
 _MOST_WORKERS = 1024  # more threads than any machine has cores gain nothing
 _BY_KERNEL = ("linear", "step")  # interpolations whose cells need no more than two rows
 
@@ -206,8 +207,9 @@ class _Stack:
                 f"mass must be a number, or have the shape ({rows},), ({profiles}, 1) or "
                 f"({profiles}, {rows}); found {mass.shape}"
             )
-        # One profile finds what is wrong with x, a mass of all, and the words.
-        Profile.from_rows(x, np.zeros(rows), mass if mass.ndim < 2 else 1.0, **shared)
+        # One profile finds what is wrong with x, a mass of all, and the words. A zigzag is the
+        # cheapest: no cells are to be joined.
+        Profile.from_rows(x, np.arange(rows) % 2, mass if mass.ndim < 2 else 1.0, **shared)
         return cls(x, V, mass, shared)
 
     def __len__(self):
@@ -249,10 +251,9 @@ def _by_kernel(stack, energy, bracket, found, workers):
             ROUNDING, energy[part], bracket[part], found[part],
         )  # fmt: skip
 
-    parts = max(1, min(_PARTS * workers, len(stack)))
+    parts = max(1, min(_PARTS * workers, len(stack), stack.V.size // _WORTH))
     ends = [len(stack) * k // parts for k in range(parts + 1)]
-    with ThreadPoolExecutor(workers) as pool:
-        list(pool.map(solve_part, pairwise(ends)))
+    _each(solve_part, list(pairwise(ends)), workers)
 
 
 def _one_by_one(members, request, energy, bracket, found, workers):
@@ -270,7 +271,14 @@ def _one_by_one(members, request, energy, bracket, found, workers):
         return "", search.notes
 
     todo = np.flatnonzero(found < 0).tolist()
-    with ThreadPoolExecutor(workers) as pool:
-        told = list(zip(todo, pool.map(solve_one, todo), strict=True))
+    told = list(zip(todo, _each(solve_one, todo, workers), strict=True))
     failures = {i: fault for i, (fault, _) in told if fault}
     return failures, {i: words for i, (_, words) in told if words}
+
+
+def _each(work, items, workers):
+    """What `work` makes of each item, in their order."""
+    if workers == 1 or len(items) < 2:
+        return [work(item) for item in items]
+    with ThreadPoolExecutor(workers) as pool:
+        return list(pool.map(work, items))

@@ -182,18 +182,19 @@ def test_arrays_may_come_in_any_layout():
 
 def test_workers_order_and_company_change_no_bit():
     """What a member gets depends on that member alone."""
-    V, mass = rough(7, 40), masses("some", 40)
+    V, mass = rough(7, 2000), masses("some", 2000)
     V[11, 3], mass[30, 2] = np.nan, -1.0
+    assert V.size > 5 * ensembles._WORTH  # so that there are parts to share out
     first = solve_many(x=JUMPS, V=V, mass=mass, count=3, workers=1)
-    assert sorted(first.failures) == [11, 30]
+    assert list(first.failures) == [11, 30]
     for workers in (2, 5, 10**9):
         assert_same(solve_many(x=JUMPS, V=V, mass=mass, count=3, workers=workers), first)
-    order = np.random.default_rng(8).permutation(40)
+    order = np.random.default_rng(8).permutation(2000)
     shuffled = solve_many(x=JUMPS, V=V[order], mass=mass[order], count=3)
     np.testing.assert_array_equal(shuffled.energy, first.energy[order])
     np.testing.assert_array_equal(shuffled.bracket, first.bracket[order])
     assert {int(order[i]): text for i, text in shuffled.failures.items()} == first.failures
-    for i in (0, 1, 2, 39):
+    for i in (0, 1, 2, 1999):
         alone = solve_many(x=JUMPS, V=V[i : i + 1], mass=mass[i : i + 1], count=3)
         np.testing.assert_array_equal(alone.energy[0], first.energy[i])
         np.testing.assert_array_equal(alone.bracket[0], first.bracket[i])
