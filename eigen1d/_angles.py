@@ -10,6 +10,7 @@ from ._compiled import CELLS, EDGE, FLOATS, INTEGERS, LANES, block, floats, inte
 from ._kernels import is_positive, sweep
 
 _NODES = 4096  # at which the place of a state is looked for
+_ALIKE = 1e-9  # of two wells that rounding alone tells apart, the left one is taken
 _TINY = 1e-300
 
 
@@ -110,6 +111,6 @@ def homes(cells, left, right, energies):
                 size = np.log(np.hypot(sigma * trail[i, 0, lane], trail[i, 1, lane]))
                 size += np.log(np.hypot(sigma * trail_r[i, 0, lane], trail_r[i, 1, lane]))
                 size += trail[i, 2, lane] + trail_r[i, 2, lane]
-                if size > largest:
+                if size > largest + _ALIKE:
                     largest, out[first + lane] = size, i * stride
     return out

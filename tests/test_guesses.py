@@ -98,7 +98,7 @@ def test_a_guess_is_exact_for_polynomials(degree, edge):
 
         n = int((D[5] + D[6]) / 2 / np.pi)
         samples = sampled(D - (D[5] + D[6]) / 2 + (n + 1) * np.pi, energy(scaled))
-        found, error = PLAIN["_guess"](samples, 12, 5, n, edge)
+        found, error = PLAIN["_guess"](samples, 12, 5, n, edge, 0.0, 0.0)
         exact = energy((D[5] + D[6]) / 2 / D[-1])
         assert samples[0, 5] < found < samples[0, 6]
         assert abs(found - exact) <= 1e-11 and error < np.inf
@@ -108,7 +108,7 @@ def test_a_guess_is_not_exact_beyond():
     """A polynomial of degree 12 is no longer met exactly: the test above can fail."""
     D = np.linspace(0.0, 11.0, 12)
     samples = sampled(D - 5.4 + np.pi, 8 * (D / 11) ** 12)
-    found, error = PLAIN["_guess"](samples, 12, 5, 0, np.inf)
+    found, error = PLAIN["_guess"](samples, 12, 5, 0, np.inf, 0.0, 0.0)
     assert abs(found - 8 * (5.4 / 11) ** 12) > 1e-6 and error > 1e-6
 
 
@@ -133,7 +133,7 @@ def test_the_error_of_a_guess_is_honest():
         samples = sampled(values, energies)
         i = PLAIN["_bracket"](samples, energies.size, n)
         assert values[i] <= (n + 1) * np.pi <= values[i + 1]
-        found, error = PLAIN["_guess"](samples, energies.size, i, n, edge)
+        found, error = PLAIN["_guess"](samples, energies.size, i, n, edge, 0.0, 0.0)
         true = brentq(lambda E, n=n: D(E) - (n + 1) * np.pi, *energies[i : i + 2], xtol=1e-15)
         shares.append(abs(found - true) / (error + 1e-13))
     assert np.quantile(shares, 0.95) <= 10
@@ -143,7 +143,7 @@ def test_a_guess_on_a_staircase_has_no_error():
     """Where the angle does not rise, the middle is as good as any place, and is known to be."""
     energies = np.linspace(1.0, 2.0, 6)
     D = np.array([0.0, 0.0, 0.0, np.pi, np.pi, np.pi]) + 0.4
-    found, error = PLAIN["_guess"](sampled(D, energies), 6, 2, 0, np.inf)
+    found, error = PLAIN["_guess"](sampled(D, energies), 6, 2, 0, np.inf, 0.0, 0.0)
     assert energies[2] < found < energies[3]
     assert error == np.inf or error > 0.01
 
