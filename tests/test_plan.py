@@ -87,6 +87,15 @@ def test_parts_are_short(shape):
         assert (2 * m * reach * width[i] ** 2 <= LARGEST).all()
 
 
+def test_a_cell_is_cut_once_it_may_hold_two_zeros():
+    """The bound itself, from both sides: 2 m |V - E| h^2 of 0.98 and of 1.02 LARGEST."""
+    for share, parts in ((0.98, 1), (1.02, 2)):
+        width = np.sqrt(share * LARGEST / (2 * 0.7 * 5.0))
+        for V in ([0.0, 1e-9], [5.0, -1e-9], [0.0, 1e-9, 1e-9]):
+            cells = ready(table([width], [V], [[0.7]]), 0.0, 5.0)
+            assert cells[0].size == parts
+
+
 def test_polynomials_of_parts_are_exact():
     """Against 40-digit arithmetic, where power coefficients cancel to nothing.
 
