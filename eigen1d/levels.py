@@ -65,7 +65,7 @@ class Request:
 
     @classmethod
     def lowest(cls, count):
-        """Return the request for so many levels; `InputError` if that is no number of levels."""
+        """Return the request for `count` levels; `InputError` if that is no number of levels."""
         if isinstance(count, bool) or not hasattr(count, "__index__") or count < 1:
             raise InputError(f"count must be a whole number from 1; found {count!r}")
         if count > MOST_LEVELS:
