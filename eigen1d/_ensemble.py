@@ -75,7 +75,7 @@ def find_many(width, row, V, mass, unit, flags, resolution, energy, bracket, fou
     resolution : float
         As for `find`.
     energy, bracket : ndarray, shapes (profiles, count) and (profiles, count, 2)
-        Result, where there are so many levels; not touched elsewhere.
+        Result, where so many levels were found; not touched elsewhere.
     found : ndarray of int64, shape (profiles,)
         Result: the number of levels found, or -1 if the profile needs a closer look.
     """
@@ -103,10 +103,11 @@ def find_many(width, row, V, mass, unit, flags, resolution, energy, bracket, fou
             _edge(left_open, V[p, 0], unit * m[0]), _edge(right_open, V[p, last], unit * m[m_last]),
             floor, edge, 0, count, count, floor, np.nan, resolution,
         )  # fmt: skip
-        done = below >= 0 and sure
+        settled = below >= 0 and sure
         for k in range(levels.size):
-            done = done and state[k] > 0
-            energy[p, k] = levels[k]
-            bracket[p, k, 0], bracket[p, k, 1] = brackets[k, 0], brackets[k, 1]
-        if done:
+            settled = settled and state[k] > 0
+        if settled:
             found[p] = levels.size
+            for k in range(levels.size):
+                energy[p, k] = levels[k]
+                bracket[p, k, 0], bracket[p, k, 1] = brackets[k, 0], brackets[k, 1]

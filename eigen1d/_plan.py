@@ -35,7 +35,8 @@ _FINEST = 2.0**-26  # of a cell: halves of halves stay exact in the products of 
 # Terms are dropped below this part of what a cell changes psi and phi by. All that is lost in many
 # cells is then the same part of all that changes.
 _LOST = 0.25 * EPS
-_RUN = 64  # neighbouring cells whose terms are looked for together, by their largest coefficients
+_MARGIN = 1.15  # by which sizes may grow from a cell to the next one that shares its terms
+_RUN = 16  # neighbouring cells whose terms are looked for together, by their largest coefficients
 _HEAD = 5  # of a row of `parts`: owner, offset, share, terms, width; then V, mass and per_energy
 # Decay lengths from the outermost place that an energy reaches: what lies further out changes the
 # solution there by exp(-2 * 20) = 4e-18 of itself.
@@ -43,11 +44,7 @@ _FAR = 20.0
 # Energies that are looked at for this, each halfway from the one before to the highest; and cells,
 # where that pays.
 _TRIED, _FEW = 8, 4096
-# So many terms of a cell of each `shape` are summed in each sweep: about as fast as a propagator,
-# which is worth its memory beyond.
-_READY = (13, 12, 0)
 MOST_PARTS = 1 << 21  # of all cells together; their propagators fill 0.8 GB
-_WORK = types.Tuple((FLOATS, FLOATS, FLOATS, types.float64[:, ::1]))  # w, m, q, majorant
 
 
 @kernel
@@ -76,14 +73,14 @@ def _filled(c):
 
 
 @kernel
-def _series_terms(work, most):
+def _series_terms(sizes, most, majorant):
     """Terms of psi' = (m + q) phi, phi' = w psi by a majorant of both series.
 
-    w, m and q in `work` hold the sizes of all coefficients. It starts as (1, eta), with eta such
-    that both equations have the same rate zeta. TOO_LONG if that is more than LARGEST allows, or
-    the terms more than `most`.
+    Rows of `sizes` are those of the coefficients of w, m and q. It starts as (1, eta), with eta
+    such that both equations have the same rate zeta. TOO_LONG if that is more than LARGEST
+    allows, or the terms more than `most`.
     """
-    w, m, q, majorant = work
+    w, m, q = sizes[0], sizes[1], sizes[2]
     w_total, m_total = _sum(w), _sum(m) + _sum(q)
     if not m_total * w_total <= LARGEST:
         return TOO_LONG
@@ -110,23 +107,21 @@ def _series_terms(work, most):
 
 
 @kernel
-def _clear(work):
-    for j in range(work[0].size):
-        work[0][j] = 0.0
-    for j in range(work[1].size):
-        work[1][j] = 0.0
-    for j in range(work[2].size):
-        work[2][j] = 0.0
+def _clear(sizes):
+    for row in range(3):
+        for j in range(sizes.shape[1]):
+            sizes[row, j] = 0.0
 
 
 @kernel(
     signature=types.void(
-        given(1), given(1), given(1), types.float64, types.float64, types.float64, _WORK
+        given(1), given(1), given(1), types.float64, types.float64, types.float64,
+        types.float64[:, ::1],
     )
 )
-def _sizes(V, mass, per_energy, h, low, high, work):
+def _sizes(V, mass, per_energy, h, low, high, sizes):
     """Raise sizes to those of a cell's coefficients, for energies from low to high."""
-    w, m, q = work[:3]
+    w, m, q = sizes[0], sizes[1], sizes[2]
     far = max(abs(low), abs(high))
     w[0] = max(w[0], 2.0 * h * max(abs(V[0] - low), abs(V[0] - high)))
     for j in range(1, V.size):
@@ -146,14 +141,38 @@ def _is_flat(c):
 
 
 @kernel
-def _terms(V, mass, per_energy, h, low, high, most, work):
-    """How many terms one cell needs; FLAT: closed form; TOO_LONG: to be cut."""
-    _clear(work)
-    _sizes(V, mass, per_energy, h, low, high, work)
-    needed = _series_terms(work, most)
-    if needed == TOO_LONG and _is_flat(V) and _is_flat(mass) and _is_flat(per_energy):
-        return FLAT
-    return needed
+def _terms(V, mass, per_energy, h, low, high, most, sizes, known, majorant):
+    """How many terms one cell needs; FLAT: closed form; TOO_LONG: to be cut.
+
+    Neighbours differ little: `known` keeps sizes somewhat above the last ones, and their number.
+    """
+    _clear(sizes)
+    _sizes(V, mass, per_energy, h, low, high, sizes)
+    if _covers(known, sizes):
+        return int(known[3, 0])
+    needed = _series_terms(sizes, most, majorant)
+    if needed == TOO_LONG:
+        if _is_flat(V) and _is_flat(mass) and _is_flat(per_energy):
+            return FLAT
+        return TOO_LONG
+    for row in range(3):
+        for j in range(sizes.shape[1]):
+            known[row, j] = _MARGIN * sizes[row, j]
+    more = _series_terms(known, most, majorant)
+    known[3, 0] = more
+    return needed if more == TOO_LONG else more
+
+
+@kernel
+def _covers(known, sizes):
+    """Whether sizes lie below those of `known`, and not far below, which would cost terms."""
+    if known[3, 0] == TOO_LONG:
+        return False
+    for row in range(3):
+        for j in range(sizes.shape[1]):
+            if sizes[row, j] > known[row, j]:
+                return False
+    return _sum(sizes[0]) * _sum(sizes[1]) > 0.5 * _sum(known[0]) * _sum(known[1])
 
 
 @kernel
@@ -174,17 +193,18 @@ def _first_share(V, mass, per_energy, h, low, high):
 
 @kernel
 def _work(V, mass, per_energy):
+    """Room for sizes, for those of another cell with its terms below, and for a majorant."""
     columns = max(V.shape[1], mass.shape[1], per_energy.shape[1])
-    return (
-        floats(V.shape[1]), floats(mass.shape[1]), floats(per_energy.shape[1]),
-        grid(2, SERIES_TERMS + columns + 2),
-    )  # fmt: skip
+    known = grid(4, columns)
+    known[3, 0] = TOO_LONG
+    return grid(3, columns), known, grid(2, SERIES_TERMS + columns + 2)
 
 
 @kernel
-def _most(per_energy):
+def _most(V, mass, per_energy):
     """Terms for which a propagator has powers enough, see `_propagators.orders`."""
-    return SERIES_TERMS if per_energy.shape[1] == 0 else SERIES_TERMS // 2
+    fits = per_energy.shape[1] == 0 or shape(V, mass, per_energy) < 2
+    return SERIES_TERMS if fits else SERIES_TERMS // 2
 
 
 @kernel
@@ -193,13 +213,13 @@ def _plan(width, V, mass, per_energy, low, high, terms):
 
     Cells of a table differ little: a run of them shares its number.
     """
-    work = _work(V, mass, per_energy)
+    sizes, _, majorant = _work(V, mass, per_energy)
     for first in range(0, width.size, _RUN):
         last = min(first + _RUN, width.size)
-        _clear(work)
+        _clear(sizes)
         for cell in range(first, last):
-            _sizes(V[cell], mass[cell], per_energy[cell], width[cell], low, high, work)
-        shared = _series_terms(work, _most(per_energy))
+            _sizes(V[cell], mass[cell], per_energy[cell], width[cell], low, high, sizes)
+        shared = _series_terms(sizes, _most(V, mass, per_energy), majorant)
         if shared == TOO_LONG:
             return False
         for cell in range(first, last):
@@ -298,14 +318,14 @@ def _cut(width, V, mass, per_energy, least, floor, high):
     Halves of halves have exact widths and places. From differences of positions the widths of a
     profile far from x = 0 would lose digits (test_shooting.py, "far-away-curved").
     """
-    work = _work(V, mass, per_energy)
+    sizes, known, majorant = _work(V, mass, per_energy)
     V_end, m_end = _HEAD + V.shape[1], _HEAD + V.shape[1] + mass.shape[1]
     columns = m_end + per_energy.shape[1]
     pairs = grid(2, columns)
     parts = grid(2 * width.size + 64, columns)
     starts, shares = floats(64), floats(64)
     count = 0
-    most = _most(per_energy)
+    most = _most(V, mass, per_energy)
     for cell in range(width.size):
         low = least[cell]
         largest = _first_share(V[cell], mass[cell], per_energy[cell], width[cell], low, high)
@@ -327,7 +347,9 @@ def _cut(width, V, mass, per_energy, least, floor, high):
             _part(per_energy[cell], start, share, pairs, q)
             _trim(v, abs(v[0] - floor))
             _trim(m, m[0])
-            needed = _terms(v, m, q, width[cell] * share, low, high, most, work)
+            needed = _terms(
+                v, m, q, width[cell] * share, low, high, most, sizes, known, majorant
+            )
             if needed == TOO_LONG and share > _FINEST:
                 starts[waiting], shares[waiting] = start + 0.5 * share, 0.5 * share
                 starts[waiting + 1], shares[waiting + 1] = start, 0.5 * share
@@ -434,19 +456,15 @@ def _deepest(V):
     )
 )
 def _ready(width, V, mass, per_energy, terms, least, floor, scale):
-    """Return short cells as `CELLS` says, with propagators where they are worth their memory."""
-    kind = shape(V, mass, per_energy)
-    ready = _READY[kind]
-    total, any_table = 0, False
-    for cell in range(terms.size):
-        any_table = any_table or terms[cell] > ready
-    at = integers(terms.size if any_table else 0)
+    """Return short cells as `CELLS` says. Straight ones are crossed as fast without propagators."""
+    curved, total = shape(V, mass, per_energy) == 2, 0
+    at = integers(terms.size if curved else 0)
     for cell in range(at.size):
-        at[cell] = total if terms[cell] > ready else -1
-        if terms[cell] > ready:
+        at[cell] = total if terms[cell] != FLAT else -1
+        if terms[cell] != FLAT:
             total += 4 * orders(terms[cell], per_energy.shape[1] > 0)
     table = floats(total)
-    if any_table:
+    if curved:
         tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table)
     span = floats(2)
     span[0], span[1] = floor, scale
@@ -486,14 +504,13 @@ def prepare(width, V, mass, per_energy, left, right, floor, top, whole):
     """
     # A power of two: energies in its units round nothing.
     scale = math.ldexp(1.0, math.frexp(top - floor)[1])
+    first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)
+    width, V = width[first:last], V[first:last]
+    mass, per_energy = mass[first:last], per_energy[first:last]
     terms = counts(width.size)
     if shape(V, mass, per_energy) < 2 and _plan(width, V, mass, per_energy, floor, top, terms):
-        first, last, left, right = _kept(width, V, mass, per_energy, left, right, top, whole)
-        cells = _ready(
-            width[first:last], V[first:last], mass[first:last], per_energy[first:last],
-            terms[first:last], floats(0), floor, scale,
-        )  # fmt: skip
-        return cells, grid(0, _HEAD), left, right, _deepest(cells[1])
+        cells = _ready(width, V, mass, per_energy, terms, floats(0), floor, scale)
+        return cells, grid(0, _HEAD), left, right, _deepest(V)
     least = floats(width.size)
     for cell in range(width.size):
         least[cell] = floor

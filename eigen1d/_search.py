@@ -269,12 +269,17 @@ def _verified(turn, angle, points, k, n, target, near, energy, bracket, i):
     low, high = points[k], points[k + 1]
     energy[i], bracket[i, 0], bracket[i, 1] = target, low, high
     if below < n or above > n + 1:
+        # Each of them may lie at an end, as far as rounding of the counts is concerned.
+        bracket[i, 0], bracket[i, 1] = low - 0.25 * (high - low), high + 0.25 * (high - low)
         return 2
     f, f_high = _above(turn[k], angle[k], n), _above(turn[k + 1], angle[k + 1], n)
     if max(-f, f_high) < 1.0 and f_high > f:  # else a staircase: it rises here, but not straight
-        energy[i] = low + (high - low) * (-f / (f_high - f))
-        near = abs(energy[i] - target) <= 0.15 * (high - low)
-        return 1 if near else _OFF_CENTRE
+        root = low + (high - low) * (-f / (f_high - f))
+        if abs(root - target) <= 0.15 * (high - low):
+            near, energy[i] = True, root
+        elif not near:
+            energy[i] = root
+            return _OFF_CENTRE
     return 1 if near else 0
 
 
@@ -348,9 +353,11 @@ def _converge(
                 done[i] = _verified(
                     turn, angle, points, place[i], level[i], target[i], near, energy, bracket, i
                 )
-                missed[i] = _FAILED
+                recentred, missed[i] = missed[i] == _RECENTRED, _FAILED
                 if done[i] == _OFF_CENTRE:
-                    done[i], missed[i] = 0, _RECENTRED
+                    done[i] = 0
+                    if not recentred:
+                        missed[i] = _RECENTRED
         for t in range(stop.size):
             first, last = (0, new) if stop.size == 1 else (begin[t], begin[t + 1])
             _merge(tables[t], used[t], points, turn, angle, first, last)
@@ -461,6 +468,8 @@ def _levels(cells, left, right, stop, bottom, top, edge, first, last, most, reso
         # Of levels that doubles cannot part, rounding may put the upper one first.
         for i in range(1, count):
             energy[i] = min(max(energy[i], energy[i - 1]), max(bracket[i, 1], energy[i]))
+        for i in range(count):
+            bracket[i, 0], bracket[i, 1] = max(bracket[i, 0], floor), min(bracket[i, 1], edge)
     return below, sure, energy, bracket, done
 
 

@@ -6,7 +6,7 @@ mass that is a straight line (in t, and at each energy), psi' = (m_0 + m_1 t) ph
 phi' = (w_0 + w_1 t) psi give both series side by side.
 """
 
-from ._compiled import LANES, kernel
+from ._compiled import LANES, SERIES_TERMS, kernel
 
 
 def _straight_step(terms):
@@ -49,7 +49,8 @@ def _straight_step(terms):
 
 
 _straight_3, _straight_6 = _straight_step(3), _straight_step(6)
-_straight_10, _straight_13 = _straight_step(10), _straight_step(13)
+_straight_10, _straight_15 = _straight_step(10), _straight_step(15)
+_straight_22 = _straight_step(SERIES_TERMS)
 
 
 @kernel(inline=True)
@@ -66,8 +67,10 @@ def straight(state, v, slope, mass, h, terms):
         _straight_6(state, v, scale, s, mass * h)
     elif terms <= 10:
         _straight_10(state, v, scale, s, mass * h)
+    elif terms <= 15:
+        _straight_15(state, v, scale, s, mass * h)
     else:
-        _straight_13(state, v, scale, s, mass * h)
+        _straight_22(state, v, scale, s, mass * h)
 
 
 def _graded_step(terms):
@@ -108,6 +111,7 @@ def _graded_step(terms):
 
 
 _graded_6, _graded_12 = _graded_step(6), _graded_step(12)
+_graded_22 = _graded_step(SERIES_TERMS)
 
 
 @kernel(inline=True)
@@ -115,5 +119,7 @@ def graded(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h, t
     """Cross a cell of straight V and mass; `state` as for `straight`."""
     if terms <= 6:
         _graded_6(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
-    else:
+    elif terms <= 12:
         _graded_12(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)
+    else:
+        _graded_22(state, v, slope, mass, mass_slope, per_energy, per_energy_slope, h)

@@ -260,7 +260,7 @@ def _one_by_one(members, request, energy, bracket, found, workers):
     """Solve members whose `found` is -1 as `solve` does; return failures and notes."""
 
     def solve_one(i):
-        energy[i], bracket[i], found[i] = np.nan, np.nan, 0
+        found[i] = 0
         try:
             search = Search(members[i])
             _, levels, ends = search.requested(request)
