@@ -134,28 +134,12 @@ def test_propagators_agree_with_straight_cells_by_lanes(kind, way, scale, backwa
     given = width * scale, V, mass, per_energy
     by_lanes = ready(padded(given, way), LOW, HIGH)
     by_table = ready(padded(given, "propagated"), LOW, HIGH)
-    np.testing.assert_array_equal(by_lanes[0], by_table[0])
-    assert (by_table[5] >= 0).all()
-    if scale <= 1e-3:
-        assert by_lanes[5].size == 0
+    assert (by_table[5] >= 0).all() and by_lanes[5].size == 0
     fast = sweep(by_lanes, ENERGIES, backward=backward)
     slow = sweep(by_table, ENERGIES, backward=backward)
     np.testing.assert_array_equal(fast[2], slow[2])
     for a, b in zip(direction(*fast[:2]), direction(*slow[:2]), strict=True):
         np.testing.assert_allclose(a, b, rtol=0, atol=ROOM * EPS)
-
-
-def test_lanes_and_tables_in_one_sweep():
-    """Short straight cells by lanes, longer ones among them by tables, as all by tables."""
-    given = table([0.01, 0.7, 0.01, 0.7], [[3.0, 1.0]] * 4, [[1.0, 0.5]] * 4)
-    mixed = ready(given, LOW, HIGH)
-    assert (mixed[5] < 0).any() and (mixed[5] >= 0).any()
-    whole = ready(padded(given, "propagated"), LOW, HIGH)
-    for backward in (False, True):
-        one, other = (sweep(cells, ENERGIES, backward=backward) for cells in (mixed, whole))
-        np.testing.assert_array_equal(one[2], other[2])
-        for a, b in zip(direction(*one[:2]), direction(*other[:2]), strict=True):
-            np.testing.assert_allclose(a, b, rtol=0, atol=16 * EPS)
 
 
 def test_every_number_of_powers_is_used():
@@ -189,7 +173,7 @@ def test_a_table_does_not_depend_on_its_neighbours(kind):
     for cell in places[:: max(1, places.size // 5)]:
         one = [np.ascontiguousarray(a[cell : cell + 1]) for a in cells[:4]]
         again = ready(one, LOW, HIGH)
-        assert again[0].size == 1 and again[4][0] == cells[4][cell]
+        assert again[0].size == 1
         for energy in (LOW, 4.0, HIGH):
             with mpmath.workdps(30):
                 bound = exact_matrix(cells, cell, energy)[1].astype(float)
