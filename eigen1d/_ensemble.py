@@ -32,11 +32,11 @@ def _usable(V, mass):
 
 @kernel
 def _fill(row, V, mass, unit, steps, V_cells, m_cells):
-    """Write the cells of one table as a profile has them: (floor, size of V, sloped, graded).
+    """Write the cells of one table: (least V, size of V, whether the mass is graded in any).
 
-    Sloped and graded say whether the second columns, rises of V and of the mass, are of use.
+    The numbers are those that a profile has, so that all results have the same bits.
     """
-    floor, size, sloped, graded = np.inf, 0.0, False, False
+    floor, size, graded = np.inf, 0.0, False
     last = mass.size - 1
     for cell in range(row.size):
         i = row[cell]
@@ -45,10 +45,10 @@ def _fill(row, V, mass, unit, steps, V_cells, m_cells):
         if not steps:
             V_cells[cell, 1] = V[i + 1] - V[i]
             m_cells[cell, 1] = unit * (mass[min(i + 1, last)] - mass[min(i, last)])
-        sloped, graded = sloped or V_cells[cell, 1] != 0.0, graded or m_cells[cell, 1] != 0.0
+        graded = graded or m_cells[cell, 1] != 0.0
         floor = min(floor, V_cells[cell, 0], V_cells[cell, 0] + V_cells[cell, 1])
         size = max(size, abs(V_cells[cell, 0]), abs(V_cells[cell, 1]))
-    return floor, size, sloped, graded
+    return floor, size, graded
 
 
 @kernel(
@@ -87,7 +87,7 @@ def find_many(width, row, V, mass, unit, flags, resolution, energy, bracket, fou
         m = mass[p if mass.shape[0] > 1 else 0]
         if not _usable(V[p], m):
             continue
-        floor, size, sloped, graded = _fill(row, V[p], m, unit, steps, V_cells, m_cells)
+        floor, size, graded = _fill(row, V[p], m, unit, steps, V_cells, m_cells)
         if 0.0 < size < _LEAST_V:
             continue
         edge = np.inf
@@ -99,7 +99,8 @@ def find_many(width, row, V, mass, unit, flags, resolution, energy, bracket, fou
             found[p] = 0
             continue
         below, sure, levels, brackets, state = find(
-            width, V_cells[:, : 2 if sloped else 1], m_cells[:, : 2 if graded else 1], no_alpha,
+            # Cells of constant mass, one column, are crossed faster.
+            width, V_cells, m_cells[:, : 2 if graded else 1], no_alpha,
             _edge(left_open, V[p, 0], unit * m[0]), _edge(right_open, V[p, last], unit * m[m_last]),
             floor, edge, 0, count, count, floor, np.nan, resolution,
         )  # fmt: skip
