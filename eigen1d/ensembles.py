@@ -57,9 +57,10 @@ class Ensemble:
     def __repr__(self):
         failed = f", {len(self.failures)} failed" if self.failures else ""
         unit = f", in {self.units.energy}" if self.units else ""
-        profiles = "1 profile" if len(self) == 1 else f"{len(self):,} profiles"
         most = self.found.max(initial=0)
-        return f"<Ensemble: {profiles}, at most {most} levels each{unit}{failed}>"
+        profiles = "1 profile" if len(self) == 1 else f"{len(self):,} profiles"
+        levels = "1 level" if most == 1 else f"{most:,} levels"
+        return f"<Ensemble: {profiles}, at most {levels} each{unit}{failed}>"
 
 
 def solve_many(

@@ -389,7 +389,7 @@ def test_an_ensemble_says_what_it_is_and_cannot_be_changed():
     milli = Profile.from_rows(PLACES, 300 * WELL, 0.067, units=Units("nm", "meV"))
     alone = solve_many([milli], count=1)
     assert alone.units == milli.units
-    assert repr(alone) == "<Ensemble: 1 profile, at most 1 levels each, in meV>"
+    assert repr(alone) == "<Ensemble: 1 profile, at most 1 level each, in meV>"
     assert solve_many([milli, Profile.from_rows(PLACES, WELL)], count=1).units is None
 
 

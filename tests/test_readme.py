@@ -7,7 +7,7 @@ import shlex
 
 import numpy as np
 
-from eigen1d import Profile, cli
+from eigen1d import Profile, cli, solve
 
 ROOT = pathlib.Path(__file__).resolve().parent.parent
 README = (ROOT / "README.md").read_text(encoding="utf-8")
@@ -42,12 +42,25 @@ def test_the_output_shown_is_the_output(capsys, monkeypatch):
             assert ours == theirs
 
 
-def test_the_example_in_python_runs(capsys, monkeypatch):
+def test_the_examples_in_python_run(capsys, monkeypatch):
     """An example that fails is the worst first impression."""
     monkeypatch.chdir(ROOT)
-    (code,) = blocks("python")
-    exec(code, {})
-    assert len(capsys.readouterr().out.splitlines()) == 2
+    for code, lines in zip(blocks("python"), (2, 1), strict=True):
+        exec(code, {})
+        assert len(capsys.readouterr().out.splitlines()) == lines
+
+
+def test_noise_that_is_drawn_is_the_noise_of_the_budget():
+    """The example of many profiles scatters as sigma_V says: two ways to one number.
+
+    The standard deviation of a thousand draws is itself known to 1 / sqrt(2000), and left room for
+    three times that (common practice, no source).
+    """
+    names = {}
+    exec(blocks("python")[1], names)
+    well = Profile.from_rows(names["x"], names["V"], names["mass"], sigma_V=0.0025)
+    (noise,) = solve(well, count=1).budget.noise
+    assert abs(names["many"].energy.std() / noise - 1) < 3 / math.sqrt(2000)
 
 
 def test_words_that_are_explained_are_words_that_are_printed(capsys, tmp_path):
