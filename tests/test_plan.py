@@ -288,6 +288,24 @@ def test_wells_behind_a_barrier_are_kept():
     np.testing.assert_array_equal(whole[1], kept[1])
 
 
+@pytest.mark.parametrize("alpha", [0.0, 0.02])
+def test_cells_that_go_on_like_the_open_edge_say_nothing(alpha):
+    """However near they are to a well, and with any mass: psi decays in them as it does outside."""
+    V = np.array([[9.0]] * 3 + [[0.0], [3.0], [0.5]] + [[8.0]] * 3)
+    mass = np.array([[0.7]] * 3 + [[0.5]] * 3 + [[0.4]] * 3)
+    left, right = (np.array([1.0, v, m, m * alpha]) for v, m in ((9.0, 0.7), (8.0, 0.4)))
+    given = np.full(9, 0.3), V, mass, mass * alpha if alpha else np.empty((9, 0))
+    whole, kept = both(given, left, right, 7.9)
+    assert (whole[0], kept[0]) == (9, 3)
+    difference = (whole[1] - kept[1]) * np.pi + (whole[2] - kept[2])
+    np.testing.assert_allclose(difference, 0, atol=1e-14)
+    # Another V, mass or alpha, in the second cell from the edge, is not like it.
+    for field in (1, 2, 3)[: 3 if alpha else 2]:
+        other = [a.copy() for a in given]
+        other[field][1, 0] *= 1.001
+        assert both(other, left, right, 7.9)[1][0] == 5
+
+
 # --- long tails -------------------------------------------------------------------------------
 
 
