@@ -138,7 +138,7 @@ def solve_many(
         units = kinds.pop() if len(kinds) == 1 else None
     size, count = len(members), request.count
     energy, bracket = np.full((size, count), np.nan), np.full((size, count, 2), np.nan)
-    found = np.full(size, -1)
+    found = np.full(size, -1, np.int64)
     if profiles is None and interpolation in _BY_KERNEL:
         _by_kernel(members, energy, bracket, found, workers)
     failures, notes = _one_by_one(members, request, energy, bracket, found, workers)
