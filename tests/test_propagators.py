@@ -121,14 +121,14 @@ def test_a_cell_is_crossed_from_both_ends_by_one_table(kind, backward):
 
 
 @pytest.mark.parametrize("backward", [False, True], ids=["forward", "backward"])
-@pytest.mark.parametrize("scale", [1e-5, 1e-4, 1e-3, 5e-3, 0.02, 0.05])
+@pytest.mark.parametrize("scale", [1e-5, 1e-4, 1e-3, 5e-3, 0.02, 0.05, 0.2, 1.0])
 @pytest.mark.parametrize(
     ("kind", "way"), [("straight", "straight"), ("graded", "graded"), ("alpha", "graded")]
 )
 def test_propagators_agree_with_straight_cells_by_lanes(kind, way, scale, backward):
     """Unrolled numbers of terms, chosen by a majorant, give what the tables give.
 
-    Cells from 1e-5 to 0.05 long ask for every one of those lengths; a term too few would show.
+    Cells from 1e-5 to 1 long ask for every one of those lengths; a term too few would show.
     """
     width, V, mass, per_energy = rough_cells(3, kind, count=40)
     given = width * scale, V, mass, per_energy

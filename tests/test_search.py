@@ -110,7 +110,7 @@ def assert_found(well, first, last, found, bottom=None):
     assert ((bracket[:, 0] <= energy) & (energy <= bracket[:, 1])).all()
     half = well.half_width(energy)
     width = bracket[:, 1] - bracket[:, 0]
-    assert (width <= np.where(done == 2, 4.2, 2.2) * half).all()
+    assert (width <= np.where(done == 2, 3.2, 2.2) * half).all()
     # Narrower ones would not hold what rounding does; at the edge of the continuum they end.
     assert ((width >= 1.5 * half) | (bracket[:, 1] == well.edge)).all()
     for stop in (None, 1 + energy.size):
