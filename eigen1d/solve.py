@@ -1,5 +1,6 @@
 """The front door: which method, the second opinion, the error budget. No solver here."""
 
+import functools
 import importlib
 from dataclasses import replace
 
@@ -69,6 +70,7 @@ def solve(profile, count=None, window=None, method="shooting", cross_check=False
     return _cross_checked(levels, _module(second).find(profile, request), request)
 
 
+@functools.cache
 def _module(method):
     return importlib.import_module(f".{METHODS[method]}", __package__)
 
