@@ -7,7 +7,10 @@ kept in a folder named after what stands in all kernel files together.
 
 import contextlib
 import hashlib
+import os
 import pathlib
+import subprocess
+import sys
 
 import llvmlite.binding
 import numba
@@ -27,8 +30,7 @@ FLAT, TOO_LONG = 0, 255
 _HERE = pathlib.Path(__file__).parent
 SOURCES = (
     "_compiled.py", "_straight.py", "_propagators.py", "_plan.py", "_kernels.py", "_angles.py",
-    "_search.py", "_ensemble.py",
-    "_numbers.py",
+    "_search.py", "_ensemble.py", "_numbers.py",
 )  # fmt: skip
 
 
@@ -63,6 +65,23 @@ def _cache():
         yield
     finally:
         numba.config.CACHE_DIR = others
+
+
+def beside(module):
+    """Compile a module of kernels in another process, if this is the first start.
+
+    It takes some ten seconds and numba compiles in one thread. Returns a function that waits for
+    the end; what has then been compiled is read from the cache.
+    """
+    if pathlib.Path(_FOLDER).exists() or not sys.executable:
+        return lambda: None
+    place = os.pathsep.join([str(_HERE.parent), os.environ.get("PYTHONPATH", "")])
+    return subprocess.Popen(
+        [sys.executable, "-c", f"import eigen1d.{module}"],
+        env=os.environ | {"PYTHONPATH": place},
+        stdout=subprocess.DEVNULL,
+        stderr=subprocess.DEVNULL,
+    ).wait
 
 
 def apart(signature):

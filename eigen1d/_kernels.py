@@ -28,9 +28,8 @@ from ._compiled import (
     floats,
     kernel,
 )
-from ._plan import shape
 from ._propagators import orders, propagated
-from ._straight import graded, straight
+from ._straight import graded, shape, straight
 
 _BIG, _SMALL = 2.0**300, 2.0**-300  # amplitudes are kept between these
 _LOG_BIG = 300 * np.log(2.0)

@@ -30,6 +30,7 @@ from ._compiled import (
     kernel,
 )
 from ._propagators import orders, tabulate
+from ._straight import shape
 
 _FINEST = 2.0**-26  # of a cell: halves of halves stay exact in the products of `_part`
 # Terms are dropped below this part of what a cell changes psi and phi by. All that is lost in many
@@ -45,14 +46,6 @@ _FAR = 20.0
 # where that pays.
 _TRIED, _FEW = 8, 4096
 MOST_PARTS = 1 << 21  # of all cells together; their propagators fill 0.8 GB
-
-
-@kernel
-def shape(V, mass, per_energy):
-    """0: all cells have straight V and constant mass; 1: V and mass are straight; 2: neither."""
-    if V.shape[1] > 2 or mass.shape[1] > 2 or per_energy.shape[1] > 2:
-        return 2
-    return 0 if mass.shape[1] == 1 and per_energy.shape[1] == 0 else 1
 
 
 @kernel

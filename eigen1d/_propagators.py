@@ -11,7 +11,7 @@ Seen from the right, T_11 and T_22 change places: the determinant is 1, and phi 
 
 from numba import types
 
-from ._compiled import COUNTS, FLOATS, INTEGERS, LANES, given, grid, integers, kernel
+from ._compiled import LANES, given, grid, integers, kernel
 
 _GROUP = 8  # cells whose series are summed side by side: rows of both stay in the first cache
 _ORDERS = (6, 8, 12)  # powers of u: three kinds of cells
@@ -137,12 +137,7 @@ def _used(coefficients, cell):
     return size
 
 
-@kernel(
-    signature=types.void(
-        given(1), given(2), given(2), given(2), COUNTS, INTEGERS, FLOATS, types.float64,
-        types.float64, FLOATS,
-    )
-)
+@kernel
 def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
     """Write the propagators of all cells that have a place in `table`.
 

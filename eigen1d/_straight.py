@@ -9,6 +9,14 @@ phi' = (w_0 + w_1 t) psi give both series side by side.
 from ._compiled import LANES, SERIES_TERMS, kernel
 
 
+@kernel
+def shape(V, mass, per_energy):
+    """0: all cells have straight V and constant mass; 1: V and mass are straight; 2: neither."""
+    if V.shape[1] > 2 or mass.shape[1] > 2 or per_energy.shape[1] > 2:
+        return 2
+    return 0 if mass.shape[1] == 1 and per_energy.shape[1] == 0 else 1
+
+
 def _straight_step(terms):
     """Make the kernel that crosses a short cell of straight V and constant mass with `terms` terms.
 

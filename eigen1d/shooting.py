@@ -21,7 +21,13 @@ from functools import cached_property
 
 import numpy as np
 
-from . import _angles, _kernels, _plan, _search
+from . import (
+    _angles,
+    _first_start,  # noqa: F401, I001  before all kernels
+    _kernels,
+    _plan,
+    _search,
+)
 from .errors import InputError
 from .levels import MOST_LEVELS, Budget, Levels
 
@@ -223,7 +229,7 @@ class Ready:
         return np.append(nodes, start[-1] + (self.parts[-1, 1] + self.parts[-1, 2]) * width[-1])
 
     def angles(self, energies):
-        """turn and angle of `_search.angles` for some energies, at `home`."""
+        """turn and angle of `_angles.angles` for some energies, at `home`."""
         turn, angle = np.empty(energies.size, np.int64), np.empty(energies.size)
         stop = np.full(energies.size, self.home)
         _angles.angles(self.cells, self.left, self.right, stop, energies, turn, angle)

@@ -16,7 +16,7 @@ FLOORS = [
     {"_parts", "_plan", "_table_text", "_table_header"},
     {"profile", "_kernels"},
     {"_angles", "_quadrature", "_difference_forms", "tables", "square_well", "closed_forms"},
-    {"_search", "levels"},
+    {"_search", "_first_start", "levels"},
     {"_ensemble", "shooting", "finite_difference"},
     {"solve", "ensembles"},
     {"draw"},
