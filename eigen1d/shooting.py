@@ -21,13 +21,10 @@ from functools import cached_property
 
 import numpy as np
 
-from . import (
-    _angles,
-    _first_start,  # noqa: F401, I001  before all kernels
-    _kernels,
-    _plan,
-    _search,
-)
+from . import _first_start  # noqa: F401  before all kernels
+
+# isort: split
+from . import _angles, _kernels, _plan, _search
 from .errors import InputError
 from .levels import MOST_LEVELS, Budget, Levels
 
