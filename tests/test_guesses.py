@@ -143,10 +143,10 @@ def test_the_error_of_a_guess_is_honest():
 def test_a_sample_may_be_the_level_itself(end):
     """To rounding: the guess then falls on it, or beyond it by less than a bracket's half width."""
     energies = np.linspace(1.0, 2.0, 6)
-    level = energies[2 + end] + (-1) ** end * 1e-17
-    D = np.pi + (energies - level) + 0.1 * (energies - level) ** 2
+    above = energies - energies[2 + end]
+    D = np.pi + above + 0.1 * above**2
     samples = sampled(D, energies)
-    samples[2, 2 + end] = -(1e-17) if end == 0 else 1e-17
+    samples[2, 2 + end] = [-1e-17, 1e-17][end]  # below the level, or above
     found, error = PLAIN["_guess"](samples, 6, 2, 0, np.inf, 16 * EPS, 1.0)
     assert found == energies[2 + end] and error < 1e-3
 
