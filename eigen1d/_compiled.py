@@ -38,6 +38,9 @@ _DIGEST = hashlib.sha256(b"".join((_HERE / name).read_bytes() for name in SOURCE
 _FOLDER = str(pathlib.Path(numba.config.CACHE_DIR or _HERE / "__pycache__") / f"eigen1d-{_DIGEST}")
 
 
+_FIRST_START = not pathlib.Path(_FOLDER).exists()
+
+
 def kernel(function=None, signature=None, fused=False, entry=False, inline=False):
     """Compile: cached, division by zero as IEEE says, and no fast-math, which compensated sums
     would not survive; `fused` allows a product and a sum to be rounded once. A signature makes one
@@ -73,7 +76,7 @@ def beside(module):
     It takes some ten seconds and numba compiles in one thread. Returns a function that waits for
     the end; what has then been compiled is read from the cache.
     """
-    if pathlib.Path(_FOLDER).exists() or not sys.executable:
+    if not _FIRST_START or not sys.executable:
         return lambda: None
     place = os.pathsep.join([str(_HERE.parent), os.environ.get("PYTHONPATH", "")])
     return subprocess.Popen(
