@@ -10,6 +10,9 @@ from .errors import InputError
 
 def numbers(name, values):
     """A row of finite numbers, read-only."""
+    if np.ma.is_masked(values):
+        bad = int(np.argmax(np.ma.getmaskarray(values)))
+        raise InputError(f"{name} has masked values, row {bad} first; leave out these rows")
     try:
         row = np.array(values, ndmin=1)
         if row.dtype.kind == "c":

@@ -11,6 +11,7 @@ import os
 import pathlib
 import subprocess
 import sys
+import tempfile
 
 import llvmlite.binding
 import numba
@@ -35,10 +36,26 @@ SOURCES = (
 
 
 _DIGEST = hashlib.sha256(b"".join((_HERE / name).read_bytes() for name in SOURCES)).hexdigest()[:16]
-_FOLDER = str(pathlib.Path(numba.config.CACHE_DIR or _HERE / "__pycache__") / f"eigen1d-{_DIGEST}")
 
 
-_FIRST_START = not pathlib.Path(_FOLDER).exists()
+def _folder():
+    """Where compiled kernels are kept, or None, and whether there were none.
+
+    Beside the sources; if that cannot be written to, in the user's cache; else nowhere.
+    """
+    for place in (numba.config.CACHE_DIR or _HERE / "__pycache__", os.path.expanduser("~/.cache")):
+        folder = pathlib.Path(place) / f"eigen1d-{_DIGEST}"
+        empty = not folder.exists()
+        try:
+            folder.mkdir(parents=True, exist_ok=True)
+            with tempfile.TemporaryFile(dir=folder):
+                return str(folder), empty
+        except OSError:
+            continue
+    return None, False
+
+
+_FOLDER, FIRST_START = _folder()
 
 
 def kernel(function=None, signature=None, fused=False, entry=False, inline=False):
@@ -50,7 +67,7 @@ def kernel(function=None, signature=None, fused=False, entry=False, inline=False
     """
     if function is None:
         return lambda function: kernel(function, signature, fused, entry, inline)
-    options = {"cache": True, "error_model": "numpy", "nogil": True}
+    options = {"cache": _FOLDER is not None, "error_model": "numpy", "nogil": True}
     options |= {"no_cpython_wrapper": not entry, "no_cfunc_wrapper": True, "forceinline": inline}
     if fused:
         options["fastmath"] = {"contract"}
@@ -63,7 +80,8 @@ def kernel(function=None, signature=None, fused=False, entry=False, inline=False
 @contextlib.contextmanager
 def _cache():
     """Let numba write to the folder of these sources."""
-    others, numba.config.CACHE_DIR = numba.config.CACHE_DIR, _FOLDER
+    others = numba.config.CACHE_DIR
+    numba.config.CACHE_DIR = _FOLDER or others
     try:
         yield
     finally:
@@ -76,7 +94,7 @@ def beside(module):
     It takes some ten seconds and numba compiles in one thread. Returns a function that waits for
     the end; what has then been compiled is read from the cache.
     """
-    if not _FIRST_START or not sys.executable:
+    if not FIRST_START or not sys.executable:
         return lambda: None
     place = os.pathsep.join([str(_HERE.parent), os.environ.get("PYTHONPATH", "")])
     return subprocess.Popen(
@@ -97,7 +115,7 @@ def apart(signature):
 
     def compiled(function):
         with _cache():
-            code = numba.cfunc(signature, cache=True, error_model="numpy")(function)
+            code = numba.cfunc(signature, cache=_FOLDER is not None, error_model="numpy")(function)
         name = f"eigen1d_{function.__name__}_{_DIGEST}"
         llvmlite.binding.add_symbol(name, code.address)
 

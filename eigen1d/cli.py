@@ -202,6 +202,14 @@ def _draw(args):
     _say(f"wrote {args.output}", aside=True)
 
 
+def _tell_of_compiling():
+    """Half a minute without a word looks like a fault, on a terminal."""
+    from ._compiled import FIRST_START
+
+    if FIRST_START and sys.stderr.isatty():
+        print("compiling the solver for this machine, once; half a minute ...", file=sys.stderr)
+
+
 def _solved(args):
     """Read, check every output, solve: nothing is written before all of that went well."""
     from .tables import read_profile
@@ -224,6 +232,7 @@ def _solved(args):
     except InputError as fault:
         raise InputError(_in_options(str(fault))) from None
     # As a name of the package, not of the module: see eigen1d/__init__.py.
+    _tell_of_compiling()
     from . import solve
 
     levels = solve(

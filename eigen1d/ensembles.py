@@ -224,10 +224,12 @@ class _Stack:
 def _numbers(name, values):
     """An array of real numbers, of any shape."""
     try:
-        array = np.asarray(values)
+        array = np.asanyarray(values)
         if array.dtype.kind == "c":
             raise TypeError("a cast to float would drop the imaginary part")
-        return array.astype(float, copy=False)
+        array = array.astype(float, copy=False)
+        # What is masked is no number: the member it belongs to fails, and says so.
+        return np.ma.filled(array, np.nan) if np.ma.is_masked(values) else array
     except (TypeError, ValueError):
         raise InputError(
             f"{name} must be numbers, as many in each profile; found {values!r:.80}"

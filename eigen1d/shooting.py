@@ -132,10 +132,15 @@ class Search:
 
     def _find(self, first, last, bottom, top):
         """Return (below, energies, brackets), see `_search.find`, with what it leaves open."""
-        below, sure, energy, bracket, done = _search.found(
-            *self.cells, self.left, self.right, self.floor, self.edge, first, last,
-            MOST_LEVELS, bottom, top, self.resolution,
-        )  # fmt: skip
+        try:
+            below, sure, energy, bracket, done = _search.found(
+                *self.cells, self.left, self.right, self.floor, self.edge, first, last,
+                MOST_LEVELS, bottom, top, self.resolution,
+            )  # fmt: skip
+        except SystemError as fault:  # so compiled code returns from an interruption
+            if isinstance(fault.__cause__, KeyboardInterrupt):
+                raise fault.__cause__ from None
+            raise
         if below < 0:
             raise InputError(_TOO_LONG)
         if not sure and self.threshold < below:

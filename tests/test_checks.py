@@ -200,3 +200,12 @@ def test_the_alpha_limit_looks_inside_cells():
     from_rows(x, V, alpha=0.999 / rise, interpolation="smooth")
     with pytest.raises(InputError, match="alpha is too large"):
         from_rows(x, V, alpha=1.001 / rise, interpolation="smooth")
+
+
+def test_masked_values_are_not_taken_for_numbers():
+    """What stands below a mask is a value somebody has ruled out."""
+    V = np.ma.array([0.3, 99.0, 0.3], mask=[False, True, False])
+    with pytest.raises(InputError, match="V has masked values, row 1 first; leave out these rows"):
+        Profile.from_rows([0.0, 1.0, 2.0], V)
+    unmasked = Profile.from_rows([0.0, 1.0, 2.0], np.ma.array([0.3, 0.0, 0.3]))
+    assert unmasked.V(1.0) == 0.0

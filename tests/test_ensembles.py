@@ -435,3 +435,11 @@ def test_what_is_wrong_with_all_members_is_refused(given, message):
     with pytest.raises(InputError) as fault:
         solve_many(**given)
     assert message in str(fault.value)
+
+
+def test_a_masked_value_fails_its_member_alone():
+    """The number below a mask is not solved in silence."""
+    V = np.ma.array([[0.3, 0.0, 0.3], [0.3, 9.0, 0.3]], mask=[[False] * 3, [False, True, False]])
+    found = solve_many(x=[0.0, 10.0, 20.0], V=V, mass=0.067, count=1)
+    assert found.found.tolist() == [1, 0]
+    assert list(found.failures) == [1] and "must be finite" in found.failures[1]

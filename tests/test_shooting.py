@@ -9,7 +9,7 @@ from hard_problems import HARD
 from high_precision import count_below
 from problems import NOT_A_PROFILE, REFERENCE, SOLVABLE
 
-from eigen1d import solve
+from eigen1d import Profile, shooting, solve
 
 EPS = np.finfo(float).eps
 
@@ -175,3 +175,25 @@ def test_hard_problems_have_names_of_their_own():
     """A name used twice would hide one of the two in a list of failures."""
     assert len({problem.name for problem in HARD}) == len(HARD)
     assert all(problem.why for problem in HARD)
+
+
+def test_an_interruption_is_a_keyboard_interrupt(monkeypatch):
+    """Compiled code returns from one with a SystemError, which `except Exception` would swallow."""
+
+    def interrupted(*_):
+        raise SystemError("returned a result with an exception set") from KeyboardInterrupt()
+
+    monkeypatch.setattr(shooting._search, "found", interrupted)
+    with pytest.raises(KeyboardInterrupt):
+        solve(Profile.from_layers([10.0], [0.0], left="wall", right="wall"), count=2)
+
+
+def test_other_faults_of_compiled_code_stay_what_they_are(monkeypatch):
+    """Only an interruption is unwrapped."""
+
+    def broken(*_):
+        raise SystemError("something else")
+
+    monkeypatch.setattr(shooting._search, "found", broken)
+    with pytest.raises(SystemError, match="something else"):
+        solve(Profile.from_layers([10.0], [0.0], left="wall", right="wall"), count=2)
