@@ -22,7 +22,6 @@ from functools import cached_property
 import numpy as np
 from numpy.polynomial.legendre import leggauss
 from scipy.linalg import eigh_tridiagonal
-from scipy.optimize import brentq
 
 from .errors import InputError
 
@@ -122,6 +121,7 @@ class FluxForm:
 
     def _own_height(self, n):
         """The height of level n above min V, with the mass taken at that same energy."""
+        from scipy.optimize import brentq  # 0.15 s, for alpha alone
 
         def excess(height):
             return self._eigenvalues(n, n + 1, self.profile.V_min + height)[0] - height
