@@ -319,7 +319,11 @@ class Levels:
 
     @cached_property
     def position(self):
-        """ndarray, shape (count, count): <i|x|j>, in `units.length`."""
+        """ndarray, shape (count, count): <i|x|j>, in `units.length`.
+
+        With alpha the mass differs from level to level and states are not quite orthogonal: what is
+        off the diagonal then depends on the origin, which here is the middle of the profile.
+        """
         # About a point inside the profile: off-diagonal elements do not depend on the origin, and
         # a profile far from x = 0 would lose digits in them.
         middle = 0.5 * (self.profile.x[0] + self.profile.x[-1])
