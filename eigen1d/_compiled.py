@@ -109,8 +109,8 @@ def apart(signature):
     """Compile for kernels that call it by its address, with arguments that fit `signature`.
 
     Numba optimises a kernel together with all that it calls, and so sweeps once for each kernel
-    above them. What is behind an address is compiled once, which halves the first start. The name
-    that the address goes by is bound anew at each start.
+    above them. What is behind an address is compiled once, which takes a quarter off the first
+    start. The name that the address goes by is bound anew at each start.
     """
 
     def compiled(function):

@@ -29,7 +29,7 @@ from ._compiled import (
     integers,
     kernel,
 )
-from ._propagators import orders, tabulate
+from ._propagators import filled, orders, tabulate
 from ._straight import shape
 
 _FINEST = 2.0**-26  # of a cell: halves of halves stay exact in the products of `_part`
@@ -57,15 +57,6 @@ def _sum(c):
 
 
 @kernel
-def _filled(c):
-    """How many numbers come before the zeros at the end."""
-    size = c.size
-    while size > 0 and c[size - 1] == 0.0:
-        size -= 1
-    return size
-
-
-@kernel
 def _series_terms(sizes, most, majorant):
     """Terms of psi' = (m + q) phi, phi' = w psi by a majorant of both series.
 
@@ -80,7 +71,7 @@ def _series_terms(sizes, most, majorant):
     zeta = np.sqrt(m_total * w_total)
     eta = np.sqrt(w_total / m_total) if w_total > 0.0 else 0.0
     majorant[0, 0], majorant[1, 0] = 1.0, eta
-    w_size, m_size, q_size = _filled(w), _filled(m), _filled(q)
+    w_size, m_size, q_size = filled(w), filled(m), filled(q)
     reach = max(w_size, m_size, q_size)
     quiet = 0
     for k in range(most + reach):

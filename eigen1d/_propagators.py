@@ -1,7 +1,7 @@
 """Short cells crossed by a matrix that is a polynomial of the energy, tabulated once.
 
 On a short cell the solution at its end is T(E) times that at its start, and each entry of T is an
-entire function of E. Over the energies that will be tried a dozen powers of u = (E - floor) / scale
+entire function of E. Over the energies that will be tried a dozen powers of u = (E - least) / scale
 give it to rounding. So the power series in x, whatever the degrees of V and m, is summed once, with
 a polynomial in u for each coefficient, and no sweep has to do it again.
 
@@ -128,11 +128,11 @@ def _series(psi, phi, w, m, q, sizes, terms, powers, with_alpha):
                 phi[row, lane] *= share
 
 
-@kernel(signature=types.int64(given(2), types.int64))
-def _used(coefficients, cell):
-    """How many coefficients a cell has up to the last that is not zero."""
-    size = coefficients.shape[1]
-    while size > 0 and coefficients[cell, size - 1] == 0.0:
+@kernel(signature=types.int64(given(1)))
+def filled(c):
+    """How many numbers come before the zeros at the end."""
+    size = c.size
+    while size > 0 and c[size - 1] == 0.0:
         size -= 1
     return size
 
@@ -175,8 +175,8 @@ def tabulate(width, V, mass, per_energy, terms, at, least, floor, scale, table):
                 members[size] = cell
                 size += 1
                 longest = max(longest, terms[cell])
-                w_size, m_size = max(w_size, _used(V, cell)), max(m_size, _used(mass, cell))
-                q_size = max(q_size, _used(per_energy, cell))
+                w_size, m_size = max(w_size, filled(V[cell])), max(m_size, filled(mass[cell]))
+                q_size = max(q_size, filled(per_energy[cell]))
             cell += 1
         if size == 0:
             return

@@ -127,7 +127,7 @@ class Search:
     def _most_below(self, energy):
         """What no number of levels exceeds: that of a flat bottom between walls, and one more."""
         width, _, mass, per_energy = self.cells
-        heaviest = (mass[:, 0] + self.floor * per_energy[:, :1].sum(axis=1)).max()
+        heaviest = (mass[:, 0] + energy * per_energy[:, :1].sum(axis=1)).max()
         return width.sum() * np.sqrt(2 * heaviest * (energy - self.floor)) / np.pi + 1
 
     def _find(self, first, last, bottom, top):
